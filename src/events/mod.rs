@@ -1,0 +1,1 @@
+//! Where truth events come from: generated spectra and event files.

@@ -1,0 +1,1 @@
+//! What is read and written: detector and study files, run directories.

@@ -1,0 +1,1 @@
+//! The folding engine, and the plain reference path.

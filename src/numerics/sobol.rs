@@ -1,0 +1,1 @@
+//! Scrambled Sobol points.

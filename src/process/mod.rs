@@ -1,0 +1,30 @@
+//! What is studied: resonance, channels, cuts, categories, mass axis.
+
+mod axis;
+mod channel;
+mod resonance;
+
+pub use axis::MassAxis;
+pub use channel::{Category, Channel, Cuts, Decay, ShapeChoice};
+pub use resonance::{EventSource, Intermediate, Natural, Production, Resonance, SpectrumCell, Width};
+
+use crate::detector::Detector;
+
+/// A study, validated: everything that a fold needs.
+#[derive(Clone, Debug)]
+pub struct Study {
+    /// Its name.
+    pub name: String,
+    /// The detector that it folds with.
+    pub detector: Detector,
+    /// Seed of the scramblings.
+    pub seed: u64,
+    /// Numerical error aimed at: RMS over the bins of the axis, relative to the highest bin.
+    pub precision: f64,
+    /// Most points per channel and mass.
+    pub max_points: u64,
+    /// The resonance.
+    pub resonance: Resonance,
+    /// The channels.
+    pub channels: Vec<Channel>,
+}

@@ -1,0 +1,1 @@
+//! Templates: bin probabilities with errors, and their widths.
