@@ -176,14 +176,23 @@ fn response_cdf(tail: Option<&UnitTail>, t: f64) -> f64 {
     }
 }
 
+/// Probability that the measurement of the last leg loses the event.
+#[inline(always)]
+fn lost_share(last: &LastLeg, tail: Option<&UnitTail>, least: f64) -> f64 {
+    // A tracker loses curvatures of the wrong sign, which is the upper end of its variable; a calorimeter the lower.
+    let (t, upper) = if last.reading == Reading::Tracker { (-last.offset, true) } else { (last.value(least), false) };
+    if tail.is_none() && t < -NORMAL_REACH {
+        return 0.0;
+    }
+    if upper { normal_cdf(t) } else { response_cdf(tail, t) }
+}
+
 wide! {
     /// Adds one event.
     pub(super) fn add(plan: &Plan, last: &LastLeg, sums: &mut Sums) {
         let tail = last.tail.and_then(|index| plan.tails.get(index));
         let least = last.least_momentum();
-        let kept = response_cdf(tail, if last.reading == Reading::Tracker { last.offset } else { f64::INFINITY });
-        let missed = response_cdf(tail, last.value(least));
-        sums.lost += last.weight * (1.0 - kept + missed);
+        sums.lost += last.weight * lost_share(last, tail, least);
         let intervals: Intervals = allowed(plan, last, least);
         let turning = last.turning_momentum();
         for interval in intervals.iter() {
@@ -221,7 +230,8 @@ fn add_rising(axis: &AxisPlan, last: &LastLeg, tail: Option<&UnitTail>, from: f6
             if start >= end {
                 return;
             }
-            let (low, high) = (normal_cdf(start), normal_cdf(end));
+            let low = if start > -NORMAL_REACH { normal_cdf(start) } else { 0.0 };
+            let high = if end < NORMAL_REACH { normal_cdf(end) } else { 1.0 };
             let (first, last_edge) = (edge(start), edge(end));
             sums.steps[first] -= w * low;
             sums.steps[last_edge] += w * high;
@@ -235,7 +245,8 @@ fn add_rising(axis: &AxisPlan, last: &LastLeg, tail: Option<&UnitTail>, from: f6
             sums.steps[last_edge] += w * high;
             sums.accepted += w * (high - low);
             let core_first = if start < -tail.alpha_low { edge(-tail.alpha_low).min(last_edge) } else { first };
-            let core_last = if end > tail.alpha_high { edge(tail.alpha_high).clamp(core_first, last_edge) } else { last_edge };
+            let core_last =
+                if end > tail.alpha_high { edge(tail.alpha_high).clamp(core_first, last_edge) } else { last_edge };
             let (scale, constant) = (w * tail.core, w * (tail.low - tail.core * tail.phi_low));
             fill(axis, last, core_first, core_last, &mut sums.below, |t| constant + scale * normal_cdf(t));
             if first < core_first {

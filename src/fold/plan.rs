@@ -2,6 +2,7 @@
 
 use super::response::UnitTail;
 use crate::detector::{Detector, Object, Tracker, TrackerResolution};
+use crate::events::TruthDimensions;
 use crate::process::{Channel, Cuts, MassAxis};
 
 /// Smallest relative width that a fold resolves; a perfect leg is given this one.
@@ -115,7 +116,8 @@ impl AxisPlan {
     }
 }
 
-/// Which dimension of the sequence feeds what.
+/// Which dimension of the sequence feeds what. The first dimensions of the sequence are the most even, so they go to what
+/// moves the mass most: `places` says which.
 #[derive(Clone, Debug, Default)]
 pub(super) struct Dimensions {
     /// Measured values of all legs but the last, by rank.
@@ -127,8 +129,8 @@ pub(super) struct Dimensions {
     pub vertex: Option<usize>,
     pub theta: Vec<Option<usize>>,
     pub phi: Vec<Option<usize>>,
-    /// Total, with those of the truth events.
-    pub total: usize,
+    /// For every dimension, those of the truth events first, its place in the sequence.
+    pub places: Vec<usize>,
 }
 
 /// A channel at a mass point, ready to fold.
@@ -145,7 +147,7 @@ pub(super) struct Plan {
 }
 
 impl Plan {
-    pub fn new(detector: &Detector, channel: &Channel, mass_gev: f64, truth_dimensions: usize) -> Self {
+    pub fn new(detector: &Detector, channel: &Channel, mass_gev: f64, truth: &TruthDimensions) -> Self {
         let mut tails = Vec::new();
         let calorimeters = detector
             .calorimeters
@@ -171,7 +173,7 @@ impl Plan {
             spread_wrong: 1e-3 * vertex.spread_wrong_mm / vertex.calorimeter_radius_m,
         });
         let vertex = vertex.filter(|_| legs.iter().any(|leg| leg.trackless));
-        let dimensions = dimensions(&legs, vertex.is_some(), truth_dimensions);
+        let dimensions = dimensions(&legs, vertex.is_some(), truth);
         Plan {
             legs,
             calorimeters,
@@ -182,6 +184,21 @@ impl Plan {
             axis: AxisPlan::new(&channel.axis, mass_gev),
             dimensions,
         }
+    }
+}
+
+impl Plan {
+    /// The |rapidity| beyond which a leg is hardly ever accepted: the cut or the detector's coverage, and a margin for
+    /// directions and vertex. Only the speed depends on it.
+    pub fn rapidity_reach(&self) -> f64 {
+        const MARGIN: f64 = 0.1;
+        let coverage = |leg: &LegPlan| {
+            let calorimeter = leg.calorimeter.as_ref().and_then(|regions| regions.bounds.last());
+            let tracker = leg.tracker.as_ref().and_then(|regions| regions.bounds.last());
+            calorimeter.into_iter().chain(tracker).fold(0.0, |a: f64, b| a.max(*b))
+        };
+        let covered = self.legs.iter().map(coverage).fold(0.0, f64::max);
+        libm::asinh(covered.min(self.cuts.max_cot)) + MARGIN
     }
 }
 
@@ -255,21 +272,43 @@ fn cut_plan(cuts: &Cuts, channel: &Channel) -> CutPlan {
     }
 }
 
-fn dimensions(legs: &[LegPlan], vertex: bool, truth_dimensions: usize) -> Dimensions {
-    let mut next = truth_dimensions;
+fn dimensions(legs: &[LegPlan], vertex: bool, truth: &TruthDimensions) -> Dimensions {
+    let mut next = truth.count;
     let mut take = |wanted: bool| {
         wanted.then(|| {
             next += 1;
             next - 1
         })
     };
-    // The measured values move the mass most, so they come first.
-    let values = (1..legs.len()).filter_map(|_| take(true)).collect();
-    let shares = |leg: &LegPlan| leg.calorimeter.as_ref().is_some_and(|c| c.regions.iter().any(|r| r.len() > 1));
-    let choice = legs.iter().map(|leg| take(shares(leg))).collect();
-    let tracker = legs.iter().map(|leg| take(leg.calorimeter.is_some() && leg.tracker.is_some())).collect();
+    let values: Vec<usize> = (1..legs.len()).filter_map(|_| take(true)).collect();
     let vertex = take(vertex);
-    let theta = legs.iter().map(|leg| take(leg.sigma_theta > 0.0)).collect();
-    let phi = legs.iter().map(|leg| take(leg.sigma_phi > 0.0)).collect();
-    Dimensions { values, choice, tracker, vertex, theta, phi, total: next }
+    let tracker: Vec<Option<usize>> =
+        legs.iter().map(|leg| take(leg.calorimeter.is_some() && leg.tracker.is_some())).collect();
+    let shares = |leg: &LegPlan| leg.calorimeter.as_ref().is_some_and(|c| c.regions.iter().any(|r| r.len() > 1));
+    let choice: Vec<Option<usize>> = legs.iter().map(|leg| take(shares(leg))).collect();
+    let theta: Vec<Option<usize>> = legs.iter().map(|leg| take(leg.sigma_theta > 0.0)).collect();
+    let phi: Vec<Option<usize>> = legs.iter().map(|leg| take(leg.sigma_phi > 0.0)).collect();
+    // Measured: this order reaches the same error with about half the points of the order of generation.
+    let order = truth
+        .leading
+        .iter()
+        .chain(&values)
+        .chain(&vertex)
+        .chain(tracker.iter().flatten())
+        .chain(&truth.following)
+        .chain(choice.iter().flatten())
+        .chain(theta.iter().flatten())
+        .chain(phi.iter().flatten());
+    let mut places = vec![usize::MAX; next];
+    let mut used = 0;
+    for dimension in order {
+        places[*dimension] = used;
+        used += 1;
+    }
+    // What nothing uses comes last.
+    for place in places.iter_mut().filter(|place| **place == usize::MAX) {
+        *place = used;
+        used += 1;
+    }
+    Dimensions { values, choice, tracker, vertex, theta, phi, places }
 }

