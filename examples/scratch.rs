@@ -135,7 +135,8 @@ fn main() {
         1e9 * cpu / folded.record.points as f64,
         folded.record.precision_reached,
         folded.record.reached,
-        template.acceptance, template.acceptance_error,
+        template.acceptance,
+        template.acceptance_error,
     );
     if let Some(path) = option("--out") {
         let rows: Vec<String> = template.probability.iter().map(|p| format!("{}", p * template.acceptance)).collect();

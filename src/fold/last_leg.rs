@@ -22,8 +22,8 @@ pub(super) enum Reading {
 #[derive(Clone, Copy, Debug, Default)]
 pub(super) struct LastLeg {
     pub reading: Reading,
-    /// Index of the tailed response.
-    pub tail: Option<usize>,
+    /// Index of the tailed response; beyond the list for a Gaussian.
+    pub tail: usize,
     pub category: usize,
     pub weight: f64,
     /// Mass of the leg, GeV.
@@ -190,7 +190,7 @@ fn lost_share(last: &LastLeg, tail: Option<&UnitTail>, least: f64) -> f64 {
 wide! {
     /// Adds one event.
     pub(super) fn add(plan: &Plan, last: &LastLeg, sums: &mut Sums) {
-        let tail = last.tail.and_then(|index| plan.tails.get(index));
+        let tail = plan.tails.get(last.tail);
         let least = last.least_momentum();
         sums.lost += last.weight * lost_share(last, tail, least);
         let intervals: Intervals = allowed(plan, last, least);

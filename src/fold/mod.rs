@@ -1,12 +1,15 @@
 //! The folding engine, and the plain reference path.
 
+mod aim;
 mod engine;
 mod estimate;
 mod last_leg;
 mod limits;
 mod measure;
 mod plan;
+mod resolve;
 mod response;
+mod spread;
 
 use crate::process::Study;
 use crate::template::LabelledTemplate;

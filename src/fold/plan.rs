@@ -116,21 +116,29 @@ impl AxisPlan {
     }
 }
 
-/// Which dimension of the sequence feeds what. The first dimensions of the sequence are the most even, so they go to what
-/// moves the mass most: `places` says which.
+/// Which dimension of the sequence feeds what.
 #[derive(Clone, Debug, Default)]
 pub(super) struct Dimensions {
-    /// Measured values of all legs but the last, by rank.
-    pub values: Vec<usize>,
     /// Which of several entries measures the leg, by leg.
     pub choice: Vec<Option<usize>>,
-    /// Tracker value of an electron, by leg.
-    pub tracker: Vec<Option<usize>>,
-    pub vertex: Option<usize>,
-    pub theta: Vec<Option<usize>>,
-    pub phi: Vec<Option<usize>>,
+    /// Whether the right vertex is chosen.
+    pub vertex_choice: Option<usize>,
+    /// The first of the standard normals; see [`Normals`].
+    pub normals: usize,
     /// For every dimension, those of the truth events first, its place in the sequence.
     pub places: Vec<usize>,
+}
+
+/// The standard normal numbers of one event, as places in one list: first the measured values of all legs but the last,
+/// by rank, then what stands here.
+#[derive(Clone, Debug, Default)]
+pub(super) struct Normals {
+    pub vertex: Option<usize>,
+    /// Tracker value of an electron, by leg.
+    pub tracker: Vec<Option<usize>>,
+    pub theta: Vec<Option<usize>>,
+    pub phi: Vec<Option<usize>>,
+    pub count: usize,
 }
 
 /// A channel at a mass point, ready to fold.
@@ -144,6 +152,7 @@ pub(super) struct Plan {
     pub cuts: CutPlan,
     pub axis: AxisPlan,
     pub dimensions: Dimensions,
+    pub normals: Normals,
 }
 
 impl Plan {
@@ -173,7 +182,8 @@ impl Plan {
             spread_wrong: 1e-3 * vertex.spread_wrong_mm / vertex.calorimeter_radius_m,
         });
         let vertex = vertex.filter(|_| legs.iter().any(|leg| leg.trackless));
-        let dimensions = dimensions(&legs, vertex.is_some(), truth);
+        let normals = normals(&legs, vertex.is_some());
+        let dimensions = dimensions(&legs, vertex.is_some(), normals.count, truth);
         Plan {
             legs,
             calorimeters,
@@ -183,6 +193,7 @@ impl Plan {
             cuts: cut_plan(&channel.cuts, channel),
             axis: AxisPlan::new(&channel.axis, mass_gev),
             dimensions,
+            normals,
         }
     }
 }
@@ -272,37 +283,44 @@ fn cut_plan(cuts: &Cuts, channel: &Channel) -> CutPlan {
     }
 }
 
-fn dimensions(legs: &[LegPlan], vertex: bool, truth: &TruthDimensions) -> Dimensions {
-    let mut next = truth.count;
+fn normals(legs: &[LegPlan], vertex: bool) -> Normals {
+    let mut next = legs.len() - 1;
     let mut take = |wanted: bool| {
         wanted.then(|| {
             next += 1;
             next - 1
         })
     };
-    let values: Vec<usize> = (1..legs.len()).filter_map(|_| take(true)).collect();
     let vertex = take(vertex);
-    let tracker: Vec<Option<usize>> =
-        legs.iter().map(|leg| take(leg.calorimeter.is_some() && leg.tracker.is_some())).collect();
+    let tracker = legs.iter().map(|leg| take(leg.calorimeter.is_some() && leg.tracker.is_some())).collect();
+    let theta = legs.iter().map(|leg| take(leg.sigma_theta > 0.0)).collect();
+    let phi = legs.iter().map(|leg| take(leg.sigma_phi > 0.0)).collect();
+    Normals { vertex, tracker, theta, phi, count: next }
+}
+
+fn dimensions(legs: &[LegPlan], vertex: bool, normals: usize, truth: &TruthDimensions) -> Dimensions {
+    let mut next = truth.count;
+    let mut take = |count: usize| {
+        next += count;
+        next - count
+    };
     let shares = |leg: &LegPlan| leg.calorimeter.as_ref().is_some_and(|c| c.regions.iter().any(|r| r.len() > 1));
-    let choice: Vec<Option<usize>> = legs.iter().map(|leg| take(shares(leg))).collect();
-    let theta: Vec<Option<usize>> = legs.iter().map(|leg| take(leg.sigma_theta > 0.0)).collect();
-    let phi: Vec<Option<usize>> = legs.iter().map(|leg| take(leg.sigma_phi > 0.0)).collect();
-    // Measured: this order reaches the same error with about half the points of the order of generation.
-    let order = truth
-        .leading
-        .iter()
-        .chain(&values)
-        .chain(&vertex)
-        .chain(tracker.iter().flatten())
-        .chain(&truth.following)
-        .chain(choice.iter().flatten())
-        .chain(theta.iter().flatten())
-        .chain(phi.iter().flatten());
+    let choice: Vec<Option<usize>> = legs.iter().map(|leg| shares(leg).then(|| take(1))).collect();
+    let vertex_choice = vertex.then(|| take(1));
+    let first_normal = take(normals);
+    // The first places of the sequence are the most even, so they go to what moves the mass and the acceptance most. Of
+    // the normals the first, after the rotation (see `spread`), carries nearly all.
+    let order = [first_normal]
+        .into_iter()
+        .chain(truth.leading.iter().copied())
+        .chain(vertex_choice)
+        .chain(truth.following.iter().copied())
+        .chain(choice.iter().flatten().copied())
+        .chain(first_normal + 1..next);
     let mut places = vec![usize::MAX; next];
     let mut used = 0;
     for dimension in order {
-        places[*dimension] = used;
+        places[dimension] = used;
         used += 1;
     }
     // What nothing uses comes last.
@@ -310,5 +328,5 @@ fn dimensions(legs: &[LegPlan], vertex: bool, truth: &TruthDimensions) -> Dimens
         *place = used;
         used += 1;
     }
-    Dimensions { values, choice, tracker, vertex, theta, phi, places }
+    Dimensions { choice, vertex_choice, normals: first_normal, places }
 }
