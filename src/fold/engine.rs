@@ -70,7 +70,7 @@ pub(super) fn fold_generated(
     let edges = plan.axis.squares.len();
     let mut totals = vec![Total::new(categories, edges); REPLICATES];
     let most = (study.max_points / REPLICATES as u64).clamp(BLOCK as u64, MAX_POINTS);
-    // The largest power of two within the limit: Sobol points balance only at powers of two.
+    // The largest power of two within the limit: the points are most even there.
     let most = 1 << most.ilog2();
     let mut done = 0;
     let mut next = FIRST_ROUND.min(most);
@@ -119,8 +119,13 @@ pub(super) fn fold_generated(
             let templates = estimate::templates(channel, mass_gev, &totals, None);
             return Ok(Folded { templates, record });
         }
-        next = (done * 2).min(most);
+        next = next_round(done).min(most);
     }
+}
+
+/// Rounds grow by 3/2 and 4/3 in turn: points are most even at powers of two, and nearly so half-way.
+fn next_round(done: u64) -> u64 {
+    if done.is_power_of_two() { done / 2 * 3 } else { done / 3 * 4 }
 }
 
 fn fold_chunk(

@@ -5,7 +5,7 @@ use super::limits::{Intervals, allowed};
 use super::plan::{AxisPlan, Plan};
 use super::response::{UnitTail, power_tail};
 use crate::kinematics::MAX_LEGS;
-use crate::numerics::normal::{NORMAL_REACH, normal_cdf};
+use crate::numerics::normal::{NORMAL_REACH, normal_cdf, normal_cdf_within};
 use crate::wide;
 
 /// What measures a leg.
@@ -58,13 +58,6 @@ pub(super) struct Sums {
 impl Sums {
     pub fn new(edges: usize) -> Self {
         Sums { below: vec![0.0; edges], steps: vec![0.0; edges + 1], accepted: 0.0, lost: 0.0 }
-    }
-
-    pub fn clear(&mut self) {
-        self.below.fill(0.0);
-        self.steps.fill(0.0);
-        self.accepted = 0.0;
-        self.lost = 0.0;
     }
 
     pub fn add(&mut self, other: &Sums) {
@@ -150,6 +143,9 @@ impl LastLeg {
             }
             Reading::Calorimeter | Reading::Both => {
                 let e = (t - self.offset) / self.slope;
+                if self.mass == 0.0 {
+                    return e;
+                }
                 ((e - self.mass) * (e + self.mass)).max(0.0).sqrt()
             }
         }
@@ -160,6 +156,7 @@ impl LastLeg {
     pub fn least_momentum(&self) -> f64 {
         match self.reading {
             Reading::Tracker => 0.0,
+            Reading::Calorimeter | Reading::Both if self.mass == 0.0 => self.least_energy,
             Reading::Calorimeter | Reading::Both => {
                 ((self.least_energy - self.mass) * (self.least_energy + self.mass)).max(0.0).sqrt()
             }
@@ -178,9 +175,13 @@ fn response_cdf(tail: Option<&UnitTail>, t: f64) -> f64 {
 
 /// Probability that the measurement of the last leg loses the event.
 #[inline(always)]
-fn lost_share(last: &LastLeg, tail: Option<&UnitTail>, least: f64) -> f64 {
+fn lost_share(last: &LastLeg, tail: Option<&UnitTail>) -> f64 {
     // A tracker loses curvatures of the wrong sign, which is the upper end of its variable; a calorimeter the lower.
-    let (t, upper) = if last.reading == Reading::Tracker { (-last.offset, true) } else { (last.value(least), false) };
+    let (t, upper) = if last.reading == Reading::Tracker {
+        (-last.offset, true)
+    } else {
+        (last.slope * last.least_energy + last.offset, false)
+    };
     if tail.is_none() && t < -NORMAL_REACH {
         return 0.0;
     }
@@ -192,7 +193,7 @@ wide! {
     pub(super) fn add(plan: &Plan, last: &LastLeg, sums: &mut Sums) {
         let tail = plan.tails.get(last.tail);
         let least = last.least_momentum();
-        sums.lost += last.weight * lost_share(last, tail, least);
+        sums.lost += last.weight * lost_share(last, tail);
         let intervals: Intervals = allowed(plan, last, least);
         let turning = last.turning_momentum();
         for interval in intervals.iter() {
@@ -236,7 +237,7 @@ fn add_rising(axis: &AxisPlan, last: &LastLeg, tail: Option<&UnitTail>, from: f6
             sums.steps[first] -= w * low;
             sums.steps[last_edge] += w * high;
             sums.accepted += w * (high - low);
-            fill(axis, last, first, last_edge, &mut sums.below, |t| w * normal_cdf(t));
+            fill(axis, last, first, last_edge, &mut sums.below, |t| w * normal_cdf_within(t));
         }
         Some(tail) => {
             let (low, high) = (tail.cdf(start), tail.cdf(end));
