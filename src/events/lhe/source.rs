@@ -103,7 +103,7 @@ impl<'a> Source<'a> {
                 }
                 _ => format!("the event file cannot be read: {error}"),
             };
-            Problem { line: (self.line > 0).then_some(self.line), ..Problem::of_file(&self.file, message) }
+            self.problem(message)
         })?;
         if count == 0 {
             return Ok(false);
@@ -119,6 +119,6 @@ impl<'a> Source<'a> {
 
     /// A problem of the line that was read last.
     pub(super) fn problem(&self, message: impl Into<String>) -> Problem {
-        Problem::at_line(&self.file, self.line, message)
+        Problem { line: (self.line > 0).then_some(self.line), ..Problem::of_file(&self.file, message) }
     }
 }
