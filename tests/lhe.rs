@@ -249,7 +249,7 @@ fn broken_structure_is_refused() {
     refused(&event.replace("9.0000e+00\n", "9.0000e+00\r"), 8, &["columns", "carriage return"]);
     let (head, rest) = framed(&event).split_once("<init>").map(|(a, b)| (a.to_owned(), b.to_owned())).unwrap();
     read_text(&format!("{head}<init>{}", rest.replace("1 0.1 1 1\n", "")))
-        .assert_refused(Some(5), &["NPRUP promises 1", "0 follow"]);
+        .assert_refused(Some(4), &["NPRUP promises 1", "0 follow"]);
     read_text(&format!("{head}<init>{}", rest.replace("1 0.1", "x 0.1"))).assert_refused(Some(4), &["XSECUP", "`x`"]);
     for version in ["version=\"4.0\"", "version=\"\"", ""] {
         let text = framed(&event).replace("version=\"1.0\"", version);

@@ -170,7 +170,7 @@ fn read_event(
         let message = format!("the mothers of particle row {} lead back to it", row + 1);
         return Err(Fault { line: head_line, message });
     }
-    context.weight.of_event(event_weight, cursor, d_exponents).map_err(|message| Fault { line: cursor.line, message })
+    context.weight.of_event(event_weight, cursor, d_exponents).map_err(|message| Fault { line: head_line, message })
 }
 
 #[inline]
@@ -208,16 +208,32 @@ fn looks_like_row(mut cursor: Cursor<'_>) -> bool {
     cursor.words_left() == ROW.len() && (0..2).all(|_| cursor.word().is_some_and(|word| integer(word, &mut 0).is_ok()))
 }
 
-/// A row whose chain of only mothers comes back to it or never ends.
+/// The first row that is its own ancestor, or descends from one that is.
 fn circular(particles: &[Particle]) -> Option<usize> {
     let rising = |(i, p): (usize, &Particle)| p.mothers.iter().all(|m| (*m as usize) <= i);
     if particles.iter().enumerate().all(rising) {
         return None;
     }
-    (0..particles.len()).find(|start| {
-        let chain = std::iter::successors(Some(*start), |row| particles.get(*row)?.only_mother());
-        chain.take(particles.len() + 1).count() > particles.len()
-    })
+    // Rows are settled when their mothers are; in a circle nobody ever is. Row 0 stands for "no mother".
+    let mut settled = vec![false; particles.len() + 1];
+    if let Some(none) = settled.first_mut() {
+        *none = true;
+    }
+    let is_settled = |settled: &[bool], row: usize| settled.get(row).copied().unwrap_or(true);
+    loop {
+        let mut changed = false;
+        for (i, particle) in particles.iter().enumerate() {
+            if !is_settled(&settled, i + 1) && particle.mothers.iter().all(|m| is_settled(&settled, *m as usize)) {
+                if let Some(row) = settled.get_mut(i + 1) {
+                    *row = true;
+                }
+                changed = true;
+            }
+        }
+        if !changed {
+            return settled.iter().skip(1).position(|done| !done);
+        }
+    }
 }
 
 /// Precision of momenta and energies (relative to the energy of the row) and of each mass, from the printed digits.

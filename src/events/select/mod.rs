@@ -184,7 +184,10 @@ impl Selector {
                 let rest: Vec<Candidate> =
                     four.iter().enumerate().filter(|(k, _)| *k != i && *k != j).map(|(_, c)| *c).collect();
                 let [c, d] = rest.as_slice() else { continue };
-                let in_order = |x: &Candidate, y: &Candidate, rising: bool| x.object != y.object || rising;
+                // Equal kinds: negative first, else in the order of the choice.
+                let in_order = |x: &Candidate, y: &Candidate, rising: bool| {
+                    x.object != y.object || x.charge < y.charge || (x.charge == y.charge && rising)
+                };
                 for (c, d, rising) in [(c, d, true), (d, c, false)] {
                     let fits = [a.object, b.object] == kinds[0] && [c.object, d.object] == kinds[1];
                     if fits
