@@ -1,5 +1,7 @@
 //! The folding engine, and the plain reference path.
 
+pub mod plain;
+
 use crate::template::LabelledTemplate;
 
 /// How a fold of one channel at one mass point went.
