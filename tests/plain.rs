@@ -151,7 +151,7 @@ fn tracker_is_gaussian_in_curvature_and_loses_the_wrong_sign() {
     let lost = sample.categories[0].lost as f64 / MILLION as f64;
     assert_share(lost, 0.022750131948179207, MILLION as f64);
     let values: Vec<f64> = masses(&sample).iter().map(|m| (m / event.mass_gev).powi(2)).collect();
-    assert_distributed(&values, |u| normal_cdf((1.0 - 1.01 / u) / -0.5) / (1.0 - 0.022750131948179207));
+    assert_distributed(&values, |u| normal_cdf((1.0 - 1.01 / u) / 0.5) / (1.0 - 0.022750131948179207));
 }
 
 #[test]
@@ -510,7 +510,7 @@ fn what_cannot_be_done_is_an_error() {
 
 // --- the comparison itself ---
 
-/// All calorimeter and tracker terms wider by a factor.
+/// All calorimeter terms wider by a factor.
 fn wider(mut study: Study, factor: f64) -> Study {
     for entry in &mut study.detector.calorimeters {
         entry.stochastic *= factor;
@@ -522,19 +522,19 @@ fn wider(mut study: Study, factor: f64) -> Study {
 
 #[test]
 fn comparison_accepts_the_same_detector_and_rejects_one_that_is_2_percent_wider() {
-    let study = photon_study();
+    // One category: about 60 % of the events. A scale of 2 % moves the CDF of a peak by up to 0.005 (0.24 of the relative
+    // change for a Gaussian), three to four times the Kolmogorov scale of these samples.
+    let mut study = photon_study();
+    study.channels[0].categories = vec![Category { name: "all".into(), max_abs_eta: None }];
     let edges = study.channels[0].axis.edges_gev(125.0);
-    let plain = smear_generated(&study, 0, 125.0, MILLION, 61).unwrap();
-    let same = smear_generated(&study, 0, 125.0, 2 * MILLION, 62).unwrap();
-    let other = smear_generated(&wider(study, 1.02), 0, 125.0, 2 * MILLION, 63).unwrap();
-    for category in 0..2 {
-        let result = compare(&plain, category, &template_of(&same, category, &edges));
-        assert!(result.agrees(), "{result:?}");
-        assert!(result.degrees_of_freedom > 50, "{result:?}");
-        let result = compare(&plain, category, &template_of(&other, category, &edges));
-        assert!(!result.agrees(), "{result:?}");
-        assert!(result.chi_square_p < 1e-4 && result.cdf_p < 1e-4, "{result:?}");
-    }
+    let plain = smear_generated(&study, 0, 125.0, 2 * MILLION, 61).unwrap();
+    let same = smear_generated(&study, 0, 125.0, 3 * MILLION, 62).unwrap();
+    let result = compare(&plain, 0, &template_of(&same, 0, &edges));
+    assert!(result.agrees(), "{result:?}");
+    assert!(result.degrees_of_freedom > 50, "{result:?}");
+    let other = smear_generated(&wider(study, 1.02), 0, 125.0, 3 * MILLION, 63).unwrap();
+    let result = compare(&plain, 0, &template_of(&other, 0, &edges));
+    assert!(result.chi_square_p < 1e-4 && result.cdf_p < 1e-4, "{result:?}");
 }
 
 #[test]
@@ -553,10 +553,10 @@ fn comparison_has_honest_probabilities() {
     // acceptance pulls with unit spread (chi-square of 16 between its 1e-5 and 1 - 1e-5 quantiles, 2.8 and 51.9).
     let study = photon_study();
     let edges = study.channels[0].axis.edges_gev(125.0);
-    let template = template_of(&smear_generated(&study, 0, 125.0, 4 * MILLION, 70).unwrap(), 0, &edges);
+    let template = template_of(&smear_generated(&study, 0, 125.0, 2 * MILLION, 70).unwrap(), 0, &edges);
     let (mut sum, mut freedom, mut pulls) = (0.0, 0.0, 0.0);
     for seed in 71..87 {
-        let result = compare(&smear_generated(&study, 0, 125.0, 100_000, seed).unwrap(), 0, &template);
+        let result = compare(&smear_generated(&study, 0, 125.0, 50_000, seed).unwrap(), 0, &template);
         sum += result.chi_square;
         freedom += result.degrees_of_freedom as f64;
         pulls += result.acceptance_pull.powi(2);
@@ -568,9 +568,9 @@ fn comparison_has_honest_probabilities() {
 #[test]
 fn kolmogorov_probabilities_are_the_tabulated_ones() {
     // Critical values 1.2238 (10 %), 1.3581 (5 %), 1.6276 (1 %): N. Smirnov, Ann. Math. Stat. 19 (1948) 279 (value from
-    // memory; five digits).
+    // memory). Half a unit of their last digit is up to 2.5e-5 in probability.
     for (x, p) in [(1.2238, 0.10), (1.3581, 0.05), (1.6276, 0.01)] {
-        assert!((kolmogorov_probability(x) - p).abs() < 2e-4 * p.max(0.1));
+        assert!((kolmogorov_probability(x) - p).abs() < 3e-5);
     }
 }
 
