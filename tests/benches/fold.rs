@@ -7,8 +7,8 @@
 use peakfold::detector::{Calorimeter, Detector, Direction, EtaRange, Object, Tail, Vertex};
 use peakfold::fold::fold_channel;
 use peakfold::process::{
-    Category, Channel, Cuts, Decay, EventSource, Intermediate, MassAxis, Natural, Production, Resonance, ShapeChoice, Study,
-    Width,
+    Category, Channel, Cuts, Decay, EventSource, Intermediate, MassAxis, Natural, Production, Resonance, ShapeChoice,
+    Study, Width,
 };
 use std::time::Instant;
 

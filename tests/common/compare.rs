@@ -85,8 +85,10 @@ pub fn compare(plain: &PlainSample, category: usize, template: &Template) -> Com
     let acceptance = total / plain.generated_weight;
     let variance = (squares * (1.0 - 2.0 * acceptance) + acceptance * acceptance * plain.generated_weight_squared)
         / plain.generated_weight.powi(2);
-    let acceptance_pull =
-        pull(acceptance - template.acceptance, (variance.max(0.0) + template.acceptance_error.powi(2)).sqrt());
+    // No sample tells an acceptance of 1 (or 0) from one that differs by less than an event.
+    let one_event = plain.generated_weight_squared / plain.generated_weight.powi(2);
+    let error = (variance.max(one_event.powi(2)) + template.acceptance_error.powi(2)).sqrt();
+    let acceptance_pull = (acceptance - template.acceptance) / error;
 
     Comparison {
         chi_square,
@@ -141,10 +143,6 @@ pub fn kolmogorov_probability(x: f64) -> f64 {
     }
     let term = |k: i32| libm::exp(-2.0 * f64::from(k * k) * x * x) * if k % 2 == 1 { 2.0 } else { -2.0 };
     (1..=100).map(term).sum::<f64>().clamp(0.0, 1.0)
-}
-
-fn pull(difference: f64, error: f64) -> f64 {
-    if difference == 0.0 { 0.0 } else { difference / error }
 }
 
 fn with_ends(below: f64, bins: &[f64], above: f64) -> Vec<f64> {
