@@ -29,8 +29,11 @@ impl Default for LegLanes {
 pub struct TruthBlock {
     /// The legs, in the order of the channel.
     pub legs: Vec<LegLanes>,
-    /// Weights.
+    /// Weights of the events as drawn.
     pub weight: Lane,
+    /// What each counts in the sum of all generated weights: the weight but for the preference that the drawing gives to
+    /// events within reach of the detector, which is 1 on average.
+    pub generated: Lane,
     /// True mass of the resonance, in GeV.
     pub mass: Lane,
 }
@@ -38,6 +41,11 @@ pub struct TruthBlock {
 impl TruthBlock {
     /// A block of events with this many legs.
     pub fn new(legs: usize) -> Self {
-        TruthBlock { legs: vec![LegLanes::default(); legs], weight: [0.0; BLOCK], mass: [0.0; BLOCK] }
+        TruthBlock {
+            legs: vec![LegLanes::default(); legs],
+            weight: [0.0; BLOCK],
+            generated: [0.0; BLOCK],
+            mass: [0.0; BLOCK],
+        }
     }
 }

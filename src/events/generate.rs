@@ -5,6 +5,7 @@ use super::cascade::CascadeSampler;
 use super::natural::NaturalSampler;
 use crate::kinematics::phase_space_lambda;
 use crate::numerics::kernel;
+use crate::numerics::normal::normal_cdf;
 use crate::numerics::sobol::{BLOCK, Lane, Scrambling};
 use crate::process::{Decay, Production, Resonance, SpectrumCell};
 use crate::wide;
@@ -20,6 +21,19 @@ pub struct Generator {
     natural: NaturalSampler,
     masses: Vec<f64>,
     cascade: Option<CascadeSampler>,
+    /// Legs beyond this |rapidity| are out of reach.
+    reach: f64,
+}
+
+/// The dimensions of the sequence that truth events take.
+#[derive(Clone, Debug, Default)]
+pub struct TruthDimensions {
+    /// How many.
+    pub count: usize,
+    /// Those that matter most for acceptance and mass, then those that matter less; some may be in neither.
+    pub leading: Vec<usize>,
+    /// See `leading`.
+    pub following: Vec<usize>,
 }
 
 /// Dimensions of the production and of the first decay.
@@ -46,12 +60,24 @@ impl Generator {
             Production::Spectrum { .. } => Vec::new(),
             Production::Table(cells) => running_sums(cells),
         };
-        Some(Generator { production: production.clone(), cell_sums, natural, masses, cascade })
+        Some(Generator { production: production.clone(), cell_sums, natural, masses, cascade, reach: f64::INFINITY })
     }
 
-    /// Number of dimensions that the events take.
-    pub fn dimensions(&self) -> usize {
-        if self.cascade.is_some() { CASCADE + 6 } else { CASCADE }
+    /// Draws mostly events whose legs stay within this |rapidity|, with weights that make up for it exactly; the preference
+    /// acts on a Gaussian spectrum only.
+    pub fn restrict(&mut self, reach: f64) {
+        self.reach = reach;
+    }
+
+    /// The dimensions that the events take.
+    pub fn dimensions(&self) -> TruthDimensions {
+        let count = if self.cascade.is_some() { CASCADE + 6 } else { CASCADE };
+        let mut leading = vec![COS_THETA, RAPIDITY];
+        if !self.natural.is_line() {
+            leading.push(MASS);
+        }
+        let following = [PT, PHI].into_iter().chain(CASCADE..count).collect();
+        TruthDimensions { count, leading, following }
     }
 
     /// The events of the points `first..first + BLOCK`.
@@ -66,8 +92,6 @@ impl Generator {
         } else {
             self.natural.fill(&lane(MASS), &mut block.mass, &mut block.weight);
         }
-        let (mut pt, mut rapidity) = ([0.0; BLOCK], [0.0; BLOCK]);
-        self.produce(&lane(PT), &lane(RAPIDITY), &mut pt, &mut rapidity);
         match &self.cascade {
             None => {
                 let (m1, m2) = ([self.masses[0]; BLOCK], [self.masses[1]; BLOCK]);
@@ -90,26 +114,49 @@ impl Generator {
                 boost(&v2, d);
             }
         }
+        block.generated = block.weight;
+        self.produce(&lane(PT), &lane(RAPIDITY), block);
+    }
+
+    /// Moves the legs from the resonance's rest system to the laboratory.
+    fn produce(&self, u_pt: &Lane, u_rapidity: &Lane, block: &mut TruthBlock) {
+        let (mut pt, mut rapidity) = ([0.0; BLOCK], [0.0; BLOCK]);
+        match &self.production {
+            Production::Spectrum { pt_mean_gev, rapidity_sigma } => {
+                exponential(*pt_mean_gev, u_pt, &mut pt);
+                for leg in &mut block.legs {
+                    boost_across(&block.mass, &pt, leg);
+                }
+                if self.reach.is_finite() && *rapidity_sigma > 0.0 {
+                    let (mut low, mut high) = ([-f64::MAX; BLOCK], [f64::MAX; BLOCK]);
+                    for leg in &block.legs {
+                        narrow(self.reach, leg, &mut low, &mut high);
+                    }
+                    within(*rapidity_sigma, u_rapidity, &low, &high, &mut rapidity, &mut block.weight);
+                } else {
+                    gaussian(*rapidity_sigma, u_rapidity, &mut rapidity);
+                }
+            }
+            Production::Table(cells) => {
+                self.from_cells(cells, u_pt, u_rapidity, &mut pt, &mut rapidity);
+                for leg in &mut block.legs {
+                    boost_across(&block.mass, &pt, leg);
+                }
+            }
+        }
         for leg in &mut block.legs {
-            to_laboratory(&block.mass, &pt, &rapidity, leg);
+            boost_along(&rapidity, leg);
         }
     }
 
-    fn produce(&self, u_pt: &Lane, u_rapidity: &Lane, pt: &mut Lane, rapidity: &mut Lane) {
-        match &self.production {
-            Production::Spectrum { pt_mean_gev, rapidity_sigma } => {
-                spectrum(*pt_mean_gev, *rapidity_sigma, u_pt, u_rapidity, pt, rapidity);
-            }
-            Production::Table(cells) => {
-                for i in 0..BLOCK {
-                    let cell = self.cell_sums.partition_point(|sum| *sum <= u_pt[i]).min(cells.len() - 1);
-                    let start = if cell == 0 { 0.0 } else { self.cell_sums[cell - 1] };
-                    let inside = (u_pt[i] - start) / (self.cell_sums[cell] - start);
-                    let between = |(low, high): (f64, f64), u: f64| low + u * (high - low);
-                    pt[i] = between(cells[cell].pt_gev, inside);
-                    rapidity[i] = between(cells[cell].rapidity, u_rapidity[i]);
-                }
-            }
+    fn from_cells(&self, cells: &[SpectrumCell], u_pt: &Lane, u_y: &Lane, pt: &mut Lane, rapidity: &mut Lane) {
+        let between = |(low, high): (f64, f64), u: f64| low + u * (high - low);
+        for i in 0..BLOCK {
+            let cell = self.cell_sums.partition_point(|sum| *sum <= u_pt[i]).min(cells.len() - 1);
+            let start = if cell == 0 { 0.0 } else { self.cell_sums[cell - 1] };
+            let inside = (u_pt[i] - start) / (self.cell_sums[cell] - start);
+            pt[i] = between(cells[cell].pt_gev, inside);
+            rapidity[i] = between(cells[cell].rapidity, u_y[i]);
         }
     }
 }
@@ -127,19 +174,64 @@ fn running_sums(cells: &[SpectrumCell]) -> Vec<f64> {
 }
 
 wide! {
-    fn spectrum(
-        pt_mean: f64,
-        rapidity_sigma: f64,
-        u_pt: &Lane,
-        u_rapidity: &Lane,
-        pt: &mut Lane,
-        rapidity: &mut Lane,
-    ) {
+    fn exponential(mean: f64, uniform: &Lane, values: &mut Lane) {
         for i in 0..BLOCK {
-            pt[i] = -pt_mean * kernel::ln(u_pt[i]);
+            values[i] = -mean * kernel::ln(uniform[i]);
         }
+    }
+}
+
+wide! {
+    fn gaussian(sigma: f64, uniform: &Lane, values: &mut Lane) {
         for i in 0..BLOCK {
-            rapidity[i] = rapidity_sigma * kernel::normal_quantile(u_rapidity[i]);
+            values[i] = sigma * kernel::normal_quantile(uniform[i]);
+        }
+    }
+}
+
+wide! {
+    /// Narrows the range of the resonance's rapidity to what leaves a leg within reach.
+    fn narrow(reach: f64, leg: &LegLanes, low: &mut Lane, high: &mut Lane) {
+        for i in 0..BLOCK {
+            let least = leg.e[i] * 1e-12;
+            let (plus, minus) = (leg.e[i] + leg.pz[i], leg.e[i] - leg.pz[i]);
+            let plus = if plus > least { plus } else { least };
+            let minus = if minus > least { minus } else { least };
+            let own = 0.5 * kernel::ln(plus / minus);
+            let (from, to) = (-reach - own, reach - own);
+            low[i] = if from > low[i] { from } else { low[i] };
+            high[i] = if to < high[i] { to } else { high[i] };
+        }
+    }
+}
+
+/// Share of the events that are drawn from the whole spectrum all the same, so that no event has more than its inverse as
+/// weight.
+const DEFENSIVE: f64 = 1.0 / 16.0;
+
+wide! {
+    /// Gaussian rapidities, mostly between `low` and `high`: density over drawn density multiplies the weight.
+    fn within(sigma: f64, uniform: &Lane, low: &Lane, high: &Lane, rapidity: &mut Lane, weight: &mut Lane) {
+        for i in 0..BLOCK {
+            let below = normal_cdf(low[i] / sigma);
+            let inside = normal_cdf(high[i] / sigma) - below;
+            let reachable = inside > 1e-9;
+            let anywhere = uniform[i] < DEFENSIVE || !reachable;
+            let (start, length) = if reachable {
+                if anywhere { (0.0, DEFENSIVE) } else { (DEFENSIVE, 1.0 - DEFENSIVE) }
+            } else {
+                (0.0, 1.0)
+            };
+            let u = (uniform[i] - start) / length;
+            let u = if anywhere { u } else { below + u * inside };
+            let u = if u > 1e-16 { u } else { 1e-16 };
+            let u = if u < 1.0 - 1.2e-16 { u } else { 1.0 - 1.2e-16 };
+            let y = sigma * kernel::normal_quantile(u);
+            rapidity[i] = y;
+            let preferred = !anywhere || (low[i] < y && y < high[i]);
+            let drawn = if preferred { (1.0 - DEFENSIVE) / inside } else { 0.0 };
+            let factor = 1.0 / (drawn + DEFENSIVE);
+            weight[i] *= if reachable { factor } else { 1.0 };
         }
     }
 }
@@ -194,18 +286,28 @@ wide! {
 }
 
 wide! {
-    /// From the resonance's rest system to the laboratory: a boost along x, then one along the beam.
-    fn to_laboratory(mass: &Lane, pt: &Lane, rapidity: &Lane, leg: &mut LegLanes) {
+    /// From the resonance's rest system to one in which it has its transverse momentum, along x.
+    fn boost_across(mass: &Lane, pt: &Lane, leg: &mut LegLanes) {
         for i in 0..BLOCK {
-            let mt = (mass[i] * mass[i] + pt[i] * pt[i]).sqrt();
-            let (gamma, beta_gamma) = (mt / mass[i], pt[i] / mass[i]);
+            let inverse = 1.0 / mass[i];
+            let (gamma, beta_gamma) = ((mass[i] * mass[i] + pt[i] * pt[i]).sqrt() * inverse, pt[i] * inverse);
+            let e = gamma * leg.e[i] + beta_gamma * leg.px[i];
+            leg.px[i] = beta_gamma * leg.e[i] + gamma * leg.px[i];
+            leg.e[i] = e;
+        }
+    }
+}
+
+wide! {
+    /// By a rapidity along the beam.
+    fn boost_along(rapidity: &Lane, leg: &mut LegLanes) {
+        for i in 0..BLOCK {
             let grown = kernel::exp(rapidity[i]);
             let shrunk = 1.0 / grown;
             let (cosh, sinh) = (0.5 * (grown + shrunk), 0.5 * (grown - shrunk));
-            let e = gamma * leg.e[i] + beta_gamma * leg.px[i];
-            leg.px[i] = beta_gamma * leg.e[i] + gamma * leg.px[i];
-            leg.e[i] = e * cosh + leg.pz[i] * sinh;
-            leg.pz[i] = leg.pz[i] * cosh + e * sinh;
+            let e = leg.e[i] * cosh + leg.pz[i] * sinh;
+            leg.pz[i] = leg.pz[i] * cosh + leg.e[i] * sinh;
+            leg.e[i] = e;
         }
     }
 }

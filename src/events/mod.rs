@@ -6,4 +6,4 @@ mod generate;
 mod natural;
 
 pub use block::{LegLanes, TruthBlock};
-pub use generate::Generator;
+pub use generate::{Generator, TruthDimensions};

@@ -57,28 +57,27 @@ pub(super) fn fold_generated(
     let started = Instant::now();
     let channel = study.channels.get(channel_index).ok_or(FoldError::NoSuchChannel(channel_index))?;
     let EventSource::Generated(production) = &study.resonance.source else { return Err(FoldError::NotGenerated) };
-    let generator = Generator::new(&study.resonance, production, &channel.decay, mass_gev)
+    let mut generator = Generator::new(&study.resonance, production, &channel.decay, mass_gev)
         .ok_or(FoldError::BelowThreshold { mass_gev })?;
-    let plan = Plan::new(&study.detector, channel, mass_gev, generator.dimensions());
-    let dimensions = plan.dimensions.total;
+    let plan = Plan::new(&study.detector, channel, mass_gev, &generator.dimensions());
+    generator.restrict(plan.rapidity_reach());
+    let dimensions = plan.dimensions.places.len();
     let scramblings: Vec<Scrambling> = (0..REPLICATES as u64)
-        .map(|r| Scrambling::new(study.seed, r, dimensions))
+        .map(|r| Scrambling::new(study.seed, r, &plan.dimensions.places))
         .collect::<Option<_>>()
         .ok_or(FoldError::TooManyDimensions { found: dimensions, allowed: MAX_DIMENSIONS })?;
     let categories = channel.categories.len();
     let edges = plan.axis.squares.len();
     let mut totals = vec![Total::new(categories, edges); REPLICATES];
     let most = (study.max_points / REPLICATES as u64).clamp(BLOCK as u64, MAX_POINTS);
-    // The largest power of two within the limit: Sobol points balance only at powers of two.
+    // The largest power of two within the limit: the points are most even there.
     let most = 1 << most.ilog2();
     let mut done = 0;
     let mut next = FIRST_ROUND.min(most);
     let mut cpu_seconds = 0.0;
     loop {
         let tasks: Vec<(usize, u64, u64)> = (0..REPLICATES)
-            .flat_map(|r| {
-                (done..next).step_by(CHUNK as usize).map(move |start| (r, start, (start + CHUNK).min(next)))
-            })
+            .flat_map(|r| (done..next).step_by(CHUNK as usize).map(move |start| (r, start, (start + CHUNK).min(next))))
             .collect();
         for wave in tasks.chunks(WAVE) {
             let results: Vec<(usize, Total, f64)> = wave
@@ -87,7 +86,8 @@ pub(super) fn fold_generated(
                     || Workspace::new(&plan),
                     |workspace, (r, start, end)| {
                         let begun = Instant::now();
-                        let total = fold_chunk(&generator, &plan, &scramblings[*r], *start, *end, categories, workspace);
+                        let total =
+                            fold_chunk(&generator, &plan, &scramblings[*r], *start, *end, categories, workspace);
                         (*r, total, begun.elapsed().as_secs_f64())
                     },
                 )
@@ -96,7 +96,10 @@ pub(super) fn fold_generated(
                 totals[*r].add(total);
                 cpu_seconds += seconds;
             }
-            progress(Progress { points: (results.len() as u64) * CHUNK.min(next - done), of_at_most: study.max_points });
+            progress(Progress {
+                points: (results.len() as u64) * CHUNK.min(next - done),
+                of_at_most: study.max_points,
+            });
         }
         done = next;
         let reached = estimate::precision(&totals);
@@ -116,8 +119,13 @@ pub(super) fn fold_generated(
             let templates = estimate::templates(channel, mass_gev, &totals, None);
             return Ok(Folded { templates, record });
         }
-        next = (done * 2).min(most);
+        next = next_round(done).min(most);
     }
+}
+
+/// Rounds grow by 3/2 and 4/3 in turn: points are most even at powers of two, and nearly so half-way.
+fn next_round(done: u64) -> u64 {
+    if done.is_power_of_two() { done / 2 * 3 } else { done / 3 * 4 }
 }
 
 fn fold_chunk(
@@ -132,7 +140,7 @@ fn fold_chunk(
     let mut total = Total::new(categories, plan.axis.squares.len());
     for first in (start..end).step_by(BLOCK) {
         generator.fill(points, first, &mut workspace.truth);
-        total.generated += workspace.truth.weight.iter().sum::<f64>();
+        total.generated += workspace.truth.generated.iter().sum::<f64>();
         workspace.measure(plan, points, first);
         for last in &workspace.last {
             add(plan, last, &mut total.sums[last.category]);

@@ -132,8 +132,8 @@ fn list_errors(list: &ListSums, category: usize, mean: &Replicate) -> (Vec<f64>,
         })
         .collect();
     let a = mean.acceptance;
-    let variance = list.accepted_squares[category] - 2.0 * a * list.accepted_products[category]
-        + a * a * list.weight_squares;
+    let variance =
+        list.accepted_squares[category] - 2.0 * a * list.accepted_products[category] + a * a * list.weight_squares;
     let acceptance = if list.weights == 0.0 { 0.0 } else { variance.max(0.0).sqrt() / list.weights.abs() };
     (bins, acceptance)
 }

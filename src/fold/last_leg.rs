@@ -5,7 +5,7 @@ use super::limits::{Intervals, allowed};
 use super::plan::{AxisPlan, Plan};
 use super::response::{UnitTail, power_tail};
 use crate::kinematics::MAX_LEGS;
-use crate::numerics::normal::{NORMAL_REACH, normal_cdf};
+use crate::numerics::normal::{NORMAL_REACH, normal_cdf, normal_cdf_within};
 use crate::wide;
 
 /// What measures a leg.
@@ -22,8 +22,8 @@ pub(super) enum Reading {
 #[derive(Clone, Copy, Debug, Default)]
 pub(super) struct LastLeg {
     pub reading: Reading,
-    /// Index of the tailed response.
-    pub tail: Option<usize>,
+    /// Index of the tailed response; beyond the list for a Gaussian.
+    pub tail: usize,
     pub category: usize,
     pub weight: f64,
     /// Mass of the leg, GeV.
@@ -58,13 +58,6 @@ pub(super) struct Sums {
 impl Sums {
     pub fn new(edges: usize) -> Self {
         Sums { below: vec![0.0; edges], steps: vec![0.0; edges + 1], accepted: 0.0, lost: 0.0 }
-    }
-
-    pub fn clear(&mut self) {
-        self.below.fill(0.0);
-        self.steps.fill(0.0);
-        self.accepted = 0.0;
-        self.lost = 0.0;
     }
 
     pub fn add(&mut self, other: &Sums) {
@@ -150,6 +143,9 @@ impl LastLeg {
             }
             Reading::Calorimeter | Reading::Both => {
                 let e = (t - self.offset) / self.slope;
+                if self.mass == 0.0 {
+                    return e;
+                }
                 ((e - self.mass) * (e + self.mass)).max(0.0).sqrt()
             }
         }
@@ -160,6 +156,7 @@ impl LastLeg {
     pub fn least_momentum(&self) -> f64 {
         match self.reading {
             Reading::Tracker => 0.0,
+            Reading::Calorimeter | Reading::Both if self.mass == 0.0 => self.least_energy,
             Reading::Calorimeter | Reading::Both => {
                 ((self.least_energy - self.mass) * (self.least_energy + self.mass)).max(0.0).sqrt()
             }
@@ -176,14 +173,27 @@ fn response_cdf(tail: Option<&UnitTail>, t: f64) -> f64 {
     }
 }
 
+/// Probability that the measurement of the last leg loses the event.
+#[inline(always)]
+fn lost_share(last: &LastLeg, tail: Option<&UnitTail>) -> f64 {
+    // A tracker loses curvatures of the wrong sign, which is the upper end of its variable; a calorimeter the lower.
+    let (t, upper) = if last.reading == Reading::Tracker {
+        (-last.offset, true)
+    } else {
+        (last.slope * last.least_energy + last.offset, false)
+    };
+    if tail.is_none() && t < -NORMAL_REACH {
+        return 0.0;
+    }
+    if upper { normal_cdf(t) } else { response_cdf(tail, t) }
+}
+
 wide! {
     /// Adds one event.
     pub(super) fn add(plan: &Plan, last: &LastLeg, sums: &mut Sums) {
-        let tail = last.tail.and_then(|index| plan.tails.get(index));
+        let tail = plan.tails.get(last.tail);
         let least = last.least_momentum();
-        let kept = response_cdf(tail, if last.reading == Reading::Tracker { last.offset } else { f64::INFINITY });
-        let missed = response_cdf(tail, last.value(least));
-        sums.lost += last.weight * (1.0 - kept + missed);
+        sums.lost += last.weight * lost_share(last, tail);
         let intervals: Intervals = allowed(plan, last, least);
         let turning = last.turning_momentum();
         for interval in intervals.iter() {
@@ -221,12 +231,13 @@ fn add_rising(axis: &AxisPlan, last: &LastLeg, tail: Option<&UnitTail>, from: f6
             if start >= end {
                 return;
             }
-            let (low, high) = (normal_cdf(start), normal_cdf(end));
+            let low = if start > -NORMAL_REACH { normal_cdf(start) } else { 0.0 };
+            let high = if end < NORMAL_REACH { normal_cdf(end) } else { 1.0 };
             let (first, last_edge) = (edge(start), edge(end));
             sums.steps[first] -= w * low;
             sums.steps[last_edge] += w * high;
             sums.accepted += w * (high - low);
-            fill(axis, last, first, last_edge, &mut sums.below, |t| w * normal_cdf(t));
+            fill(axis, last, first, last_edge, &mut sums.below, |t| w * normal_cdf_within(t));
         }
         Some(tail) => {
             let (low, high) = (tail.cdf(start), tail.cdf(end));
@@ -235,7 +246,8 @@ fn add_rising(axis: &AxisPlan, last: &LastLeg, tail: Option<&UnitTail>, from: f6
             sums.steps[last_edge] += w * high;
             sums.accepted += w * (high - low);
             let core_first = if start < -tail.alpha_low { edge(-tail.alpha_low).min(last_edge) } else { first };
-            let core_last = if end > tail.alpha_high { edge(tail.alpha_high).clamp(core_first, last_edge) } else { last_edge };
+            let core_last =
+                if end > tail.alpha_high { edge(tail.alpha_high).clamp(core_first, last_edge) } else { last_edge };
             let (scale, constant) = (w * tail.core, w * (tail.low - tail.core * tail.phi_low));
             fill(axis, last, core_first, core_last, &mut sums.below, |t| constant + scale * normal_cdf(t));
             if first < core_first {

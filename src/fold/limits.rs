@@ -22,21 +22,35 @@ impl Intervals {
         self.list[..self.count].iter()
     }
 
-    /// Keeps what lies in one of two intervals, `a` before `b`.
+    /// Keeps what lies in an interval.
     #[inline(always)]
-    fn keep(&mut self, a: (f64, f64), b: (f64, f64)) {
-        let (a, b) = if b.0 <= a.1 { ((a.0, a.1.max(b.1)), (0.0, 0.0)) } else { (a, b) };
-        let mut kept = Intervals { list: self.list, count: 0 };
-        for (from, to) in self.iter() {
-            for (low, high) in [a, b] {
-                let piece = (from.max(low), to.min(high));
-                if piece.0 < piece.1 && kept.count < kept.list.len() {
-                    kept.list[kept.count] = piece;
-                    kept.count += 1;
-                }
+    fn keep(&mut self, low: f64, high: f64) {
+        let mut kept = 0;
+        for index in 0..self.count {
+            let (from, to) = self.list[index];
+            let piece = (if from > low { from } else { low }, if to < high { to } else { high });
+            if piece.0 < piece.1 {
+                self.list[kept] = piece;
+                kept += 1;
             }
         }
-        *self = kept;
+        self.count = kept;
+    }
+
+    /// Keeps what lies in one of two intervals, `a` before `b` and apart from it.
+    #[inline(never)]
+    fn keep_either(&mut self, a: (f64, f64), b: (f64, f64)) {
+        let (mut first, mut second) = (*self, *self);
+        first.keep(a.0, a.1);
+        second.keep(b.0, b.1);
+        self.count = 0;
+        for piece in first.iter().chain(second.iter()) {
+            if self.count < self.list.len() {
+                self.list[self.count] = *piece;
+                self.count += 1;
+            }
+        }
+        self.list[..self.count].sort_unstable_by(|x, y| x.0.total_cmp(&y.0));
     }
 }
 
@@ -69,7 +83,13 @@ pub(super) fn allowed(plan: &Plan, last: &LastLeg, least: f64) -> Intervals {
         let with = if j == 0 { (0.0, f64::INFINITY) } else { momenta_below(last, others[j - 1] / ratio) };
         let needed = least_for_ratio(last, *ratio);
         let with = (if needed > with.0 { needed } else { with.0 }, with.1);
-        intervals.keep(without, with);
+        if without.0 >= without.1 {
+            intervals.keep(with.0, with.1);
+        } else if with.0 <= without.1 {
+            intervals.keep(without.0, if with.1 > without.1 { with.1 } else { without.1 });
+        } else {
+            intervals.keep_either(without, with);
+        }
     }
     intervals
 }

@@ -1,127 +1,61 @@
 //! From truth events to what is measured of every leg but the last.
 
+use super::aim::{Aimed, aim, point};
 use super::last_leg::{LastLeg, Reading};
-use super::plan::{CutPlan, Plan, VertexPlan};
+use super::plan::Plan;
+use super::resolve::{Resolved, widths};
+use super::spread::{add_vertex_lever, angle_levers, normal, turn_to};
 use crate::events::{LegLanes, TruthBlock};
 use crate::kinematics::MAX_LEGS;
-use crate::numerics::kernel;
+use crate::numerics::normal::normal_cdf;
 use crate::numerics::sobol::{BLOCK, Lane, Scrambling};
-use crate::wide;
 
 /// Measured values further than this many core widths from the peak are put there; nothing of a template is that far.
 const FARTHEST: f64 = 1e6;
 
-/// A leg as the detector sees it before its energy is known, per event of the block.
-#[derive(Clone, Debug)]
-struct Aimed {
-    /// True transverse momentum, GeV.
-    pt: Lane,
-    /// True |cot theta|.
-    cot_true: Lane,
-    /// Measured direction, a unit vector, and its |cot theta|.
-    nx: Lane,
-    ny: Lane,
-    nz: Lane,
-    cot: Lane,
-    /// Sine of the measured polar angle.
-    sin: Lane,
-}
-
-/// How a leg is measured, per surviving event.
-#[derive(Clone, Debug)]
-struct Resolved {
-    reading: [Reading; BLOCK],
-    /// Relative width of the calorimeter and the tracker, true energy and pT.
-    sigma_calorimeter: Lane,
-    sigma_tracker: Lane,
-    gain_calorimeter: Lane,
-    centre: Lane,
-    gain_tracker: Lane,
-    tail: [usize; BLOCK],
-    /// Weight of the calorimeter in the measured energy.
-    share: Lane,
-    /// Contribution to the mass variance, as a relative width; decides on the last leg.
-    score: Lane,
-    /// Squares of the terms.
-    first: Lane,
-    second: Lane,
-    third: Lane,
-    tracker_first: Lane,
-    tracker_second: Lane,
-    /// Of an electron: what its tracker measured, GeV; not positive where lost.
-    tracker_momentum: Lane,
-}
-
-/// The measured other legs, per surviving event.
-#[derive(Clone, Debug)]
-struct Measured {
-    e: Lane,
-    px: Lane,
-    py: Lane,
-    pz: Lane,
-    pt: Lane,
-    mass: Lane,
-    z: Lane,
-    u: Lane,
-}
-
-/// No tail.
-const GAUSSIAN: usize = usize::MAX;
-
 /// Memory of one worker, used again for every block.
 #[derive(Clone, Debug)]
 pub(super) struct Workspace {
+    /// The events to measure.
     pub truth: TruthBlock,
-    aimed: Vec<Aimed>,
-    resolved: Vec<Resolved>,
-    others: Vec<Measured>,
-    live: Vec<usize>,
-    category: Vec<usize>,
-    order: Vec<[usize; MAX_LEGS]>,
-    dz: Lane,
-    /// The last legs of the surviving events, with everything else measured.
+    /// The last legs of the events that can still be accepted, with everything else measured.
     pub last: Vec<LastLeg>,
     /// The events of the block that `last` belong to.
     pub event: Vec<usize>,
-    /// Weight lost by the other legs, by event of the block and category.
+    /// Weight lost by the other legs: event of the block, category, weight.
     pub lost: Vec<(usize, usize, f64)>,
+    total: LegLanes,
+    aimed: Vec<Aimed>,
+    resolved: Vec<Resolved>,
+    /// Events still considered.
+    live: Vec<usize>,
+    /// By event: the legs, the last one last.
+    order: Vec<[usize; MAX_LEGS]>,
+    normals: Vec<Lane>,
+    gradient: Vec<Lane>,
+    /// Spread and shift of the vertex in calorimeter radii.
+    spread: Lane,
+    dz: Lane,
 }
 
 impl Workspace {
     pub fn new(plan: &Plan) -> Self {
         let zero = [0.0; BLOCK];
         let legs = plan.legs.len();
-        let aimed = Aimed { pt: zero, cot_true: zero, nx: zero, ny: zero, nz: zero, cot: zero, sin: zero };
-        let resolved = Resolved {
-            reading: [Reading::Calorimeter; BLOCK],
-            sigma_calorimeter: zero,
-            sigma_tracker: zero,
-            gain_calorimeter: [1.0; BLOCK],
-            centre: [1.0; BLOCK],
-            gain_tracker: [1.0; BLOCK],
-            tail: [GAUSSIAN; BLOCK],
-            share: zero,
-            score: zero,
-            first: zero,
-            second: zero,
-            third: zero,
-            tracker_first: zero,
-            tracker_second: zero,
-            tracker_momentum: zero,
-        };
-        let other = Measured { e: zero, px: zero, py: zero, pz: zero, pt: zero, mass: zero, z: zero, u: zero };
         Workspace {
             truth: TruthBlock::new(legs),
-            aimed: vec![aimed; legs],
-            resolved: vec![resolved; legs],
-            others: vec![other; legs.saturating_sub(1)],
-            live: Vec::with_capacity(BLOCK),
-            category: Vec::with_capacity(BLOCK),
-            order: Vec::with_capacity(BLOCK),
-            dz: zero,
             last: Vec::with_capacity(BLOCK),
             event: Vec::with_capacity(BLOCK),
             lost: Vec::with_capacity(BLOCK),
+            total: LegLanes::default(),
+            aimed: vec![Aimed::default(); legs],
+            resolved: vec![Resolved::default(); legs],
+            live: Vec::with_capacity(BLOCK),
+            order: vec![[0; MAX_LEGS]; BLOCK],
+            normals: vec![zero; plan.normals.count],
+            gradient: vec![zero; plan.normals.count],
+            spread: zero,
+            dz: zero,
         }
     }
 
@@ -131,426 +65,249 @@ impl Workspace {
         self.last.clear();
         self.event.clear();
         self.lost.clear();
-        self.aim(plan, points, first);
-        self.select(plan);
+        self.resolve(plan, points, first);
         if self.live.is_empty() {
             return;
         }
-        self.resolve(plan, points, first);
         self.rank();
-        self.measure_others(plan, points, first);
-        self.collect(plan);
-    }
-
-    fn aim(&mut self, plan: &Plan, points: &Scrambling, first: u64) {
-        let lane = |dimension: usize| {
-            let mut lane = [0.0; BLOCK];
-            points.fill(dimension, first, &mut lane);
-            lane
-        };
-        if let (Some(vertex), Some(dimension)) = (&plan.vertex, plan.dimensions.vertex) {
-            shift_vertex(vertex, &lane(dimension), &mut self.dz);
-        }
+        self.spread(plan, points, first);
         for (leg, aimed) in self.aimed.iter_mut().enumerate() {
-            point(&self.truth.legs[leg], aimed);
-            if let Some(dimension) = plan.dimensions.theta[leg] {
-                turn_theta(plan.legs[leg].sigma_theta, &lane(dimension), aimed);
-            }
-            if let Some(dimension) = plan.dimensions.phi[leg] {
-                turn_phi(plan.legs[leg].sigma_phi, &lane(dimension), aimed);
-            }
-            if let (Some(vertex), true) = (&plan.vertex, plan.legs[leg].trackless) {
-                repoint(vertex.half_length, &self.dz, aimed);
-            }
-            finish_direction(aimed);
+            aim(plan, leg, &self.normals, &self.dz, aimed);
         }
-    }
-
-    /// Keeps the events whose directions pass the cuts and belong to a category.
-    fn select(&mut self, plan: &Plan) {
-        self.live.clear();
-        self.category.clear();
-        let cuts: &CutPlan = &plan.cuts;
-        for i in 0..BLOCK {
-            if self.truth.weight[i] == 0.0 {
-                continue;
-            }
-            let mut largest = 0.0_f64;
-            let mut in_gap = false;
-            for aimed in &self.aimed {
-                largest = largest.max(aimed.cot[i]);
-                in_gap |= cuts.gap_cot.is_some_and(|(low, high)| low <= aimed.cot_true[i] && aimed.cot_true[i] < high);
-            }
-            if in_gap || largest > cuts.max_cot {
-                continue;
-            }
-            if let Some(category) = cuts.category_max_cot.iter().position(|limit| largest <= *limit) {
-                self.live.push(i);
-                self.category.push(category);
+        for index in 0..self.live.len() {
+            let i = self.live[index];
+            if let Some(category) = self.category(plan, i) {
+                self.collect(plan, i, category);
             }
         }
     }
 
-    /// Looks up what measures each leg; drops events with a leg that nothing measures.
+    /// True directions, what measures each leg and how well; keeps the events of which every leg is measured.
     fn resolve(&mut self, plan: &Plan, points: &Scrambling, first: u64) {
-        let mut covered = [true; BLOCK];
+        self.total = LegLanes::default();
+        for (truth, aimed) in self.truth.legs.iter().zip(&mut self.aimed) {
+            point(truth, aimed);
+            add_momentum(truth, &mut self.total);
+        }
+        let weight = &self.truth.weight;
+        self.live.clear();
+        self.live.extend((0..BLOCK).filter(|i| weight[*i] != 0.0));
         for (leg, resolved) in self.resolved.iter_mut().enumerate() {
-            let leg_plan = &plan.legs[leg];
-            let aimed = &self.aimed[leg];
+            let cot = &self.aimed[leg].cot_true;
             let mut choice = [0.0; BLOCK];
             if let Some(dimension) = plan.dimensions.choice[leg] {
                 points.fill(dimension, first, &mut choice);
             }
-            for (c, i) in self.live.iter().enumerate() {
-                let cot = aimed.cot_true[*i];
-                let shares = leg_plan.calorimeter.as_ref().and_then(|regions| regions.at(cot));
-                let entry = shares.and_then(|shares| {
-                    shares.iter().find(|(sum, _)| choice[*i] < *sum).or(shares.last()).map(|(_, entry)| *entry)
-                });
-                let tracker = leg_plan.tracker.as_ref().and_then(|regions| regions.at(cot)).copied().flatten();
-                resolved.reading[c] = match (entry, tracker) {
-                    (Some(_), Some(_)) => Reading::Both,
-                    (Some(_), None) => Reading::Calorimeter,
-                    (None, Some(_)) => Reading::Tracker,
-                    (None, None) => {
-                        covered[c] = false;
-                        Reading::Calorimeter
-                    }
-                };
-                resolved.tail[c] = GAUSSIAN;
-                if let Some(entry) = entry {
-                    let terms = &plan.calorimeters[entry];
-                    resolved.first[c] = terms.stochastic_squared;
-                    resolved.second[c] = terms.noise_squared;
-                    resolved.third[c] = terms.constant_squared;
-                    resolved.gain_calorimeter[c] = terms.gain;
-                    resolved.centre[c] = terms.centre;
-                    resolved.tail[c] = terms.tail.unwrap_or(GAUSSIAN);
-                }
-                if let Some(entry) = tracker {
-                    let terms = &plan.trackers[entry];
-                    resolved.tracker_first[c] = terms.curvature_squared;
-                    let slant = if terms.slanted { (1.0 + cot * cot).sqrt() } else { 1.0 };
-                    resolved.tracker_second[c] = terms.scattering_squared * slant;
-                    resolved.gain_tracker[c] = terms.gain;
-                }
-            }
-        }
-        if covered[..self.live.len()].contains(&false) {
-            self.drop_uncovered(&covered);
-        }
-        let (mut e, mut pt, mut ex) = ([1.0; BLOCK], [1.0; BLOCK], [[0.0; BLOCK]; 4]);
-        for leg in &self.truth.legs {
-            for (c, i) in self.live.iter().enumerate() {
-                ex[0][c] += leg.e[*i];
-                ex[1][c] += leg.px[*i];
-                ex[2][c] += leg.py[*i];
-                ex[3][c] += leg.pz[*i];
-            }
+            self.live.retain(|i| {
+                let in_gap = plan.cuts.gap_cot.is_some_and(|(low, high)| low <= cot[*i] && cot[*i] < high);
+                !in_gap && resolved.look_up(plan, leg, *i, cot[*i], choice[*i])
+            });
         }
         for (leg, resolved) in self.resolved.iter_mut().enumerate() {
-            let truth = &self.truth.legs[leg];
-            for (c, i) in self.live.iter().enumerate() {
-                e[c] = truth.e[*i];
-                pt[c] = self.aimed[leg].pt[*i];
-            }
-            widths(&e, &pt, resolved);
-            for (c, i) in self.live.iter().enumerate() {
-                let (calorimeter, tracker) = (resolved.sigma_calorimeter[c], resolved.sigma_tracker[c]);
-                let (share, sigma) = match resolved.reading[c] {
-                    Reading::Calorimeter => (1.0, calorimeter),
-                    Reading::Tracker => (0.0, tracker),
-                    Reading::Both => {
-                        let share = tracker * tracker / (calorimeter * calorimeter + tracker * tracker);
-                        (share, share * calorimeter)
-                    }
-                };
-                resolved.share[c] = share;
-                let reach = ex[0][c] * truth.e[*i]
-                    - (ex[1][c] * truth.px[*i] + ex[2][c] * truth.py[*i] + ex[3][c] * truth.pz[*i]);
-                resolved.score[c] = reach * sigma;
-            }
-            if let Some(dimension) = plan.dimensions.tracker[leg] {
-                let mut lane = [0.0; BLOCK];
-                points.fill(dimension, first, &mut lane);
-                let mut z = [0.0; BLOCK];
-                for (c, i) in self.live.iter().enumerate() {
-                    z[c] = lane[*i];
-                }
-                normal(&mut z, self.live.len());
-                for (c, i) in self.live.iter().enumerate() {
-                    let curvature = 1.0 + resolved.sigma_tracker[c] * z[c];
-                    resolved.tracker_momentum[c] =
-                        self.aimed[leg].pt[*i] * resolved.gain_tracker[c] / (curvature * self.aimed[leg].sin[*i]);
-                }
-            }
+            widths(&self.truth.legs[leg], &self.aimed[leg].pt, &self.total, resolved);
         }
     }
 
-    /// Removes events with an uncovered leg from the list and from what was looked up.
-    fn drop_uncovered(&mut self, covered: &[bool; BLOCK]) {
-        let mut kept = 0;
-        for c in 0..self.live.len() {
-            if !covered[c] {
-                continue;
-            }
-            self.live[kept] = self.live[c];
-            self.category[kept] = self.category[c];
-            for r in &mut self.resolved {
-                r.reading[kept] = r.reading[c];
-                r.tail[kept] = r.tail[c];
-                for lane in [
-                    &mut r.first,
-                    &mut r.second,
-                    &mut r.third,
-                    &mut r.gain_calorimeter,
-                    &mut r.centre,
-                    &mut r.tracker_first,
-                    &mut r.tracker_second,
-                    &mut r.gain_tracker,
-                ] {
-                    lane[kept] = lane[c];
-                }
-            }
-            kept += 1;
-        }
-        self.live.truncate(kept);
-        self.category.truncate(kept);
-    }
-
-    /// Puts the leg that contributes most last, the others in their order.
+    /// Puts the leg that contributes most to the mass variance last, the others in their order.
     fn rank(&mut self) {
-        self.order.clear();
         let legs = self.resolved.len();
-        for c in 0..self.live.len() {
+        for i in &self.live {
             let mut best = 0;
             for leg in 1..legs {
-                if self.resolved[leg].score[c] > self.resolved[best].score[c] {
+                if self.resolved[leg].pull(*i).abs() > self.resolved[best].pull(*i).abs() {
                     best = leg;
                 }
             }
-            let mut order = [0; MAX_LEGS];
+            let order = &mut self.order[*i];
             let mut rank = 0;
-            for leg in 0..legs {
-                if leg != best {
-                    order[rank] = leg;
-                    rank += 1;
-                }
+            for leg in (0..legs).filter(|leg| *leg != best) {
+                order[rank] = leg;
+                rank += 1;
             }
             order[legs - 1] = best;
-            self.order.push(order);
         }
     }
 
-    fn measure_others(&mut self, plan: &Plan, points: &Scrambling, first: u64) {
-        let count = self.live.len();
-        for (rank, other) in self.others.iter_mut().enumerate() {
-            let mut lane = [0.0; BLOCK];
-            points.fill(plan.dimensions.values[rank], first, &mut lane);
-            for (c, i) in self.live.iter().enumerate() {
-                other.u[c] = lane[*i];
-                other.z[c] = lane[*i];
+    /// Draws the normals and the shift of the vertex.
+    fn spread(&mut self, plan: &Plan, points: &Scrambling, first: u64) {
+        for (k, lane) in self.normals.iter_mut().enumerate() {
+            points.fill(plan.dimensions.normals + k, first, lane);
+            normal(lane);
+        }
+        for (rank, gradient) in self.gradient[..plan.legs.len() - 1].iter_mut().enumerate() {
+            for i in &self.live {
+                gradient[*i] = self.resolved[self.order[*i][rank]].pull(*i);
             }
-            normal(&mut other.z, count);
-            for (c, i) in self.live.iter().enumerate() {
-                let leg = self.order[c][rank];
-                let (r, aimed, truth) = (&self.resolved[leg], &self.aimed[leg], &self.truth.legs[leg]);
-                let mass = truth.mass[*i];
-                let momentum = if r.reading[c] == Reading::Tracker {
-                    let curvature = 1.0 + r.sigma_tracker[c] * other.z[c];
-                    if curvature > 0.0 {
-                        aimed.pt[*i] * r.gain_tracker[c] / (curvature * aimed.sin[*i])
-                    } else {
-                        f64::NAN
-                    }
-                } else {
-                    let t = match plan.tails.get(r.tail[c]) {
-                        Some(tail) => tail.quantile(other.u[c]).clamp(-FARTHEST, FARTHEST),
-                        None => other.z[c],
-                    };
-                    let measured = truth.e[*i] * r.gain_calorimeter[c] * (r.centre[c] + r.sigma_calorimeter[c] * t);
-                    let mut energy = if measured > 0.0 { measured } else { f64::NAN };
-                    if r.reading[c] == Reading::Both {
-                        let tracker = r.tracker_momentum[c];
-                        energy = if tracker > 0.0 {
-                            r.share[c] * energy + (1.0 - r.share[c]) * tracker
-                        } else {
-                            f64::NAN
-                        };
-                    }
-                    // The square root of a negative number is NaN: lost as well.
-                    ((energy - mass) * (energy + mass)).sqrt()
-                };
-                // A lost leg carries NaN from here to `collect`.
-                other.mass[c] = mass;
-                other.e[c] = (momentum * momentum + mass * mass).sqrt();
-                other.px[c] = momentum * aimed.nx[*i];
-                other.py[c] = momentum * aimed.ny[*i];
-                other.pz[c] = momentum * aimed.nz[*i];
-                other.pt[c] = momentum * aimed.sin[*i];
+        }
+        if let (Some(vertex), Some(dimension)) = (&plan.vertex, plan.dimensions.vertex_choice) {
+            let mut choice = [0.0; BLOCK];
+            points.fill(dimension, first, &mut choice);
+            for i in 0..BLOCK {
+                self.spread[i] =
+                    if choice[i] < vertex.right_choice { vertex.spread_right } else { vertex.spread_wrong };
+            }
+            if let Some(index) = plan.normals.vertex {
+                self.gradient[index] = [0.0; BLOCK];
+            }
+        }
+        for (leg, leg_plan) in plan.legs.iter().enumerate() {
+            let (mut theta, mut phi) = ([0.0; BLOCK], [0.0; BLOCK]);
+            angle_levers(&self.truth.legs[leg], &self.aimed[leg].pt, &self.total, &mut theta, &mut phi);
+            if let (Some(vertex), Some(index), true) = (&plan.vertex, plan.normals.vertex, leg_plan.trackless) {
+                let cot = &self.aimed[leg].cot_true;
+                // The vertex moves cot(theta) along the beam whatever the leg's side.
+                add_vertex_lever(vertex.half_length, cot, &theta, &self.spread, &mut self.gradient[index]);
+            }
+            if let Some(index) = plan.normals.theta[leg] {
+                self.gradient[index] = theta.map(|lever| lever * leg_plan.sigma_theta);
+            }
+            if let Some(index) = plan.normals.phi[leg] {
+                self.gradient[index] = phi.map(|lever| lever * leg_plan.sigma_phi);
+            }
+            if let Some(index) = plan.normals.tracker[leg] {
+                let r = &self.resolved[leg];
+                for i in &self.live {
+                    let used = r.reading[*i] == Reading::Both;
+                    let part = (1.0 - r.share[*i]) * r.sigma_tracker[*i];
+                    self.gradient[index][*i] = if used { -r.lever[*i] * part } else { 0.0 };
+                }
+            }
+        }
+        turn_to(&self.gradient, &mut self.normals);
+        if let Some(index) = plan.normals.vertex {
+            for i in 0..BLOCK {
+                self.dz[i] = self.spread[i] * self.normals[index][i];
             }
         }
     }
 
-    fn collect(&mut self, plan: &Plan) {
-        let legs = self.resolved.len();
-        for (c, i) in self.live.iter().enumerate() {
-            let weight = self.truth.weight[*i];
-            let leg = self.order[c][legs - 1];
-            let (r, aimed, truth) = (&self.resolved[leg], &self.aimed[leg], &self.truth.legs[leg]);
-            let mass = truth.mass[*i];
-            let mut last = LastLeg {
-                reading: r.reading[c],
-                tail: plan.tails.get(r.tail[c]).is_some().then_some(r.tail[c]),
-                category: self.category[c],
-                weight,
-                mass,
-                sin: aimed.sin[*i],
-                ..LastLeg::default()
-            };
-            let mut along = 0.0;
-            for (rank, other) in self.others.iter().enumerate() {
-                last.rest_energy += other.e[c];
-                along += other.px[c] * aimed.nx[*i] + other.py[c] * aimed.ny[*i] + other.pz[c] * aimed.nz[*i];
-                last.rest_mass_squared += other.mass[c] * other.mass[c];
-                for second in &self.others[..rank] {
-                    last.rest_mass_squared += 2.0
-                        * (other.e[c] * second.e[c]
-                            - (other.px[c] * second.px[c] + other.py[c] * second.py[c] + other.pz[c] * second.pz[c]));
-                }
-                last.other_pt[rank] = other.pt[c];
+    /// The category of an event whose measured directions pass the cuts.
+    #[inline(always)]
+    fn category(&self, plan: &Plan, i: usize) -> Option<usize> {
+        let largest = self.aimed.iter().fold(0.0, |largest: f64, aimed| largest.max(aimed.cot[i]));
+        if largest > plan.cuts.max_cot {
+            return None;
+        }
+        plan.cuts.category_max_cot.iter().position(|limit| largest <= *limit)
+    }
+
+    /// What the tracker measures of an electron's momentum, GeV; `None` where it loses it.
+    #[inline(always)]
+    fn tracker_momentum(&self, plan: &Plan, leg: usize, i: usize) -> Option<f64> {
+        let index = plan.normals.tracker[leg]?;
+        self.curved(leg, i, self.normals[index][i])
+    }
+
+    /// Momentum from a curvature of (1 + sigma z)/(1 + scale) times the true one.
+    #[inline(always)]
+    fn curved(&self, leg: usize, i: usize, z: f64) -> Option<f64> {
+        let (r, aimed) = (&self.resolved[leg], &self.aimed[leg]);
+        let curvature = 1.0 + r.sigma_tracker[i] * z;
+        (curvature > 0.0).then(|| aimed.pt[i] * r.gain_tracker[i] / (curvature * aimed.sin[i]))
+    }
+
+    /// Measured momentum of a leg that is not the last, GeV; `None` where the measurement loses it.
+    #[inline(always)]
+    fn momentum(&self, plan: &Plan, leg: usize, i: usize, z: f64) -> Option<f64> {
+        let r = &self.resolved[leg];
+        if r.reading[i] == Reading::Tracker {
+            return self.curved(leg, i, z);
+        }
+        let truth = &self.truth.legs[leg];
+        let t = match plan.tails.get(r.tail[i]) {
+            Some(tail) => tail.quantile(normal_cdf(z)).clamp(-FARTHEST, FARTHEST),
+            None => z,
+        };
+        let mut energy = truth.e[i] * r.gain_calorimeter[i] * (r.centre[i] + r.sigma_calorimeter[i] * t);
+        if energy <= 0.0 {
+            return None;
+        }
+        if r.reading[i] == Reading::Both {
+            energy = r.share[i] * energy + (1.0 - r.share[i]) * self.tracker_momentum(plan, leg, i)?;
+        }
+        let mass = truth.mass[i];
+        if mass == 0.0 {
+            return Some(energy);
+        }
+        (energy > mass).then(|| ((energy - mass) * (energy + mass)).sqrt())
+    }
+
+    /// Measures the other legs of an event and files its last leg.
+    #[inline(always)]
+    fn collect(&mut self, plan: &Plan, i: usize, category: usize) {
+        let weight = self.truth.weight[i];
+        match self.last_leg(plan, i, category) {
+            Some(last) => {
+                self.last.push(last);
+                self.event.push(i);
             }
-            last.rest_along = along;
-            if !last.rest_energy.is_finite() || (r.reading[c] == Reading::Both && r.tracker_momentum[c] <= 0.0) {
-                self.lost.push((*i, self.category[c], weight));
-                continue;
+            None => self.lost.push((i, category, weight)),
+        }
+    }
+
+    #[inline(always)]
+    fn last_leg(&self, plan: &Plan, i: usize, category: usize) -> Option<LastLeg> {
+        let legs = plan.legs.len();
+        let leg = self.order[i][legs - 1];
+        let (r, aimed, truth) = (&self.resolved[leg], &self.aimed[leg], &self.truth.legs[leg]);
+        let mass = truth.mass[i];
+        let mut last = LastLeg {
+            reading: r.reading[i],
+            tail: r.tail[i],
+            category,
+            weight: self.truth.weight[i],
+            mass,
+            sin: aimed.sin[i],
+            ..LastLeg::default()
+        };
+        let mut vectors = [[0.0; 4]; MAX_LEGS - 1];
+        for rank in 0..legs - 1 {
+            let other = self.order[i][rank];
+            let p = self.momentum(plan, other, i, self.normals[rank][i])?;
+            let direction = &self.aimed[other];
+            let m = self.truth.legs[other].mass[i];
+            let e = if m == 0.0 { p } else { (p * p + m * m).sqrt() };
+            let vector = [e, p * direction.nx[i], p * direction.ny[i], p * direction.nz[i]];
+            last.rest_energy += e;
+            last.rest_along += vector[1] * aimed.nx[i] + vector[2] * aimed.ny[i] + vector[3] * aimed.nz[i];
+            last.rest_mass_squared += m * m;
+            for second in &vectors[..rank] {
+                let product = e * second[0] - (vector[1] * second[1] + vector[2] * second[2] + vector[3] * second[3]);
+                last.rest_mass_squared += 2.0 * product;
             }
-            match r.reading[c] {
-                Reading::Tracker => {
-                    last.slope = aimed.pt[*i] * r.gain_tracker[c] / (aimed.sin[*i] * r.sigma_tracker[c]);
-                    last.offset = 1.0 / r.sigma_tracker[c];
-                }
-                Reading::Calorimeter | Reading::Both => {
-                    let rest = if r.reading[c] == Reading::Both {
-                        (1.0 - r.share[c]) * r.tracker_momentum[c]
-                    } else {
-                        0.0
-                    };
-                    let unit = r.share[c] * truth.e[*i] * r.gain_calorimeter[c];
-                    last.slope = 1.0 / (unit * r.sigma_calorimeter[c]);
-                    last.offset = -(rest / unit + r.centre[c]) / r.sigma_calorimeter[c];
-                    last.least_energy = if rest > mass { rest } else { mass };
-                }
-            }
+            last.other_pt[rank] = p * direction.sin[i];
+            vectors[rank] = vector;
+        }
+        if legs > 2 {
             last.other_pt[..legs - 1].sort_unstable_by(|a, b| b.total_cmp(a));
-            self.last.push(last);
-            self.event.push(*i);
         }
+        match r.reading[i] {
+            Reading::Tracker => {
+                last.slope = aimed.pt[i] * r.gain_tracker[i] / (aimed.sin[i] * r.sigma_tracker[i]);
+                last.offset = 1.0 / r.sigma_tracker[i];
+            }
+            Reading::Calorimeter => {
+                last.offset = -r.centre[i] / r.sigma_calorimeter[i];
+                last.slope = 1.0 / (truth.e[i] * r.gain_calorimeter[i] * r.sigma_calorimeter[i]);
+                last.least_energy = mass;
+            }
+            Reading::Both => {
+                let rest = (1.0 - r.share[i]) * self.tracker_momentum(plan, leg, i)?;
+                let unit = r.share[i] * truth.e[i] * r.gain_calorimeter[i];
+                last.offset = -(rest / unit + r.centre[i]) / r.sigma_calorimeter[i];
+                last.slope = 1.0 / (unit * r.sigma_calorimeter[i]);
+                last.least_energy = if rest > mass { rest } else { mass };
+            }
+        }
+        Some(last)
     }
 }
 
-wide! {
-    fn normal(values: &mut Lane, count: usize) {
-        let whole = if count < BLOCK { count } else { BLOCK };
-        for value in &mut values[..whole] {
-            *value = kernel::normal_quantile(*value);
-        }
-    }
-}
-
-wide! {
-    fn widths(e: &Lane, pt: &Lane, r: &mut Resolved) {
-        for i in 0..BLOCK {
-            let inverse = 1.0 / e[i];
-            let calorimeter = r.first[i] * inverse + r.second[i] * (inverse * inverse) + r.third[i];
-            r.sigma_calorimeter[i] = calorimeter.sqrt();
-            r.sigma_tracker[i] = (r.tracker_first[i] * (pt[i] * pt[i]) + r.tracker_second[i]).sqrt();
-        }
-    }
-}
-
-wide! {
-    fn shift_vertex(vertex: &VertexPlan, uniform: &Lane, dz: &mut Lane) {
-        let right = vertex.right_choice;
-        for i in 0..BLOCK {
-            // One number decides on the choice and, stretched, gives the shift.
-            let is_right = uniform[i] < right;
-            let (start, length) = if is_right { (0.0, right) } else { (right, 1.0 - right) };
-            let spread = if is_right { vertex.spread_right } else { vertex.spread_wrong };
-            let inside = (uniform[i] - start) / length;
-            let inside = if inside > 1e-16 { inside } else { 1e-16 };
-            let inside = if inside < 1.0 - 1.2e-16 { inside } else { 1.0 - 1.2e-16 };
-            dz[i] = spread * kernel::normal_quantile(inside);
-        }
-    }
-}
-
-wide! {
-    fn point(truth: &LegLanes, aimed: &mut Aimed) {
-        for i in 0..BLOCK {
-            let pt_squared = truth.px[i] * truth.px[i] + truth.py[i] * truth.py[i];
-            let inverse = 1.0 / (pt_squared + truth.pz[i] * truth.pz[i]).sqrt();
-            let pt = pt_squared.sqrt();
-            aimed.pt[i] = pt;
-            aimed.cot_true[i] = (truth.pz[i] / pt).abs();
-            // The direction as azimuth (nx, ny)/sin and polar angle (sin, nz), until it is finished.
-            aimed.nx[i] = truth.px[i] / pt;
-            aimed.ny[i] = truth.py[i] / pt;
-            aimed.sin[i] = pt * inverse;
-            aimed.nz[i] = truth.pz[i] * inverse;
-        }
-    }
-}
-
-wide! {
-    fn turn_theta(sigma: f64, uniform: &Lane, aimed: &mut Aimed) {
-        let turns = sigma / std::f64::consts::TAU;
-        for i in 0..BLOCK {
-            let (cos, sin) = kernel::cos_sin_turns(turns * kernel::normal_quantile(uniform[i]));
-            let (s, c) = (aimed.sin[i], aimed.nz[i]);
-            aimed.sin[i] = s * cos + c * sin;
-            aimed.nz[i] = c * cos - s * sin;
-        }
-    }
-}
-
-wide! {
-    fn turn_phi(sigma: f64, uniform: &Lane, aimed: &mut Aimed) {
-        let turns = sigma / std::f64::consts::TAU;
-        for i in 0..BLOCK {
-            let (cos, sin) = kernel::cos_sin_turns(turns * kernel::normal_quantile(uniform[i]));
-            let (x, y) = (aimed.nx[i], aimed.ny[i]);
-            aimed.nx[i] = x * cos - y * sin;
-            aimed.ny[i] = x * sin + y * cos;
-        }
-    }
-}
-
-wide! {
-    /// cot(theta') = cot(theta) + dz/min(R, Z |tan theta|), the front face met at the true angle.
-    fn repoint(half_length: f64, dz: &Lane, aimed: &mut Aimed) {
-        for i in 0..BLOCK {
-            let reach = half_length / aimed.cot_true[i];
-            let distance = if reach < 1.0 { reach } else { 1.0 };
-            // A polar angle turned past the beam comes out on the other side.
-            let side = if aimed.sin[i] < 0.0 { -1.0 } else { 1.0 };
-            let cot = aimed.nz[i] / (side * aimed.sin[i]) + dz[i] / distance;
-            let sin = 1.0 / (1.0 + cot * cot).sqrt();
-            aimed.sin[i] = side * sin;
-            aimed.nz[i] = cot * sin;
-        }
-    }
-}
-
-wide! {
-    fn finish_direction(aimed: &mut Aimed) {
-        for i in 0..BLOCK {
-            let sin = aimed.sin[i];
-            aimed.nx[i] *= sin;
-            aimed.ny[i] *= sin;
-            let sin = sin.abs();
-            aimed.sin[i] = sin;
-            aimed.cot[i] = (aimed.nz[i] / sin).abs();
-        }
+fn add_momentum(leg: &LegLanes, total: &mut LegLanes) {
+    for i in 0..BLOCK {
+        total.e[i] += leg.e[i];
+        total.px[i] += leg.px[i];
+        total.py[i] += leg.py[i];
+        total.pz[i] += leg.pz[i];
     }
 }

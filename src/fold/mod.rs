@@ -1,5 +1,6 @@
 //! The folding engine, and the plain reference path.
 
+mod aim;
 mod engine;
 mod estimate;
 mod last_leg;
@@ -7,7 +8,9 @@ mod limits;
 mod measure;
 pub mod plain;
 mod plan;
+mod resolve;
 mod response;
+mod spread;
 
 use crate::process::Study;
 use crate::template::LabelledTemplate;

@@ -2,6 +2,7 @@
 
 use super::response::UnitTail;
 use crate::detector::{Detector, Object, Tracker, TrackerResolution};
+use crate::events::TruthDimensions;
 use crate::process::{Channel, Cuts, MassAxis};
 
 /// Smallest relative width that a fold resolves; a perfect leg is given this one.
@@ -118,17 +119,26 @@ impl AxisPlan {
 /// Which dimension of the sequence feeds what.
 #[derive(Clone, Debug, Default)]
 pub(super) struct Dimensions {
-    /// Measured values of all legs but the last, by rank.
-    pub values: Vec<usize>,
     /// Which of several entries measures the leg, by leg.
     pub choice: Vec<Option<usize>>,
+    /// Whether the right vertex is chosen.
+    pub vertex_choice: Option<usize>,
+    /// The first of the standard normals; see [`Normals`].
+    pub normals: usize,
+    /// For every dimension, those of the truth events first, its place in the sequence.
+    pub places: Vec<usize>,
+}
+
+/// The standard normal numbers of one event, as places in one list: first the measured values of all legs but the last,
+/// by rank, then what stands here.
+#[derive(Clone, Debug, Default)]
+pub(super) struct Normals {
+    pub vertex: Option<usize>,
     /// Tracker value of an electron, by leg.
     pub tracker: Vec<Option<usize>>,
-    pub vertex: Option<usize>,
     pub theta: Vec<Option<usize>>,
     pub phi: Vec<Option<usize>>,
-    /// Total, with those of the truth events.
-    pub total: usize,
+    pub count: usize,
 }
 
 /// A channel at a mass point, ready to fold.
@@ -142,10 +152,11 @@ pub(super) struct Plan {
     pub cuts: CutPlan,
     pub axis: AxisPlan,
     pub dimensions: Dimensions,
+    pub normals: Normals,
 }
 
 impl Plan {
-    pub fn new(detector: &Detector, channel: &Channel, mass_gev: f64, truth_dimensions: usize) -> Self {
+    pub fn new(detector: &Detector, channel: &Channel, mass_gev: f64, truth: &TruthDimensions) -> Self {
         let mut tails = Vec::new();
         let calorimeters = detector
             .calorimeters
@@ -171,7 +182,8 @@ impl Plan {
             spread_wrong: 1e-3 * vertex.spread_wrong_mm / vertex.calorimeter_radius_m,
         });
         let vertex = vertex.filter(|_| legs.iter().any(|leg| leg.trackless));
-        let dimensions = dimensions(&legs, vertex.is_some(), truth_dimensions);
+        let normals = normals(&legs, vertex.is_some());
+        let dimensions = dimensions(&legs, vertex.is_some(), normals.count, truth);
         Plan {
             legs,
             calorimeters,
@@ -181,7 +193,23 @@ impl Plan {
             cuts: cut_plan(&channel.cuts, channel),
             axis: AxisPlan::new(&channel.axis, mass_gev),
             dimensions,
+            normals,
         }
+    }
+}
+
+impl Plan {
+    /// The |rapidity| beyond which a leg is hardly ever accepted: the cut or the detector's coverage, and a margin for
+    /// directions and vertex. Only the speed depends on it.
+    pub fn rapidity_reach(&self) -> f64 {
+        const MARGIN: f64 = 0.1;
+        let coverage = |leg: &LegPlan| {
+            let calorimeter = leg.calorimeter.as_ref().and_then(|regions| regions.bounds.last());
+            let tracker = leg.tracker.as_ref().and_then(|regions| regions.bounds.last());
+            calorimeter.into_iter().chain(tracker).fold(0.0, |a: f64, b| a.max(*b))
+        };
+        let covered = self.legs.iter().map(coverage).fold(0.0, f64::max);
+        libm::asinh(covered.min(self.cuts.max_cot)) + MARGIN
     }
 }
 
@@ -255,21 +283,50 @@ fn cut_plan(cuts: &Cuts, channel: &Channel) -> CutPlan {
     }
 }
 
-fn dimensions(legs: &[LegPlan], vertex: bool, truth_dimensions: usize) -> Dimensions {
-    let mut next = truth_dimensions;
+fn normals(legs: &[LegPlan], vertex: bool) -> Normals {
+    let mut next = legs.len() - 1;
     let mut take = |wanted: bool| {
         wanted.then(|| {
             next += 1;
             next - 1
         })
     };
-    // The measured values move the mass most, so they come first.
-    let values = (1..legs.len()).filter_map(|_| take(true)).collect();
-    let shares = |leg: &LegPlan| leg.calorimeter.as_ref().is_some_and(|c| c.regions.iter().any(|r| r.len() > 1));
-    let choice = legs.iter().map(|leg| take(shares(leg))).collect();
-    let tracker = legs.iter().map(|leg| take(leg.calorimeter.is_some() && leg.tracker.is_some())).collect();
     let vertex = take(vertex);
+    let tracker = legs.iter().map(|leg| take(leg.calorimeter.is_some() && leg.tracker.is_some())).collect();
     let theta = legs.iter().map(|leg| take(leg.sigma_theta > 0.0)).collect();
     let phi = legs.iter().map(|leg| take(leg.sigma_phi > 0.0)).collect();
-    Dimensions { values, choice, tracker, vertex, theta, phi, total: next }
+    Normals { vertex, tracker, theta, phi, count: next }
+}
+
+fn dimensions(legs: &[LegPlan], vertex: bool, normals: usize, truth: &TruthDimensions) -> Dimensions {
+    let mut next = truth.count;
+    let mut take = |count: usize| {
+        next += count;
+        next - count
+    };
+    let shares = |leg: &LegPlan| leg.calorimeter.as_ref().is_some_and(|c| c.regions.iter().any(|r| r.len() > 1));
+    let choice: Vec<Option<usize>> = legs.iter().map(|leg| shares(leg).then(|| take(1))).collect();
+    let vertex_choice = vertex.then(|| take(1));
+    let first_normal = take(normals);
+    // The first places of the sequence are the most even, so they go to what moves the mass and the acceptance most. Of
+    // the normals the first, after the rotation (see `spread`), carries nearly all.
+    let order = [first_normal]
+        .into_iter()
+        .chain(truth.leading.iter().copied())
+        .chain(vertex_choice)
+        .chain(truth.following.iter().copied())
+        .chain(choice.iter().flatten().copied())
+        .chain(first_normal + 1..next);
+    let mut places = vec![usize::MAX; next];
+    let mut used = 0;
+    for dimension in order {
+        places[dimension] = used;
+        used += 1;
+    }
+    // What nothing uses comes last.
+    for place in places.iter_mut().filter(|place| **place == usize::MAX) {
+        *place = used;
+        used += 1;
+    }
+    Dimensions { choice, vertex_choice, normals: first_normal, places }
 }

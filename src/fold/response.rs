@@ -64,7 +64,7 @@ impl UnitTail {
     #[inline(always)]
     pub fn quantile(&self, u: f64) -> f64 {
         let from_end = |rest: f64, part: f64, alpha: f64, n: f64| {
-            alpha + (n / alpha) * (kernel::exp(kernel::ln(rest / part) * (-1.0 / (n - 1.0))) - 1.0)
+            alpha + (n / alpha) * (kernel::power_brief(part / rest, 1.0 / (n - 1.0)) - 1.0)
         };
         if u < self.low {
             -from_end(u, self.low, self.alpha_low, self.n_low)
@@ -80,7 +80,7 @@ impl UnitTail {
 #[inline(always)]
 pub(super) fn power_tail(t: f64, alpha: f64, n: f64) -> f64 {
     let base = 1.0 + (alpha / n) * (t - alpha);
-    // The logarithm kernel wants a finite number.
+    // The kernel wants a finite number.
     let base = if base < 1e300 { base } else { 1e300 };
-    kernel::exp((1.0 - n) * kernel::ln(base))
+    kernel::power_brief(base, 1.0 - n)
 }
