@@ -7,6 +7,7 @@ mod last_leg;
 mod limits;
 mod list;
 mod measure;
+pub mod plain;
 mod plan;
 mod resolve;
 mod response;
