@@ -128,11 +128,13 @@ pub struct Scrambling {
 }
 
 impl Scrambling {
-    /// The scrambling of number `replicate` of a seed; `dimensions` up to [`MAX_DIMENSIONS`], more are an error.
-    pub fn new(seed: u64, replicate: u64, dimensions: usize) -> Option<Self> {
-        (dimensions <= MAX_DIMENSIONS).then(|| Scrambling {
-            dimensions: (0..dimensions).map(|d| Dimension::new(d, Mixer::keyed(seed, replicate, d as u64))).collect(),
-        })
+    /// The scrambling of number `replicate` of a seed. Dimension `d` of the result is dimension `places[d]` of the
+    /// sequence: the first ones are the most even. `None` where a place is not below [`MAX_DIMENSIONS`].
+    pub fn new(seed: u64, replicate: u64, places: &[usize]) -> Option<Self> {
+        let make = |place: &usize| {
+            (*place < MAX_DIMENSIONS).then(|| Dimension::new(*place, Mixer::keyed(seed, replicate, *place as u64)))
+        };
+        Some(Scrambling { dimensions: places.iter().map(make).collect::<Option<_>>()? })
     }
 
     /// Number of dimensions.
