@@ -221,7 +221,7 @@ fn broken_structure_is_refused() {
     refused(&event.replacen("9.0000e+00\n", "9.0000e+00 1\n", 1), 8, &["14 columns, 13 are allowed"]);
     refused(&event.replacen("+8.4366175474e+01", "1e999", 1), 8, &["`1e999`", "not finite"]);
     refused(&event.replacen("25  2    1    2", "25  2    3    3", 1), 10, &["row 3", "is 3"]);
-    refused(&event.replacen("21 -1    0    0", "21 -1    5    5", 1), 7, &["lead back"]);
+    refused(&event.replacen("21 -1    0    0", "21 -1    5    5", 1), 7, &["circle"]);
     refused(&event.replace("9.0000e+00\n", "9.0000e+00\r"), 8, &["columns", "carriage return"]);
     let (head, rest) = framed(&event).split_once("<init>").map(|(a, b)| (a.to_owned(), b.to_owned())).unwrap();
     read_text(&format!("{head}<init>{}", rest.replace("1 0.1 1 1\n", "")))

@@ -83,9 +83,9 @@ pub(super) enum NumberFault {
 impl fmt::Display for NumberFault {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         f.write_str(match self {
-            NumberFault::Text => "which is not a number",
-            NumberFault::NotFinite => "which is not finite",
-            NumberFault::NotWhole => "which is not a whole number in range",
+            NumberFault::Text => "which is not a number; a finite number is needed",
+            NumberFault::NotFinite => "which is not finite; a finite number is needed",
+            NumberFault::NotWhole => "which is not a whole number in range; one is needed",
         })
     }
 }

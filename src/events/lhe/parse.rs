@@ -109,7 +109,7 @@ fn column<T>(
     read(word).map_err(|fault| Fault {
         line,
         message: format!(
-            "column {} ({}) is {}, {fault}; a finite number is allowed",
+            "column {} ({}) is {}, {fault}",
             index + 1,
             columns.get(index).copied().unwrap_or_default(),
             shown(word)
@@ -167,7 +167,7 @@ fn read_event(
         return Err(Fault { line: head_line, message });
     }
     if let Some(row) = circular(batch.pending()) {
-        let message = format!("the mothers of particle row {} lead back to it", row + 1);
+        let message = format!("the mothers of particle row {} lead into a circle", row + 1);
         return Err(Fault { line: head_line, message });
     }
     context.weight.of_event(event_weight, cursor, d_exponents).map_err(|message| Fault { line: head_line, message })
