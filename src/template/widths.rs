@@ -7,9 +7,9 @@
 //! # Tested bounds
 //!
 //! Bins of 0.2 core widths (200 bins across ±20 % with a 1 % wide peak), any position of the peak in its bin, Gaussian
-//! and double-sided Crystal Ball of equal core widths: peak 2e-4 core widths, FWHM 2e-4 and `sigma_eff` 2e-5 relative.
+//! and double-sided Crystal Ball of equal core widths: peak 5e-4 core widths, FWHM 2e-4 and `sigma_eff` 2e-5 relative.
 //! With unequal core widths the density has a kink in its slope at the peak and the bounds are 0.04 core widths, 1e-3
-//! and 1e-4. Bins of 0.4 core widths: 3e-3, 2e-3 and 2e-4. (`tests/template_widths.rs`.)
+//! and 1e-4. Bins of 0.4 core widths: 3e-3, 2e-3 and 2e-4 (0.08, 5e-3 and 5e-4). (`tests/template_widths.rs`.)
 
 use super::cumulative::{Cumulative, CumulativeError};
 use super::{Replicate, Template};
