@@ -133,7 +133,7 @@ fn widths_of_known_shapes_within_the_stated_bounds() {
     // The bounds that the module states; they come from the interpolation error, which falls with the bin width.
     for case in cases() {
         let fine = if case.kink { [0.04, 1e-3, 1e-4, 1e-4] } else { [5e-4, 2e-4, 2e-5, 2e-5] };
-        let coarse = if case.kink { [0.08, 5e-3, 5e-4, 5e-4] } else { [3e-3, 2e-3, 2e-4, 2e-4] };
+        let coarse = if case.kink { [0.08, 5e-3, 5e-4, 5e-4] } else { [3e-3, 2e-3, 2e-4, 3e-4] };
         for (bin_in_sigma, bounds) in [(0.2, fine), (0.4, coarse)] {
             let found = worst(&case, bin_in_sigma, 200);
             for k in 0..4 {
@@ -174,7 +174,7 @@ fn widths_of_the_cauchy_shape_and_the_exponential() {
 #[test]
 fn linear_interpolation_would_not_do() {
     // The reason for the cubic, and a proof that the bound can fail: with 0.2 sigma per bin the narrowest interval of
-    // the linearly interpolated cumulative of a Gaussian is wrong by more than 0.02 % (its ends in mid-bin).
+    // the linearly interpolated cumulative of a Gaussian is wrong by more than 0.1 % (its ends in mid-bin).
     let t = template(edges(-20.1, 19.9, 200), &gaussian_cdf);
     let sums: Vec<f64> = t.edges_gev.iter().map(|e| gaussian_cdf(*e)).collect();
     let linear = |target: f64| {
@@ -185,7 +185,7 @@ fn linear_interpolation_would_not_do() {
         .map(|k| f64::from(k) * 1e-4)
         .map(|p| 0.5 * (linear(p + SIGMA_EFF_FRACTION) - linear(p)))
         .fold(f64::INFINITY, f64::min);
-    assert!((width - 1.0).abs() > 2e-4, "{width}");
+    assert!((width - 1.0).abs() > 1e-3, "{width}");
     assert!((t.widths().unwrap().sigma_eff_gev.value.unwrap() - 1.0).abs() < 2e-5);
 }
 
