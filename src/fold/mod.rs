@@ -1,9 +1,25 @@
 //! The folding engine, and the plain reference path.
 
+mod aim;
+mod engine;
+mod estimate;
+mod last_leg;
+mod limits;
+mod list;
+mod measure;
+pub mod plain;
+mod plan;
+mod resolve;
+mod response;
+mod spread;
+
+use crate::problem::Problem;
+use crate::process::{EventSource, Study};
 use crate::template::LabelledTemplate;
+use std::path::PathBuf;
 
 /// How a fold of one channel at one mass point went.
-#[derive(Clone, Debug, PartialEq)]
+#[derive(Clone, Debug, Default, PartialEq)]
 pub struct FoldRecord {
     /// Name of the channel.
     pub channel: String,
@@ -15,14 +31,18 @@ pub struct FoldRecord {
     pub precision_reached: f64,
     /// Whether the study's `precision` was reached.
     pub reached: bool,
-    /// CPU time in seconds.
+    /// CPU time of all threads in seconds.
     pub cpu_seconds: f64,
+    /// Elapsed time in seconds.
+    pub wall_seconds: f64,
     /// Events of the list that were used; `None` for generated events.
     pub events_used: Option<u64>,
     /// Effective number of events of the list, (sum w)²/sum w².
     pub events_effective: Option<f64>,
     /// Events of the list that were skipped, with the reason.
     pub events_skipped: Vec<(String, u64)>,
+    /// What else is worth knowing about the file of events.
+    pub notes: Vec<String>,
 }
 
 /// What a fold of one channel at one mass point gives.
@@ -32,4 +52,79 @@ pub struct Folded {
     pub templates: Vec<LabelledTemplate>,
     /// How it went.
     pub record: FoldRecord,
+}
+
+/// How far a fold is, told from time to time.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Progress {
+    /// Share of the work done, 0 to 1: a guess while the points that are needed are not known.
+    pub fraction: f64,
+}
+
+/// Why a fold could not be made.
+#[derive(Clone, Debug, PartialEq, thiserror::Error)]
+pub enum FoldError {
+    /// The study has no such channel.
+    #[error("the study has no channel number {0}")]
+    NoSuchChannel(usize),
+    /// The file of events cannot be used.
+    #[error(transparent)]
+    Events(#[from] Problem),
+    /// The file has no event of the channel.
+    #[error("{}: no event for the channel {channel} ({reasons}); check the channel's legs and the file", .path.display())]
+    NoEvents {
+        /// The file.
+        path: PathBuf,
+        /// Name of the channel.
+        channel: String,
+        /// Why events were skipped, with their numbers.
+        reasons: String,
+    },
+    /// All weights are 0.
+    #[error("{}: all events for the channel {channel} have weight 0; nothing can be folded", .path.display())]
+    NoWeight {
+        /// The file.
+        path: PathBuf,
+        /// Name of the channel.
+        channel: String,
+    },
+    /// No rule says how the legs are picked from events.
+    #[error("channel {channel}: its legs cannot be picked from a file of events")]
+    CannotPick {
+        /// Name of the channel.
+        channel: String,
+    },
+    /// The mass point cannot decay to the legs.
+    #[error("a resonance of {mass_gev} GeV cannot decay to the legs of this channel")]
+    BelowThreshold {
+        /// The mass point in GeV.
+        mass_gev: f64,
+    },
+    /// The channel takes more random numbers per event than the sequence has.
+    #[error("the channel needs {found} numbers per event, and {allowed} are available")]
+    TooManyDimensions {
+        /// Numbers per event that the channel needs.
+        found: usize,
+        /// Numbers per event that the sequence has.
+        allowed: usize,
+    },
+}
+
+/// Folds one channel of a study at one mass point, on the current rayon thread pool.
+///
+/// The result does not depend on the number of threads. Points are doubled until the study's precision is met or
+/// `max_points` are used; the record says which.
+///
+/// # Errors
+/// See [`FoldError`].
+pub fn fold_channel(
+    study: &Study,
+    channel: usize,
+    mass_gev: f64,
+    progress: &(dyn Fn(Progress) + Sync),
+) -> Result<Folded, FoldError> {
+    match &study.resonance.source {
+        EventSource::Generated(production) => engine::fold_generated(study, channel, mass_gev, production, progress),
+        EventSource::File(path) => list::fold_file(study, channel, mass_gev, path, progress),
+    }
 }

@@ -6,10 +6,12 @@
 //! [`wide!`](crate::wide), it is compiled twice, for the baseline processor and for AVX2, and the version is chosen at
 //! run time. No kernel uses a fused multiply-add, so both versions round alike and give the same bytes.
 
-pub mod kernel;
-pub mod sobol;
 #[macro_use]
 mod dispatch;
+
+pub mod kernel;
+pub mod normal;
+pub mod sobol;
 
 use std::sync::OnceLock;
 
