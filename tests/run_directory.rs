@@ -82,6 +82,8 @@ fn contents() -> RunContents {
             precision_reached: if mass_gev > 160.0 { f64::INFINITY } else { 8e-5 },
             reached: mass_gev < 160.0,
             cpu_seconds: 0.5,
+            wall_seconds: 0.25,
+            notes: vec!["a note".to_owned()],
             events_used: (mass_gev > 160.0).then_some(9000),
             events_effective: (mass_gev > 160.0).then_some(8999.5),
             events_skipped: if mass_gev > 160.0 { vec![("no photon pair".to_owned(), 1000)] } else { Vec::new() },

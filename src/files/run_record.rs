@@ -37,14 +37,18 @@ pub struct FoldSummary {
     pub precision_reached: Option<f64>,
     /// Whether the study's `precision` was reached.
     pub reached: bool,
-    /// CPU time in seconds.
+    /// CPU time of all threads in seconds.
     pub cpu_seconds: f64,
+    /// Elapsed time in seconds.
+    pub wall_seconds: f64,
     /// Events of the list that were used; `null` for generated events.
     pub events_used: Option<u64>,
     /// (sum w)²/sum w² of the list.
     pub events_effective: Option<f64>,
     /// Events of the list that were skipped, by reason.
     pub events_skipped: Vec<Skipped>,
+    /// What else is worth knowing about the file of events.
+    pub notes: Vec<String>,
 }
 
 impl From<&FoldRecord> for FoldSummary {
@@ -57,6 +61,7 @@ impl From<&FoldRecord> for FoldSummary {
             precision_reached: finite(record.precision_reached),
             reached: record.reached,
             cpu_seconds: record.cpu_seconds,
+            wall_seconds: record.wall_seconds,
             events_used: record.events_used,
             events_effective: record.events_effective.and_then(finite),
             events_skipped: record
@@ -64,6 +69,7 @@ impl From<&FoldRecord> for FoldSummary {
                 .iter()
                 .map(|(reason, events)| Skipped { reason: reason.clone(), events: *events })
                 .collect(),
+            notes: record.notes.clone(),
         }
     }
 }
@@ -112,7 +118,10 @@ impl RunRecord {
                 let reached = fold.precision_reached.map_or("no".to_owned(), |p| format!("{p:.2e}"));
                 format!(
                     "{} at {} GeV: {reached} precision after {} points, aimed at {}; raise max_points or precision",
-                    fold.channel, fold.mass_gev, fold.points, study.precision
+                    fold.channel,
+                    fold.mass_gev,
+                    fold.points,
+                    super::number::shortest(study.precision)
                 )
             })
             .collect();
