@@ -353,8 +353,8 @@ mod tests {
         let (p, _) = polynomial_bins(8, &[50.0, 1.0, 0.5, 0.1, -0.01, 0.001]);
         let slopes = limited_slopes(&p);
         let density = |x: f64| 50.0 + x * (2.0 + x * (1.5 + x * (0.4 + x * (-0.05 + x * 0.006))));
-        for edge in 3..=5 {
-            assert!((slopes[edge] - density(edge as f64)).abs() < 1e-11, "edge {edge}");
+        for (edge, slope) in slopes.iter().enumerate().take(6).skip(3) {
+            assert!((slope - density(edge as f64)).abs() < 1e-11, "edge {edge}");
         }
     }
 
