@@ -46,10 +46,10 @@ pub(super) fn name_fault(name: &str) -> Option<&'static str> {
 pub(super) fn nearest<'c>(word: &str, candidates: impl IntoIterator<Item = &'c str>) -> Option<&'c str> {
     let lower = word.to_lowercase();
     let distance = |candidate: &str| strsim::osa_distance(&lower, candidate);
-    // A third of the letters may be wrong; a key that lacks its unit is near whatever its length.
+    // Two letters of five may be wrong; a key that lacks its unit is near whatever its length.
     let near = |candidate: &&str| {
         let letters = lower.chars().count().max(candidate.chars().count());
-        3 * distance(candidate) <= letters || (lower.len() >= 3 && candidate.starts_with(&lower))
+        5 * distance(candidate) <= 2 * letters || (lower.len() >= 3 && candidate.starts_with(&lower))
     };
     candidates.into_iter().filter(near).min_by_key(|candidate| distance(candidate))
 }
