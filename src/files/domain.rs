@@ -55,7 +55,7 @@ pub(super) fn nearest<'c>(word: &str, candidates: impl IntoIterator<Item = &'c s
 }
 
 /// The end of a message about an unknown word.
-pub(super) fn suggestion<'c>(word: &str, candidates: &[&'c str]) -> String {
+pub(super) fn suggestion(word: &str, candidates: &[&str]) -> String {
     let allowed = candidates.iter().map(|c| format!("`{c}`")).collect::<Vec<_>>().join(", ");
     match nearest(word, candidates.iter().copied()) {
         Some(meant) => format!("did you mean `{meant}`? (allowed: {allowed})"),
