@@ -1,19 +1,11 @@
 //! What `run.json` says about a run.
 
+use super::FileDigest;
 use crate::fold::FoldRecord;
 use serde::{Deserialize, Serialize};
 
 /// The program's name in `run.json`.
 pub(super) const PROGRAM: &str = "peakfold";
-
-/// A file with its digest.
-#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
-pub struct FileDigest {
-    /// Path: of an input as the user named it, of an output relative to the run directory, with `/`.
-    pub path: String,
-    /// SHA-256 in hexadecimal.
-    pub sha256: String,
-}
 
 /// Events of the list that were not used for one reason.
 #[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]

@@ -4,7 +4,8 @@
 //! aside first and deleted last. Whatever fails, the sibling is removed and the old result is in its place.
 
 use super::interrupt::Undisturbed;
-use super::run_record::{FileDigest, PROGRAM};
+use super::digest::{FileDigest, hexadecimal};
+use super::run_record::PROGRAM;
 use serde::Deserialize;
 use sha2::{Digest, Sha256};
 use std::ffi::OsString;
@@ -238,10 +239,6 @@ impl<W: Write> Write for Digesting<W> {
 /// Digest of bytes, as it stands in `run.json`.
 pub(super) fn digest_of(bytes: &[u8]) -> String {
     hexadecimal(&Sha256::digest(bytes))
-}
-
-fn hexadecimal(bytes: &[u8]) -> String {
-    bytes.iter().map(|byte| format!("{byte:02x}")).collect()
 }
 
 fn may_replace(path: &Path, replace: bool, inputs: &[FileDigest]) -> Result<(), TargetError> {
