@@ -53,11 +53,11 @@ impl Table {
         report.push('\n');
     }
 
-    fn details(&self, report: &mut String, details: &[String]) {
-        let text = join(details);
-        if !text.is_empty() {
-            let indent = " ".repeat(18);
-            wrapped(report, &indent, &indent, &text);
+    fn details(&self, report: &mut String, details: &[String], known_to: &str) {
+        for text in [join(details).as_str(), known_to] {
+            if !text.is_empty() {
+                wrapped(report, &" ".repeat(18), &" ".repeat(20), text);
+            }
         }
     }
 }
@@ -71,12 +71,12 @@ fn calorimeter_text(report: &mut String, detector: &Detector, object: Object, ta
     for region in &regions {
         for entry in region.entries.iter().filter_map(|index| detector.calorimeters.get(*index)) {
             table.row(report, region.eta, &entry.name, ENERGIES_GEV.map(|energy| entry.relative_sigma(energy)));
-            table.details(report, &calorimeter_details(entry));
+            table.details(report, &calorimeter_details(entry), &known_to(&entry.uncertainties));
         }
     }
 }
 
-fn calorimeter_details(entry: &Calorimeter) -> [String; 4] {
+fn calorimeter_details(entry: &Calorimeter) -> [String; 3] {
     let part = match entry.fraction {
         1.0 => String::new(),
         fraction => format!("fraction {fraction} of the {}s", entry.object),
@@ -88,7 +88,7 @@ fn calorimeter_details(entry: &Calorimeter) -> [String; 4] {
             tail.alpha_low, tail.n_low, tail.alpha_high, tail.n_high
         ),
     };
-    [part, off_centre(entry.bias, entry.scale), tail, known_to(&entry.uncertainties)]
+    [part, off_centre(entry.bias, entry.scale), tail]
 }
 
 fn tracker_text(report: &mut String, detector: &Detector, object: Object, table: &Table) {
@@ -102,14 +102,14 @@ fn tracker_text(report: &mut String, detector: &Detector, object: Object, table:
         let Some(entry) = detector.trackers.get(region.entry) else { continue };
         let middle = 0.5 * (region.eta.low + region.eta.high);
         table.row(report, region.eta, &entry.name, MOMENTA_GEV.map(|pt| entry.relative_sigma(pt, middle)));
-        table.details(report, &tracker_details(entry));
+        table.details(report, &tracker_details(entry), &known_to(&entry.uncertainties));
     }
     if !detector.calorimeter_regions(object).is_empty() {
         report.push_str("    where both measure, the energy is their mean weighted by 1/sigma^2\n");
     }
 }
 
-fn tracker_details(entry: &Tracker) -> [String; 3] {
+fn tracker_details(entry: &Tracker) -> [String; 2] {
     let resolution = match &entry.resolution {
         TrackerResolution::Terms { .. } => String::new(),
         TrackerResolution::Geometry(geometry) => format!(
@@ -123,7 +123,7 @@ fn tracker_details(entry: &Tracker) -> [String; 3] {
             if geometry.vertex_constraint { "with" } else { "without" }
         ),
     };
-    [resolution, off_centre(0.0, entry.scale), known_to(&entry.uncertainties)]
+    [resolution, off_centre(0.0, entry.scale)]
 }
 
 fn vertex_text(report: &mut String, detector: &Detector) {

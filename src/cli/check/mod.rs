@@ -86,12 +86,12 @@ fn study_text(report: &mut String, path: &Path, study: &Study) {
             EventSource::File(file) => format!("read from {}", file.display()),
             EventSource::Generated(Production::Spectrum { pt_mean_gev, rapidity_sigma }) => {
                 let pt = match *pt_mean_gev {
-                    0.0 => "without pT".to_owned(),
-                    mean => format!("pT exponential with mean {mean} GeV"),
+                    0.0 => "no pT".to_owned(),
+                    mean => format!("exponential pT of mean {mean} GeV"),
                 };
                 let rapidity = match *rapidity_sigma {
                     0.0 => "rapidity 0".to_owned(),
-                    sigma => format!("rapidity Gaussian with standard deviation {sigma}"),
+                    sigma => format!("Gaussian rapidity of standard deviation {sigma}"),
                 };
                 format!("generated: {pt}, {rapidity}")
             }
@@ -107,7 +107,7 @@ fn study_text(report: &mut String, path: &Path, study: &Study) {
     row(
         "precision",
         &format!(
-            "{} of the highest bin (RMS over bins), with at most {} points for each channel and mass",
+            "{} of the highest bin, RMS over bins; at most {} points per channel and mass",
             study.precision,
             grouped(study.max_points)
         ),
