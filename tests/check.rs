@@ -99,7 +99,69 @@ shape = "gauss-exp"
 // 0.4276 %; electron: 10 % and 20 %/sqrt(E); electron track: 3e-4 pT (+) 0.4 %; muon track: curvature term
 // 20e-6/(0.299792458 3.8 1.1^2) times the exact factor 6.436658250 for 13 points (R. L. Gluckstern, NIM 24 (1963) 381,
 // by direct least squares) = 9.3390e-5 per GeV. "~" stands for what is estimated anew on each machine.
-const EXPECTED: &str = r#""#;
+const EXPECTED: &str = r#"study "Small study" (study.toml)
+  masses      125, 250 GeV
+  width       0.5 GeV, relativistic Breit-Wigner, produced as (m/M)^-4 across it
+  events      generated: exponential pT of mean 40 GeV, Gaussian rapidity of standard deviation 1.2
+  cascade V   91.188 GeV with a width of 2.4955 GeV
+  precision   0.01 of the highest bin, RMS over bins; at most 1,048,576 points per channel and mass
+  seed        7
+
+detector "Small detector"
+  photon calorimeter: sigma_E/E, in % at E
+    |eta|         entry                 10 GeV    50 GeV   100 GeV   200 GeV
+    0 to 2.5      photon-crystals        1.521     0.552     0.428     0.364
+                  Gaussian
+                  known to: scale 0.001 (with em-scale), constant 0.0005
+  photon direction: theta to 1.5 mrad, phi to 1 mrad
+  electron calorimeter: sigma_E/E, in % at E
+    |eta|         entry                 10 GeV    50 GeV   100 GeV   200 GeV
+    0 to 2.5      electron-whole         3.162     1.414     1.000     0.707
+                  fraction 0.75 of the electrons; Gaussian
+    0 to 2.5      electron-showering     6.325     2.828     2.000     1.414
+                  fraction 0.25 of the electrons; bias -0.01; tails from 1.25 sigma below (power 3)
+                    and 2 sigma above (power 8)
+  electron tracker: sigma_pT/pT, in the middle of the region, in % at pT
+    |eta|         entry                 10 GeV    50 GeV   100 GeV   500 GeV
+    0 to 1        electron-track         0.500     1.552     3.027    15.005
+    where both measure, the energy is their mean weighted by 1/sigma^2
+  muon tracker: sigma_pT/pT, in the middle of the region, in % at pT
+    |eta|         entry                 10 GeV    50 GeV   100 GeV   500 GeV
+    0 to 2.5      muon-track             0.093     0.467     0.934     4.670
+                  13 points of 20 um from 0.04 m over 1.1 m in 3.8 T, 0 radiation lengths, without
+                    vertex constraint
+  vertex: right in a fraction 0.8 of events, to 0.1 mm; else off by 45 mm; calorimeter at radius 1.5
+      m, no endcap
+
+channel two-photon: X -> photon photon
+  cuts        |eta| below 2.4; true |eta| outside 1.4 to 1.5; pT in falling order above 0.35, 0.25
+              of the mass
+  categories  central (every |eta| below 1.4); rest
+  shape       double-sided Crystal Ball, for the fit of the templates
+  mass axis   100 bins, in GeV:
+    mass point         125       250
+    from               100       200
+    to                 150       300
+    bin width          0.5         1
+
+channel four-lepton: X -> V V(*), V -> electron electron, V -> muon muon
+  cuts        |eta| within the detector's coverage; pT in falling order above 20, 10 GeV
+  categories  all
+  shape       Gaussian with exponential tails, for the fit of the templates
+  mass axis   80 bins, in GeV:
+    mass point         125       250
+    from                90        90
+    to                 290       290
+    bin width          2.5       2.5
+
+cost, with points for one mass and time for all; points and time are estimates
+  channel      templates   points at most        points    CPU time
+  two-photon 4 1,048,576 ~
+  four-lepton 2 1,048,576 ~
+  estimated time: ~ with 2 threads, from coarse folds and error ~ points^-0.6
+
+no problems
+"#;
 
 fn write_study(directory: &Path, detector: &str, study: &str) {
     std::fs::write(directory.join("detector.toml"), detector).unwrap();
@@ -186,6 +248,17 @@ fn warns_when_the_points_do_not_suffice() {
     assert_eq!(output.status.code(), Some(0));
     let short = "two-photon: the precision 0.000001 may take more than the 65,536 points allowed";
     assert!(stdout(&output).contains(short), "{}", stdout(&output));
+}
+
+#[test]
+fn warns_when_no_event_passes() {
+    let directory = tempfile::tempdir().unwrap();
+    // Two photons of a 250 GeV resonance cannot both have 0.9 of its mass.
+    write_study(directory.path(), DETECTOR, &STUDY.replace("[0.35, 0.25]", "[0.9, 0.9]"));
+    let output = peakfold(directory.path(), &["check", "study.toml"]);
+    assert_eq!(output.status.code(), Some(0));
+    let notes = stdout(&output).lines().filter(|line| line.contains("no event")).map(str::to_owned).collect::<Vec<_>>();
+    assert_eq!(notes, ["  two-photon: no event of the coarse fold passed the cuts; check them"]);
 }
 
 #[test]

@@ -27,10 +27,11 @@ Environment:
 
 /// Fold the resolution of a detector into the line shape of a reconstructed mass
 ///
-/// peakfold takes a detector as it was calibrated or proposed, a resonance and its decay channels, and computes the
-/// shape that the resonance draws in the reconstructed mass, with the numerical error of every bin.
+/// peakfold takes a detector as it was calibrated or proposed, a resonance and its decay channels,
+/// and computes the shape that the resonance draws in the reconstructed mass, with the numerical
+/// error of every bin.
 #[derive(Debug, Parser)]
-#[command(name = "peakfold", version, after_long_help = LONG_HELP)]
+#[command(name = "peakfold", version, verbatim_doc_comment, after_long_help = LONG_HELP)]
 struct Program {
     #[command(subcommand)]
     command: Command,
