@@ -1,10 +1,10 @@
 //! `peakfold fold`: the main job.
 
+use super::outcome::{Failure, Outcome, say};
 use super::table::{with_error, write_table};
 use crate::draw::template_figures;
-use crate::files::{FileDigest, RunContents, RunRecord, Target, TargetError};
-use crate::fold::{FoldError, FoldRecord, Folded, fold_channel};
-use crate::problem::Problems;
+use crate::files::{LoadedStudy, RunContents, RunRecord, Target, load_study};
+use crate::fold::{FoldRecord, Folded, fold_channel};
 use crate::process::Study;
 use crate::template::{LabelledTemplate, Measured};
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
@@ -36,92 +36,21 @@ pub struct FoldArgs {
     pub replace: bool,
 }
 
-/// A study as it was read.
-#[derive(Clone, Debug)]
-pub struct Loaded {
-    /// The study.
-    pub study: Study,
-    /// All files that it was read from, event lists included.
-    pub inputs: Vec<FileDigest>,
-    /// What is unusual but allowed.
-    pub warnings: Vec<String>,
-}
-
-/// Why nothing was written.
-#[derive(Debug, thiserror::Error)]
-pub enum FoldFailure {
-    /// The study or a file that it names.
-    #[error("{0}")]
-    Input(#[from] Problems),
-    /// The place for the result.
-    #[error(transparent)]
-    Target(#[from] TargetError),
-    /// A channel that cannot be folded.
-    #[error("channel {channel} at {mass_gev} GeV: {source}")]
-    Fold {
-        /// Name of the channel.
-        channel: String,
-        /// Mass point in GeV.
-        mass_gev: f64,
-        /// The reason.
-        source: FoldError,
-    },
-    /// Threads that the system does not give.
-    #[error("cannot start {threads} threads: {reason}; ask for fewer with --threads")]
-    Threads {
-        /// How many.
-        threads: usize,
-        /// The system's reason.
-        reason: String,
-    },
-}
-
-/// How a run that was written ended.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum Outcome {
-    /// All as asked: exit status 0.
-    Done,
-    /// Written, but something was not reached: exit status 3.
-    NotReached,
-}
-
-impl Outcome {
-    /// Exit status of the program.
-    pub fn status(self) -> u8 {
-        match self {
-            Outcome::Done => 0,
-            Outcome::NotReached => 3,
-        }
-    }
-}
-
-impl FoldFailure {
-    /// Exit status of the program: a problem with the input, nothing written.
-    pub fn status(&self) -> u8 {
-        1
-    }
-}
-
 /// Folds the study and writes the run; the table goes to `out`, progress and messages to stderr.
 ///
 /// # Errors
-/// Why nothing was written.
-pub fn run(
-    args: &FoldArgs,
-    load: impl FnOnce(&Path) -> Result<Loaded, Problems>,
-    out: &mut dyn Write,
-) -> Result<Outcome, FoldFailure> {
+/// Why nothing was written, or what was not reached in a run that was written.
+pub fn run(args: &FoldArgs, out: &mut impl Write) -> Outcome {
     let started = Instant::now();
-    let Loaded { study, inputs, warnings } = load(&args.study)?;
+    let LoadedStudy { study, inputs, warnings } = load_study(&args.study)?;
     for warning in warnings {
-        eprintln!("warning: {warning}");
+        say(&format!("warning: {warning}"));
     }
     let target = Target::prepare(&args.output, args.replace, &inputs)?;
     let threads = args.threads.map_or(0, usize::from);
-    let pool = rayon::ThreadPoolBuilder::new()
-        .num_threads(threads)
-        .build()
-        .map_err(|error| FoldFailure::Threads { threads, reason: error.to_string() })?;
+    let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build().map_err(|error| {
+        Failure::Input(format!("cannot start {threads} threads: {error}; ask for fewer with --threads"))
+    })?;
     let threads = pool.current_num_threads();
     let (templates, records) = pool.install(|| fold_all(&study, args.quiet))?;
 
@@ -142,15 +71,17 @@ pub fn run(
     // The run is written; a reader of the table who has gone away changes nothing.
     let _ = report(out, &table, &records, &args.output);
     if let Some(old) = committed.old_left_at {
-        eprintln!("warning: the old result could not be deleted and lies in {}", old.display());
+        say(&format!("warning: the old result could not be deleted and lies in {}", old.display()));
     }
-    for failure in &not_reached {
-        eprintln!("not reached: {failure}");
+    if not_reached.is_empty() {
+        return Ok(());
     }
-    Ok(if not_reached.is_empty() { Outcome::Done } else { Outcome::NotReached })
+    Err(Failure::Numerical(
+        not_reached.iter().map(|line| format!("not reached: {line}")).collect::<Vec<_>>().join("\n"),
+    ))
 }
 
-fn fold_all(study: &Study, quiet: bool) -> Result<(Vec<LabelledTemplate>, Vec<FoldRecord>), FoldFailure> {
+fn fold_all(study: &Study, quiet: bool) -> Result<(Vec<LabelledTemplate>, Vec<FoldRecord>), Failure> {
     let masses = &study.resonance.masses_gev;
     let bar = progress_bar((study.channels.len() * masses.len()) as u64, quiet);
     let (mut templates, mut records) = (Vec::new(), Vec::new());
@@ -170,7 +101,7 @@ fn fold_all(study: &Study, quiet: bool) -> Result<(Vec<LabelledTemplate>, Vec<Fo
             });
             let Folded { templates: of_channel, record } = folded.map_err(|source| {
                 bar.finish_and_clear();
-                FoldFailure::Fold { channel: channel.name.clone(), mass_gev: *mass_gev, source }
+                Failure::Input(format!("channel {} at {mass_gev} GeV: {source}", channel.name))
             })?;
             templates.extend(of_channel);
             records.push(record);
@@ -219,7 +150,7 @@ fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
     rows
 }
 
-fn report(out: &mut dyn Write, table: &[Vec<String>], records: &[FoldRecord], path: &Path) -> io::Result<()> {
+fn report(out: &mut impl Write, table: &[Vec<String>], records: &[FoldRecord], path: &Path) -> io::Result<()> {
     write_table(out, &HEADER, table, 2)?;
     writeln!(out, "\nDigits in parentheses: numerical standard error of the last digits; -: not on the mass axis.")?;
     for record in records {

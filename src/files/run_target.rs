@@ -3,8 +3,8 @@
 //! Everything is written into a hidden sibling directory, flushed to the disk, and renamed. An existing result is renamed
 //! aside first and deleted last. Whatever fails, the sibling is removed and the old result is in its place.
 
-use super::interrupt::Undisturbed;
 use super::digest::{FileDigest, hexadecimal};
+use super::interrupt::Undisturbed;
 use super::run_record::PROGRAM;
 use serde::Deserialize;
 use sha2::{Digest, Sha256};
