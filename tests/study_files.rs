@@ -187,7 +187,7 @@ fn every_key_of_a_good_pair() {
     };
     assert_eq!(study.channels, [photons, mixed]);
     let names: Vec<_> = inputs.iter().map(|input| input.path.clone()).collect();
-    assert_eq!(names, ["study.toml", "detector.toml", "spectrum.csv"].map(|name| pair.path(name)));
+    assert_eq!(names, ["study.toml", "detector.toml", "spectrum.csv"].map(|name| pair.path(name).display().to_string()));
 }
 
 #[test]

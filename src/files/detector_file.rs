@@ -5,7 +5,7 @@ use std::path::Path;
 use super::detector_entries as entries;
 use super::reader::Section;
 use super::source::{InputText, Sheet, Unreadable, read_text};
-use super::{InputFile, LoadedDetector};
+use super::{FileDigest, LoadedDetector};
 use crate::detector::{Calorimeter, Detector, EtaRange, Object};
 use crate::problem::{Problem, Problems};
 
@@ -32,7 +32,7 @@ pub(super) struct DetectorReading {
     /// What could be read, for further checks even where there are problems; `None` where some entry's object or region
     /// is not known.
     pub detector: Option<Detector>,
-    pub input: InputFile,
+    pub input: FileDigest,
     pub problems: Vec<Problem>,
     pub warnings: Vec<Problem>,
 }

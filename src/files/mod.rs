@@ -7,32 +7,35 @@
 mod channel_tables;
 mod detector_entries;
 mod detector_file;
+mod digest;
 mod domain;
+mod interrupt;
+mod number;
 mod reader;
 mod resonance_table;
+mod run_read;
+mod run_record;
+mod run_target;
+mod run_write;
 mod source;
 mod spectrum_file;
 mod study_checks;
 mod study_file;
 mod uncertainties;
 
-use std::path::PathBuf;
-
 pub use detector_file::load_detector;
+pub use digest::FileDigest;
+pub use interrupt::remove_unfinished_on_interrupt;
+pub use number::shortest;
+pub use run_read::{Run, read_run};
+pub use run_record::{FoldSummary, RunRecord, Skipped};
+pub use run_target::{Committed, Staging, Target, TargetError};
+pub use run_write::{NOMINAL, RunContents, write_templates};
 pub use study_file::load_study;
 
 use crate::detector::Detector;
 use crate::problem::Problem;
 use crate::process::Study;
-
-/// A file that was read, and the digest of its bytes.
-#[derive(Clone, Debug, PartialEq, Eq)]
-pub struct InputFile {
-    /// The path as it was opened.
-    pub path: PathBuf,
-    /// SHA-256 in lower-case hexadecimal.
-    pub sha256: String,
-}
 
 /// A study that was read without a problem.
 #[derive(Clone, Debug)]
@@ -40,7 +43,7 @@ pub struct LoadedStudy {
     /// The study.
     pub study: Study,
     /// Every file that it depends on: the study, the detector, then a spectrum table or an event file.
-    pub inputs: Vec<InputFile>,
+    pub inputs: Vec<FileDigest>,
     /// What is allowed but likely not meant.
     pub warnings: Vec<Problem>,
 }
@@ -51,7 +54,7 @@ pub struct LoadedDetector {
     /// The detector.
     pub detector: Detector,
     /// Its file.
-    pub input: InputFile,
+    pub input: FileDigest,
     /// What is allowed but likely not meant.
     pub warnings: Vec<Problem>,
 }

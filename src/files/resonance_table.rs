@@ -2,7 +2,7 @@
 
 use std::path::Path;
 
-use super::InputFile;
+use super::FileDigest;
 use super::domain::{ANY, MASS, NOT_NEGATIVE};
 use super::reader::{Item, Section};
 use super::source::{Sheet, Unreadable, digest};
@@ -22,7 +22,7 @@ const INTERMEDIATE: Intermediate = Intermediate { mass_gev: 91.188, width_gev: 2
 /// What other files of the study brought along.
 #[derive(Debug, Default)]
 pub(super) struct OtherFiles {
-    pub inputs: Vec<InputFile>,
+    pub inputs: Vec<FileDigest>,
     pub problems: Vec<Problem>,
 }
 

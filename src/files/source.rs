@@ -9,7 +9,7 @@ use sha2::{Digest, Sha256};
 use toml::Spanned;
 use toml::de::DeTable;
 
-use super::InputFile;
+use super::digest::{FileDigest, hexadecimal};
 use crate::problem::Problem;
 
 /// Files written by hand are far smaller; a larger one is refused rather than read into memory.
@@ -19,7 +19,7 @@ const MOST_BYTES: u64 = 64 << 20;
 #[derive(Debug)]
 pub(super) struct InputText {
     pub text: String,
-    pub input: InputFile,
+    pub input: FileDigest,
 }
 
 /// Why a file could not be read.
@@ -50,18 +50,18 @@ pub(super) fn read_text(path: &Path) -> Result<InputText, Unreadable> {
         let message = format!("the file is larger than {} MiB, which no such file should be", MOST_BYTES >> 20);
         return Err(Unreadable::Content(Problem::of_file(path, message)));
     }
-    let sha256 = hex(&Sha256::digest(&bytes));
+    let sha256 = hexadecimal(&Sha256::digest(&bytes));
     let text = String::from_utf8(bytes).map_err(|error| {
         let valid = error.utf8_error().valid_up_to();
         let line = 1 + error.as_bytes()[..valid].iter().filter(|byte| **byte == b'\n').count();
         let message = format!("byte {} of the file is not UTF-8; save the file as UTF-8 text", valid + 1);
         Unreadable::Content(Problem::at_line(path, line, message))
     })?;
-    Ok(InputText { text, input: InputFile { path: path.to_path_buf(), sha256 } })
+    Ok(InputText { text, input: FileDigest { path: path.display().to_string(), sha256 } })
 }
 
 /// The digest of a file of any size.
-pub(super) fn digest(path: &Path) -> Result<InputFile, String> {
+pub(super) fn digest(path: &Path) -> Result<FileDigest, String> {
     let failed = |error| access_message(path, &error);
     let mut file = open(path).map_err(|error| match error {
         Unreadable::Access(message) => message,
@@ -76,7 +76,7 @@ pub(super) fn digest(path: &Path) -> Result<InputFile, String> {
         }
         sha.update(&buffer[..count]);
     }
-    Ok(InputFile { path: path.to_path_buf(), sha256: hex(&sha.finalize()) })
+    Ok(FileDigest { path: path.display().to_string(), sha256: hexadecimal(&sha.finalize()) })
 }
 
 fn open(path: &Path) -> Result<File, Unreadable> {
@@ -94,15 +94,6 @@ fn access_message(path: &Path, error: &std::io::Error) -> String {
         std::io::ErrorKind::PermissionDenied => format!("{path} may not be read; change its permissions"),
         _ => format!("{path} cannot be read: {error}"),
     }
-}
-
-fn hex(bytes: &[u8]) -> String {
-    use std::fmt::Write;
-    bytes.iter().fold(String::new(), |mut text, byte| {
-        // Writing to a string does not fail.
-        let _ = write!(text, "{byte:02x}");
-        text
-    })
 }
 
 /// What was found in one file so far. Everything is collected, so that the user hears of all problems at once.

@@ -2,7 +2,7 @@
 
 use std::path::Path;
 
-use super::InputFile;
+use super::FileDigest;
 use super::domain::{ANY, Domain, NOT_NEGATIVE};
 use super::source::{InputText, Unreadable, read_text};
 use crate::problem::Problem;
@@ -18,7 +18,7 @@ const COLUMNS: [(&str, &Domain); 5] = [
 ];
 
 /// The cells of a spectrum file, its digest, and every problem of its lines.
-pub(super) fn read(path: &Path) -> Result<(Vec<SpectrumCell>, InputFile, Vec<Problem>), Unreadable> {
+pub(super) fn read(path: &Path) -> Result<(Vec<SpectrumCell>, FileDigest, Vec<Problem>), Unreadable> {
     let InputText { text, input } = read_text(path)?;
     let mut problems = Vec::new();
     let cells = cells(path, &text, &mut problems);

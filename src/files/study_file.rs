@@ -6,7 +6,7 @@ use super::domain::INSIDE_UNIT;
 use super::reader::{Item, Section};
 use super::resonance_table::{self, OtherFiles, file_name};
 use super::source::{InputText, Sheet, Unreadable, read_text};
-use super::{InputFile, LoadedStudy, channel_tables, detector_file, study_checks};
+use super::{FileDigest, LoadedStudy, channel_tables, detector_file, study_checks};
 use crate::detector::Detector;
 use crate::problem::{Problem, Problems};
 use crate::process::{EventSource, Study};
@@ -51,7 +51,7 @@ struct Files {
 
 #[derive(Default)]
 struct FileOfStudy {
-    input: Option<InputFile>,
+    input: Option<FileDigest>,
     problems: Vec<Problem>,
     warnings: Vec<Problem>,
 }
