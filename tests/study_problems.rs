@@ -239,3 +239,20 @@ fn files_that_cannot_be_read() {
     let keys: Vec<_> = pair.problems().into_iter().filter_map(|problem| problem.key).collect();
     assert_eq!(keys, ["name", "detector", "resonance", "channel"]);
 }
+
+#[test]
+fn a_file_cut_anywhere_is_no_panic() {
+    let pair = Pair::new(STUDY, DETECTOR);
+    let mut refused = 0;
+    for (name, text) in [("study.toml", STUDY), ("detector.toml", DETECTOR), ("spectrum.csv", SPECTRUM)] {
+        for end in (0..text.len()).step_by(3) {
+            std::fs::write(pair.path(name), &text[..end]).unwrap();
+            if let Err(problems) = pair.load() {
+                assert!(!problems.0.is_empty() && !problems.to_string().is_empty());
+                refused += 1;
+            }
+        }
+        std::fs::write(pair.path(name), text).unwrap();
+    }
+    assert!(refused > 500, "{refused}");
+}
