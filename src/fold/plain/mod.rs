@@ -68,14 +68,6 @@ pub enum PlainError {
         /// Sum of the masses of the legs in GeV.
         legs_gev: f64,
     },
-    /// The natural shape times the fall of production has no finite integral.
-    #[error("the natural shape times (m/M)^-{falloff_power} has no finite integral above {threshold_gev} GeV")]
-    NotNormalisable {
-        /// The power.
-        falloff_power: f64,
-        /// Sum of the masses of the legs in GeV.
-        threshold_gev: f64,
-    },
     /// A table of production cells without any weight.
     #[error("the production table has no cell of positive weight")]
     EmptyTable,

@@ -63,8 +63,7 @@ impl NaturalMass {
     /// The sampler of a resonance of pole mass and width above a threshold; a width of 0 always gives the pole mass.
     ///
     /// # Errors
-    /// When the pole is below the threshold without a width, or the density has no finite integral: a power of 1
-    /// or more (3 or more for the running width) without a threshold, or a negative one.
+    /// When the pole is below the threshold without a width, or the threshold above all masses that are produced.
     pub fn new(
         shape: Natural,
         pole_gev: f64,
@@ -79,17 +78,15 @@ impl NaturalMass {
                 Err(PlainError::BelowThreshold { mass_gev: pole_gev, legs_gev: threshold_gev })
             };
         }
-        let power_at_zero = match shape {
-            Natural::BreitWigner | Natural::Relativistic => -falloff_power,
-            Natural::RunningWidth => 2.0 - falloff_power,
-        };
-        if falloff_power < 0.0 || (threshold_gev == 0.0 && power_at_zero <= -1.0) {
-            return Err(PlainError::NotNormalisable { falloff_power, threshold_gev });
+        // With a falloff, masses outside M/2 to 2M are not produced.
+        let (floor, ceiling) = if falloff_power == 0.0 { (0.0, f64::INFINITY) } else { (0.5, 2.0) };
+        if threshold_gev >= ceiling * pole_gev {
+            return Err(PlainError::BelowThreshold { mass_gev: pole_gev, legs_gev: threshold_gev });
         }
 
         let width = width_gev / pole_gev;
         let density = |ratio: f64| density_in_units_of_pole(shape, width, ratio) * libm::pow(ratio, -falloff_power);
-        let least = (threshold_gev / pole_gev).max(LEAST_RATIO);
+        let least = (threshold_gev / pole_gev).max(LEAST_RATIO).max(floor);
         let mut cells = Vec::new();
         let mut cumulative = 0.0;
         let mut add = |variable: Variable, low: f64, high: f64| {
@@ -106,7 +103,7 @@ impl NaturalMass {
             let edge = |i: u32| from + (to - from) * f64::from(i) / f64::from(RATIO_CELLS);
             (0..RATIO_CELLS).for_each(|i| add(Variable::LogRatio, edge(i), edge(i + 1)));
         }
-        angle_edges(width, least.max(LOW_END)).windows(2).for_each(|pair| add(Variable::Angle, pair[0], pair[1]));
+        angle_edges(width, least.max(LOW_END), ceiling).windows(2).for_each(|pair| add(Variable::Angle, pair[0], pair[1]));
         cells.iter_mut().for_each(|cell| cell.cumulative /= cumulative);
         Ok(NaturalMass { pole_gev, width_gev, cells })
     }
@@ -155,17 +152,18 @@ fn density_in_units_of_pole(shape: Natural, width: f64, ratio: f64) -> f64 {
     }
 }
 
-/// Edges of the cells of angle from a mass ratio up to infinity.
-fn angle_edges(width: f64, from: f64) -> Vec<f64> {
+/// Edges of the cells of angle between two mass ratios, the upper one perhaps infinite.
+fn angle_edges(width: f64, from: f64, to: f64) -> Vec<f64> {
     let angle = |distance: f64| libm::atan(2.0 * distance / width);
     let first = angle(from - 1.0);
+    let last = if to.is_finite() { angle(to - 1.0) } else { FRAC_PI_2 };
     let mut edges: Vec<f64> =
-        (0..=ANGLE_CELLS).map(|i| first + (FRAC_PI_2 - first) * f64::from(i) / f64::from(ANGLE_CELLS)).collect();
+        (0..=ANGLE_CELLS).map(|i| first + (last - first) * f64::from(i) / f64::from(ANGLE_CELLS)).collect();
     for (sign, farthest) in [(-1.0, 1.0 - LOW_END), (1.0, 100.0)] {
         let step = libm::log(farthest / width) / f64::from(DISTANCE_CELLS);
         edges.extend((0..=DISTANCE_CELLS).map(|i| angle(sign * width * libm::exp(step * f64::from(i)))));
     }
-    edges.retain(|edge| (first..=FRAC_PI_2).contains(edge));
+    edges.retain(|edge| (first..=last).contains(edge));
     edges.sort_by(f64::total_cmp);
     edges.dedup();
     edges
