@@ -19,11 +19,16 @@ mod error;
 mod gauss_exp;
 mod gaussian;
 mod half;
+mod pole_pair;
+mod relativistic;
 mod resolution;
+mod running_width;
 
 pub use breit_wigner::BreitWigner;
 pub use error::{Domain, Parameter, ShapeError};
+pub use relativistic::Relativistic;
 pub use resolution::Resolution;
+pub use running_width::RunningWidth;
 
 use std::fmt;
 

@@ -6,7 +6,10 @@
 //! [`wide!`](crate::wide), it is compiled twice, for the baseline processor and for AVX2, and the version is chosen at
 //! run time. No kernel uses a fused multiply-add, so both versions round alike and give the same bytes.
 
+pub mod erfc;
+pub mod faddeeva;
 pub mod kernel;
+pub mod root;
 pub mod sobol;
 #[macro_use]
 mod dispatch;
