@@ -245,3 +245,54 @@ pub(crate) fn upper_normal_quantile(q: f64) -> f64 {
     let step = (0.5 * libm::erfc(z * FRAC_1_SQRT_2) - q) / density;
     z + step / (1.0 - 0.5 * z * step)
 }
+
+/// The constants of one side for the vector kernels; any tail fits the one formula of [`ln_raw`].
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(crate) struct SideKernel {
+    inverse_sigma: f64,
+    join: f64,
+    constant: f64,
+    power: f64,
+    ratio: f64,
+    slope: f64,
+}
+
+impl SideKernel {
+    pub(crate) fn new(sigma: f64, tail: Tail) -> Self {
+        let flat = SideKernel {
+            inverse_sigma: 1.0 / sigma,
+            join: f64::INFINITY,
+            constant: 0.0,
+            power: 0.0,
+            ratio: 0.0,
+            slope: 0.0,
+        };
+        match tail {
+            Tail::None => flat,
+            Tail::Power { alpha, n } => {
+                SideKernel { join: alpha, constant: -0.5 * alpha * alpha, power: n, ratio: alpha / n, ..flat }
+            }
+            Tail::Exponential { k } => SideKernel { join: k, constant: 0.5 * k * k, slope: k, ..flat },
+        }
+    }
+}
+
+/// Logarithm of the raw density at the distance `w` from the peak (GeV); `POWER` if either side has a power tail.
+#[inline(always)]
+pub(crate) fn ln_raw<const POWER: bool>(low: &SideKernel, high: &SideKernel, w: f64) -> f64 {
+    let below = w < 0.0;
+    let t = w.abs() * if below { low.inverse_sigma } else { high.inverse_sigma };
+    let join = if below { low.join } else { high.join };
+    let constant = if below { low.constant } else { high.constant };
+    let slope = if below { low.slope } else { high.slope };
+    let mut tail = constant - slope * t;
+    if POWER {
+        let ratio = if below { low.ratio } else { high.ratio };
+        let power = if below { low.power } else { high.power };
+        // Inside the core the excess would be negative; 1 keeps the logarithm defined there.
+        let excess = t - join;
+        let excess = if excess > 0.0 { excess } else { 0.0 };
+        tail -= power * crate::numerics::kernel::ln(1.0 + ratio * excess);
+    }
+    if t <= join { -0.5 * t * t } else { tail }
+}

@@ -13,22 +13,32 @@
 //! * Slices of different lengths are processed up to the shorter one.
 
 mod breit_wigner;
+mod convolution;
 mod crystal_ball;
 mod double_crystal_ball;
 mod error;
 mod gauss_exp;
 mod gaussian;
 mod half;
+mod line_shape;
+mod mixture;
+mod natural;
 mod pole_pair;
 mod relativistic;
 mod resolution;
 mod running_width;
+mod true_mass;
+mod voigt;
 
 pub use breit_wigner::BreitWigner;
 pub use error::{Domain, Parameter, ShapeError};
+pub use line_shape::{LineShape, Scaling};
+pub use mixture::Mixture;
+pub use natural::Natural;
 pub use relativistic::Relativistic;
 pub use resolution::Resolution;
 pub use running_width::RunningWidth;
+pub use true_mass::FALLOFF_FROM;
 
 use std::fmt;
 

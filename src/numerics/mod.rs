@@ -9,6 +9,7 @@
 pub mod erfc;
 pub mod faddeeva;
 pub mod kernel;
+pub mod quadrature;
 pub mod root;
 pub mod sobol;
 #[macro_use]
