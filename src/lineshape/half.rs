@@ -249,12 +249,12 @@ pub(crate) fn upper_normal_quantile(q: f64) -> f64 {
 /// The constants of one side for the vector kernels; any tail fits the one formula of [`ln_raw`].
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub(crate) struct SideKernel {
-    inverse_sigma: f64,
-    join: f64,
-    constant: f64,
-    power: f64,
-    ratio: f64,
-    slope: f64,
+    pub(super) inverse_sigma: f64,
+    pub(super) join: f64,
+    pub(super) constant: f64,
+    pub(super) power: f64,
+    pub(super) ratio: f64,
+    pub(super) slope: f64,
 }
 
 impl SideKernel {

@@ -2,6 +2,7 @@
 
 use super::convolution::{Convolution, Gradient};
 use super::error::{FALLOFF, check_falloff_power, check_positive_mass};
+use super::grid::Grid;
 use super::half::Tail;
 use super::true_mass::{FALLOFF_FROM, TrueMass};
 use super::{Domain, Mixture, Natural, Parameter, Resolution, Shape, ShapeError, voigt};
@@ -182,6 +183,31 @@ impl LineShape {
             }
             _ => self.convolution(truth, component).pdf_gradient(x),
         }
+    }
+
+    /// Centre and sigma where the whole shape is one Voigt profile.
+    fn voigt(&self) -> Option<(f64, f64)> {
+        let [component] = self.resolution.as_ref()?.components() else { return None };
+        let sigma = self.closed_sigma(component)?;
+        self.natural.poles().is_none().then(|| (self.natural.mass() + component.bias(), sigma))
+    }
+
+    /// Points at which the density bends most: where the grid begins with a panel's end. `None` for closed forms that
+    /// need no grid.
+    pub(super) fn grid_breaks(&self) -> Option<Vec<f64>> {
+        let (Path::Convolved(_), Some(mixture)) = (&self.path, &self.resolution) else { return None };
+        let centre = self.natural.shape()?.peak_guess();
+        let mut list = vec![];
+        for component in mixture.components() {
+            let (low, high) = component.sigmas();
+            list.push(centre + component.bias());
+            for (join, step) in [(component.low.join(), -low), (component.high.join(), high)] {
+                if join < 39.0 {
+                    list.push(centre + component.bias() + step * join);
+                }
+            }
+        }
+        Some(list)
     }
 
     /// Lays a gradient per component out in the order of the parameters; returns the value.
@@ -369,6 +395,77 @@ impl Shape for LineShape {
             Path::Natural => self.natural.shape().map_or(f64::NAN, |shape| shape.upper_quantile(q)),
             Path::Convolved(_) if q > 0.0 && q < 1.0 => self.search(q, true),
             Path::Convolved(_) => self.quantile(1.0 - q),
+        }
+    }
+
+    fn pdf_slice(&self, m: &[f64], out: &mut [f64]) {
+        match &self.path {
+            Path::Shifted(mixture) => mixture.pdf_slice(m, out),
+            Path::Natural => {
+                if let Some(shape) = self.natural.shape() {
+                    shape.pdf_slice(m, out);
+                }
+            }
+            Path::Convolved(_) => {
+                if let Some((centre, sigma)) = self.voigt() {
+                    voigt::voigt_slice(m, out, centre, sigma, 0.5 * self.natural.width());
+                } else if let Some(grid) = Grid::of(self, m, false) {
+                    grid.value(m, out);
+                } else {
+                    out.iter_mut().zip(m).for_each(|(value, &m)| *value = self.pdf(m));
+                }
+            }
+        }
+    }
+
+    fn ln_pdf_slice(&self, m: &[f64], out: &mut [f64]) {
+        match &self.path {
+            Path::Shifted(mixture) => mixture.ln_pdf_slice(m, out),
+            Path::Natural => {
+                if let Some(shape) = self.natural.shape() {
+                    shape.ln_pdf_slice(m, out);
+                }
+            }
+            Path::Convolved(_) => {
+                self.pdf_slice(m, out);
+                crate::numerics::kernel::ln_in_place(out);
+                for (value, &m) in out.iter_mut().zip(m) {
+                    // Where the density is no normal number.
+                    if !(*value > -700.0) {
+                        *value = self.ln_pdf(m);
+                    }
+                }
+            }
+        }
+    }
+
+    fn ln_pdf_gradient_slice(&self, m: &[f64], ln_pdf: &mut [f64], gradient: &mut [f64]) {
+        match (&self.path, Grid::of(self, m, true)) {
+            (Path::Shifted(mixture), _) => {
+                let points = m.len();
+                let Some((mass, rest)) = gradient.split_at_mut_checked(points) else { return };
+                mixture.ln_pdf_gradient_slice(m, ln_pdf, rest);
+                mass.fill(0.0);
+                let mut offset = 0;
+                for component in mixture.components() {
+                    if let Some(bias) = rest.get(offset * points..(offset + 1) * points) {
+                        mass.iter_mut().zip(bias).for_each(|(m, b)| *m += b);
+                    }
+                    offset += component.parameter_count();
+                }
+            }
+            (Path::Convolved(_), Some(grid)) => grid.ln_value_and_gradient(m, ln_pdf, gradient),
+            _ => {
+                let mut one = vec![0.0; self.parameter_count()];
+                for (i, (&m_i, slot)) in m.iter().zip(ln_pdf.iter_mut()).enumerate() {
+                    *slot = self.ln_pdf_gradient(m_i, &mut one);
+                    for (k, &g) in one.iter().enumerate() {
+                        if let Some(place) = gradient.get_mut(k * m.len() + i) {
+                            *place = g;
+                        }
+                    }
+                }
+            }
         }
     }
 

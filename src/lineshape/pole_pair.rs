@@ -24,6 +24,11 @@ pub(crate) struct PolePair {
     pub(crate) width: f64,
     /// Mass and width of the fixed-width shape with the same poles.
     fixed: (f64, f64),
+    /// M - M_f, M_f - Re a and |a|² - M_f², each without cancellation: near a narrow peak `m - M` is far more precise
+    /// than `m - M_f`.
+    offset: f64,
+    lag: f64,
+    excess: f64,
     /// Re a, Im a.
     re: f64,
     im: f64,
@@ -35,14 +40,20 @@ impl PolePair {
     /// From checked parameters.
     pub(crate) fn new(numerator: Numerator, mass: f64, width: f64) -> Self {
         // The exact map from running to fixed width, M_f = M/sqrt(1 + Γ²/M²) and likewise Γ_f.
-        let shrink = match numerator {
-            Numerator::Constant => 1.0,
-            Numerator::MassSquared => 1.0 / libm::hypot(1.0, width / mass),
+        let ratio = width / mass;
+        let (shrink, offset) = match numerator {
+            Numerator::Constant => (1.0, 0.0),
+            Numerator::MassSquared => {
+                let stretch = libm::hypot(1.0, ratio);
+                (1.0 / stretch, mass * ratio / stretch * (ratio / (1.0 + stretch)))
+            }
         };
         let (m, g) = (mass * shrink, width * shrink);
         let size = m * libm::hypot(m, g);
         let re = (0.5 * (size + m * m)).sqrt();
-        PolePair { numerator, mass, width, fixed: (m, g), re, im: 0.5 * m * g / re, size }
+        let excess = m * g * (g / (libm::hypot(m, g) + m));
+        let lag = -0.5 * excess / (re + m);
+        PolePair { numerator, mass, width, fixed: (m, g), offset, lag, excess, re, im: 0.5 * m * g / re, size }
     }
 
     /// The pole a.
@@ -78,7 +89,7 @@ impl PolePair {
             return 0.0;
         }
         let (strength, centre, spread) = self.constants();
-        let d = (m - centre) * (m + centre);
+        let d = self.from_fixed(m) * (m + centre);
         match self.numerator {
             Numerator::Constant => strength / (d * d + spread),
             Numerator::MassSquared => {
@@ -87,6 +98,11 @@ impl PolePair {
                 strength / (d * d + spread / (m * m))
             }
         }
+    }
+
+    /// m - M_f.
+    fn from_fixed(&self, m: f64) -> f64 {
+        (m - self.mass) + self.offset
     }
 
     /// Strength, M_f and M_f² Γ_f² of `strength [m²]/((m² - M_f²)² + M_f² Γ_f²)`.
@@ -102,8 +118,8 @@ impl PolePair {
         let (mass, g) = self.fixed;
         // ln((m² - M²)² + M²Γ²) as 2 ln hypot, each factor divided by m for the running width.
         let (d, s) = match self.numerator {
-            Numerator::Constant => ((m - mass) * (m + mass), mass * g),
-            Numerator::MassSquared => ((m - mass) * ((m + mass) / m), mass * g / m),
+            Numerator::Constant => (self.from_fixed(m) * (m + mass), mass * g),
+            Numerator::MassSquared => (self.from_fixed(m) * ((m + mass) / m), mass * g / m),
         };
         libm::log(self.strength()) - 2.0 * libm::log(libm::hypot(d, s))
     }
@@ -111,8 +127,11 @@ impl PolePair {
     /// `atanh(m/a)` for m below |a|, `atanh(a/m)` above: the two differ by iπ/2.
     fn atanh(&self, m: f64, inverse: bool) -> Complex64 {
         let (a, b) = (self.re, self.im);
-        let re = 0.25 * libm::log1p(4.0 * a * m / ((a - m) * (a - m) + b * b));
-        let difference = (a - m) * (a + m) + b * b;
+        let from_fixed = self.from_fixed(m);
+        let from_pole = from_fixed + self.lag;
+        let re = 0.25 * libm::log1p(4.0 * a * m / (from_pole * from_pole + b * b));
+        // |a|² - m²
+        let difference = self.excess - from_fixed * (m + self.fixed.0);
         let im = if inverse {
             0.5 * libm::atan2(2.0 * b * m, -difference)
         } else {
@@ -254,7 +273,10 @@ impl PolePair {
         let above = m > self.size.sqrt();
         let x = self.atanh(m, above);
         // d atanh(m/a)/da = -m/(a² - m²); d atanh(a/m)/da is the opposite of -that: m/(m² - a²), the same function.
-        let x_a = Complex64::new(m, 0.0) / (Complex64::new(m * m, 0.0) - a * a);
+        // m² - a² = (m - M_f)(m + M_f) - i M_f Γ_f.
+        let (fixed_mass, fixed_width) = self.fixed;
+        let square = Complex64::new(self.from_fixed(m) * (m + fixed_mass), -fixed_mass * fixed_width);
+        let x_a = Complex64::new(m, 0.0) / square;
         let (f, f_a) = match (self.numerator, above) {
             (Numerator::Constant, false) => (-x / a, -x_a / a + x / (a * a)),
             (Numerator::Constant, true) => (x / a, x_a / a - x / (a * a)),

@@ -4,7 +4,8 @@
 //! `norm = sigma_low area_low + sigma_high area_high`. Each shape of this family has its own file with its definition and
 //! its source; this file holds what they share.
 
-use super::half::Tail;
+use super::half::{SideKernel, Tail};
+use super::resolution_slices as slices;
 use super::{Domain, Parameter, Shape, ShapeError};
 
 /// A resolution shape; see the constructors [`Resolution::gaussian`], [`Resolution::crystal_ball`],
@@ -217,6 +218,66 @@ impl Shape for Resolution {
         self.bias
     }
 
+    fn pdf_slice(&self, m: &[f64], out: &mut [f64]) {
+        let (low, high) = self.kernels();
+        if self.has_power_tail() {
+            slices::pdf_power(m, out, self.bias, &low, &high, 1.0 / self.norm);
+        } else {
+            slices::pdf_plain(m, out, self.bias, &low, &high, 1.0 / self.norm);
+        }
+    }
+
+    fn ln_pdf_slice(&self, m: &[f64], out: &mut [f64]) {
+        let (low, high) = self.kernels();
+        let ln_norm = libm::log(self.norm);
+        if self.has_power_tail() {
+            slices::ln_pdf_power(m, out, self.bias, &low, &high, ln_norm);
+        } else {
+            slices::ln_pdf_plain(m, out, self.bias, &low, &high, ln_norm);
+        }
+    }
+
+    fn cdf_slice(&self, m: &[f64], out: &mut [f64]) {
+        self.probability_slice(m, out, true);
+    }
+
+    fn sf_slice(&self, m: &[f64], out: &mut [f64]) {
+        self.probability_slice(m, out, false);
+    }
+
+    fn ln_pdf_gradient_slice(&self, m: &[f64], ln_pdf: &mut [f64], gradient: &mut [f64]) {
+        let (low, high) = self.kernels();
+        let constants = slices::GradientConstants {
+            bias: self.bias,
+            ln_norm: libm::log(self.norm),
+            by_norm: self.ln_norm_gradient(),
+            low,
+            high,
+        };
+        let points = m.len();
+        let mut rows = [[0.0; slices::BLOCK]; MAX_PARAMETERS];
+        for (block, (m, ln_pdf)) in m.chunks(slices::BLOCK).zip(ln_pdf.chunks_mut(slices::BLOCK)).enumerate() {
+            if self.has_power_tail() {
+                slices::gradient_power(m, ln_pdf, &mut rows, &constants);
+            } else {
+                slices::gradient_plain(m, ln_pdf, &mut rows, &constants);
+            }
+            if self.one_sigma {
+                let (first, second) = rows.split_at_mut(2);
+                for (one, two) in first[1].iter_mut().zip(&second[0]) {
+                    *one += two;
+                }
+            }
+            let start = block * slices::BLOCK;
+            for (k, row) in self.layout().enumerate() {
+                let from = k * points + start;
+                if let Some(target) = gradient.get_mut(from..from + m.len()) {
+                    target.copy_from_slice(&rows[row][..m.len()]);
+                }
+            }
+        }
+    }
+
     fn mean(&self) -> Option<f64> {
         let shift = self.sigma_high * self.sigma_high * self.high.moments().0?
             - self.sigma_low * self.sigma_low * self.low.moments().0?;
@@ -268,6 +329,45 @@ impl Shape for Resolution {
 }
 
 impl Resolution {
+    fn kernels(&self) -> (SideKernel, SideKernel) {
+        (SideKernel::new(self.sigma_low, self.low), SideKernel::new(self.sigma_high, self.high))
+    }
+
+    fn has_power_tail(&self) -> bool {
+        [self.low, self.high].iter().any(|tail| matches!(tail, Tail::Power { .. }))
+    }
+
+    /// Which of the rows bias, sigma_low, sigma_high, low tail (2), high tail (2) are parameters.
+    fn layout(&self) -> impl Iterator<Item = usize> + use<> {
+        let (one, low, high) = (self.one_sigma, self.low.count(), self.high.count());
+        (0..MAX_PARAMETERS).filter(move |&row| match row {
+            0 | 1 => true,
+            2 => !one,
+            3 | 4 => row - 3 < low,
+            _ => row - 5 < high,
+        })
+    }
+
+    /// cdf or sf of a slice; the side away from the tail asked for is the complement of the other.
+    fn probability_slice(&self, m: &[f64], out: &mut [f64], from_below: bool) {
+        let share = self.sigma_low * self.low.area() / self.norm;
+        // Where one side holds nearly nothing its complement would lose digits.
+        if !(0.01..=0.99).contains(&share) {
+            for (value, &m) in out.iter_mut().zip(m) {
+                *value = if from_below { self.cdf(m) } else { self.sf(m) };
+            }
+            return;
+        }
+        let (low, high) = self.kernels();
+        let areas = |sigma: f64, tail: Tail| slices::SideArea::new(sigma / self.norm, tail);
+        let areas = (areas(self.sigma_low, self.low), areas(self.sigma_high, self.high));
+        if self.has_power_tail() {
+            slices::probability_power(m, out, self.bias, (&low, &high), (&areas.0, &areas.1), from_below);
+        } else {
+            slices::probability_plain(m, out, self.bias, (&low, &high), (&areas.0, &areas.1), from_below);
+        }
+    }
+
     /// The shape of -x.
     fn mirrored(&self) -> Self {
         Resolution {
