@@ -229,21 +229,43 @@ impl Convolution<'_> {
     fn complete(&self, x: f64, value: f64, slope: f64, degree: f64, parts: &[f64; COMPONENTS]) -> Gradient {
         let mut resolution = [0.0; super::resolution::MAX_PARAMETERS];
         resolution.copy_from_slice(&parts[RESOLUTION_AT..]);
-        let plain = !self.proportional && self.truth.cut.is_none() && self.truth.natural.poles().is_none();
-        let mass = if plain {
-            // A shift of the mass is a shift of the bias.
-            resolution[0]
-        } else {
-            let r = self.resolution;
-            let (sigma_low, sigma_high) = r.sigmas();
-            let mut scaled = x * slope + self.truth.natural.width() * parts[1] + r.bias() * resolution[0];
-            scaled += sigma_low * resolution[1];
-            if !r.one_sigma {
-                scaled += sigma_high * resolution[2];
-            }
-            (degree - scaled) / self.truth.natural.mass()
-        };
+        let mass = self.by_mass(x, slope, degree, parts[1], &resolution);
         Gradient { value, mass, width: parts[1], power: parts[2], resolution }
+    }
+
+    /// A gradient of the density of a constant resolution, with the derivative in the mass worked out.
+    pub(super) fn with_mass(
+        &self,
+        x: f64,
+        value: f64,
+        width: f64,
+        resolution: [f64; super::resolution::MAX_PARAMETERS],
+    ) -> Gradient {
+        let mass = self.by_mass(x, -resolution[0], -value, width, &resolution);
+        Gradient { value, mass, width, power: 0.0, resolution }
+    }
+
+    fn by_mass(
+        &self,
+        x: f64,
+        slope: f64,
+        degree: f64,
+        by_width: f64,
+        resolution: &[f64; super::resolution::MAX_PARAMETERS],
+    ) -> f64 {
+        let plain = !self.proportional && self.truth.cut.is_none() && self.truth.natural.poles().is_none();
+        if plain {
+            // A shift of the mass is a shift of the bias.
+            return resolution[0];
+        }
+        let r = self.resolution;
+        let (sigma_low, sigma_high) = r.sigmas();
+        let mut scaled = x * slope + self.truth.natural.width() * by_width + r.bias() * resolution[0];
+        scaled += sigma_low * resolution[1];
+        if !r.one_sigma {
+            scaled += sigma_high * resolution[2];
+        }
+        (degree - scaled) / self.truth.natural.mass()
     }
 }
 

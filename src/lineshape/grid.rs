@@ -5,7 +5,7 @@
 //! density met in it (or 1e-16 of the largest of all). What remains is below [`LineShape::GRID_ERROR`]; the tests compare
 //! with the reference path.
 
-use super::{LineShape, Shape};
+use super::LineShape;
 
 /// Coefficients per panel and component.
 const ORDER: usize = 16;
@@ -47,9 +47,14 @@ impl Grid {
             return None;
         }
         let components = if with_gradient { 1 + shape.parameter_count() } else { 1 };
+        let shared = shape.shared_nodes(low, high, with_gradient);
         Grid::build(low, high, &breaks, components, |x, out| {
             if let Some((value, gradient)) = out.split_first_mut() {
-                *value = if gradient.is_empty() { shape.pdf(x) } else { shape.pdf_gradient(x, gradient) };
+                *value = if gradient.is_empty() {
+                    shape.pdf_by(&shared, x)
+                } else {
+                    shape.pdf_gradient_by(&shared, x, gradient)
+                };
             }
         })
     }

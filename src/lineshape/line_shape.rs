@@ -4,6 +4,7 @@ use super::convolution::{Convolution, Gradient};
 use super::error::{FALLOFF, check_falloff_power, check_positive_mass};
 use super::grid::Grid;
 use super::half::Tail;
+use super::shared::SharedNodes;
 use super::true_mass::{FALLOFF_FROM, TrueMass};
 use super::{Domain, Mixture, Natural, Parameter, Resolution, Shape, ShapeError, voigt};
 
@@ -208,6 +209,46 @@ impl LineShape {
             }
         }
         Some(list)
+    }
+
+    /// Nodes that the points between `low` and `high` share, per component; `None` where it has a better way.
+    pub(super) fn shared_nodes(&self, low: f64, high: f64, with_gradient: bool) -> Vec<Option<SharedNodes>> {
+        let (Path::Convolved(truth), Some(mixture)) = (&self.path, &self.resolution) else { return vec![] };
+        let one = |component: &Resolution| {
+            let closed = self.closed_sigma(component).is_some() && self.natural.poles().is_none();
+            if closed {
+                return None;
+            }
+            SharedNodes::new(&self.convolution(truth, component), low, high, with_gradient)
+        };
+        mixture.components().iter().map(one).collect()
+    }
+
+    /// Density by shared nodes where there are some.
+    pub(super) fn pdf_by(&self, shared: &[Option<SharedNodes>], x: f64) -> f64 {
+        let (Path::Convolved(truth), Some(mixture)) = (&self.path, &self.resolution) else { return self.pdf(x) };
+        let parts = mixture.components().iter().zip(mixture.fractions()).zip(shared);
+        parts
+            .map(|((component, &fraction), nodes)| {
+                fraction
+                    * match nodes {
+                        Some(nodes) => nodes.pdf(truth, x),
+                        None => self.component_pdf(truth, component, x),
+                    }
+            })
+            .sum()
+    }
+
+    /// Density and its gradient by shared nodes where there are some.
+    pub(super) fn pdf_gradient_by(&self, shared: &[Option<SharedNodes>], x: f64, gradient: &mut [f64]) -> f64 {
+        let (Path::Convolved(truth), Some(_)) = (&self.path, &self.resolution) else {
+            return self.pdf_gradient(x, gradient);
+        };
+        let mut shared = shared.iter();
+        self.lay_out(gradient, |component| match shared.next() {
+            Some(Some(nodes)) => nodes.gradient(&self.convolution(truth, component), x),
+            _ => self.component_gradient(truth, component, x),
+        })
     }
 
     /// Lays a gradient per component out in the order of the parameters; returns the value.

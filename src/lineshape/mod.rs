@@ -29,8 +29,10 @@ mod relativistic;
 mod resolution;
 mod resolution_slices;
 mod running_width;
+mod shared;
 mod true_mass;
 mod voigt;
+pub mod widths;
 
 pub use breit_wigner::BreitWigner;
 pub use error::{Domain, Parameter, ShapeError};

@@ -23,13 +23,99 @@ macro_rules! both {
     };
 }
 
-both!(pdf_power, pdf_plain, pdf, (m: &[f64], out: &mut [f64], bias: f64, low: &SideKernel, high: &SideKernel, factor: f64));
+crate::wide! {
+    pub(super) fn pdf_plain(m: &[f64], out: &mut [f64], bias: f64, low: &SideKernel, high: &SideKernel, factor: f64) {
+        let (low, high) = (*low, *high);
+        for (value, &m) in out.iter_mut().zip(m) {
+            *value = factor * exp(ln_raw::<false>(&low, &high, m - bias));
+        }
+    }
+}
 
+crate::wide! {
+    /// Densities with a power tail. Each block is sorted into low tail, core and high tail, so that no point pays for
+    /// what it does not need.
+    pub(super) fn pdf_power(m: &[f64], out: &mut [f64], bias: f64, low: &SideKernel, high: &SideKernel, factor: f64) {
+        let (low, high) = (*low, *high);
+        for (m, out) in m.chunks(BLOCK).zip(out.chunks_mut(BLOCK)) {
+            let count = m.len().min(out.len());
+            let mut t = [0.0; BLOCK];
+            for (t, &m) in t.iter_mut().zip(&m[..count]) {
+                let w = m - bias;
+                *t = w * if w < 0.0 { low.inverse_sigma } else { high.inverse_sigma };
+            }
+            // NaN counts as core and stays NaN there.
+            let (mut in_low, mut in_high) = (0_usize, 0_usize);
+            for &t in &t[..count] {
+                in_low += usize::from(t < -low.join);
+                in_high += usize::from(t > high.join);
+            }
+            let (core_start, high_start) = (in_low, count - in_high);
+            let (mut a, mut b, mut c) = (0, core_start, high_start);
+            let mut sorted = [0.0; BLOCK];
+            let mut place = [0_u8; BLOCK];
+            for (i, &t) in t.iter().enumerate().take(count) {
+                let (is_low, is_high) = (t < -low.join, t > high.join);
+                let slot = if is_low { a } else if is_high { c } else { b };
+                a += usize::from(is_low);
+                c += usize::from(is_high);
+                b += usize::from(!(is_low | is_high));
+                sorted[slot & (BLOCK - 1)] = t.abs();
+                place[slot & (BLOCK - 1)] = i as u8;
+            }
+            tail_densities(&mut sorted[..core_start], &low);
+            tail_densities(&mut sorted[high_start..count], &high);
+            for t in &mut sorted[core_start..high_start] {
+                *t = exp(-0.5 * *t * *t);
+            }
+            for (&place, &value) in place.iter().zip(&sorted).take(count) {
+                out[usize::from(place) & (BLOCK - 1)] = factor * value;
+            }
+        }
+    }
+}
+
+/// Replaces distances beyond the join by raw densities.
 #[inline(always)]
-fn pdf<const POWER: bool>(m: &[f64], out: &mut [f64], bias: f64, low: &SideKernel, high: &SideKernel, factor: f64) {
-    let (low, high) = (*low, *high);
-    for (value, &m) in out.iter_mut().zip(m) {
-        *value = factor * exp(ln_raw::<POWER>(&low, &high, m - bias));
+fn tail_densities(t: &mut [f64], side: &SideKernel) {
+    if t.is_empty() {
+        return;
+    }
+    let (front, power) = (libm::exp(side.constant), side.power);
+    if power > 0.0 && power <= 64.0 && power == power.trunc() && front > 1e-200 {
+        // An integer power needs no logarithm: squares and products of 1/u.
+        for t in t.iter_mut() {
+            *t = 1.0 / (1.0 + side.ratio * (*t - side.join));
+        }
+        let mut bits = power as u32;
+        let mut product = [0.0; BLOCK];
+        let product = &mut product[..t.len()];
+        product.fill(front);
+        while bits > 0 {
+            if bits & 1 == 1 {
+                for (product, t) in product.iter_mut().zip(t.iter()) {
+                    *product *= *t;
+                }
+            }
+            bits >>= 1;
+            if bits > 0 {
+                for t in t.iter_mut() {
+                    *t *= *t;
+                }
+            }
+        }
+        t.copy_from_slice(product);
+        return;
+    }
+    for t in t.iter_mut() {
+        let mut exponent = side.constant - side.slope * *t;
+        if power > 0.0 {
+            exponent -= power * ln(1.0 + side.ratio * (*t - side.join));
+        }
+        *t = exponent;
+    }
+    for t in t.iter_mut() {
+        *t = exp(*t);
     }
 }
 

@@ -144,6 +144,11 @@ impl TrueMass {
         }
     }
 
+    /// Density at t, continued as an even function below 0 for the shapes with poles.
+    pub(super) fn pdf_everywhere(&self, t: f64) -> f64 {
+        if self.natural.poles().is_some() { self.pdf_at(t.abs()) } else { self.pdf_at(t) }
+    }
+
     /// Derivative of ln density in t.
     pub(super) fn ln_slope(&self, t: f64) -> f64 {
         let natural = match self.natural.poles() {
