@@ -1,7 +1,9 @@
 //! The detector as it was calibrated or proposed: what each region resolves, and how well that is known.
 
+mod interim;
 mod object;
 
+pub use interim::*;
 pub use object::Object;
 
 /// A half-open range of absolute pseudorapidity, `low <= |eta| < high`.

@@ -1,1 +1,3 @@
 //! Figures.
+
+pub mod curve;

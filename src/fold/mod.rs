@@ -1,5 +1,17 @@
 //! The folding engine, and the plain reference path.
 
+mod aim;
+mod engine;
+mod estimate;
+mod last_leg;
+mod limits;
+mod measure;
+mod plan;
+mod resolve;
+mod response;
+mod spread;
+
+use crate::process::Study;
 use crate::template::LabelledTemplate;
 
 /// How a fold of one channel at one mass point went.
@@ -15,8 +27,10 @@ pub struct FoldRecord {
     pub precision_reached: f64,
     /// Whether the study's `precision` was reached.
     pub reached: bool,
-    /// CPU time in seconds.
+    /// CPU time of all threads in seconds.
     pub cpu_seconds: f64,
+    /// Elapsed time in seconds.
+    pub wall_seconds: f64,
     /// Events of the list that were used; `None` for generated events.
     pub events_used: Option<u64>,
     /// Effective number of events of the list, (sum w)²/sum w².
@@ -32,4 +46,54 @@ pub struct Folded {
     pub templates: Vec<LabelledTemplate>,
     /// How it went.
     pub record: FoldRecord,
+}
+
+/// How far a fold is, told from time to time.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Progress {
+    /// Points done since the last call.
+    pub points: u64,
+    /// The most points that the fold may take.
+    pub of_at_most: u64,
+}
+
+/// Why a fold could not be made.
+#[derive(Clone, Debug, PartialEq, thiserror::Error)]
+pub enum FoldError {
+    /// The study has no such channel.
+    #[error("the study has no channel number {0}")]
+    NoSuchChannel(usize),
+    /// The study reads its events from a file.
+    #[error("the study reads its events from a file: there is nothing to generate")]
+    NotGenerated,
+    /// The mass point cannot decay to the legs.
+    #[error("a resonance of {mass_gev} GeV cannot decay to the legs of this channel")]
+    BelowThreshold {
+        /// The mass point in GeV.
+        mass_gev: f64,
+    },
+    /// The channel takes more random numbers per event than the sequence has.
+    #[error("the channel needs {found} numbers per event, and {allowed} are available")]
+    TooManyDimensions {
+        /// Numbers per event that the channel needs.
+        found: usize,
+        /// Numbers per event that the sequence has.
+        allowed: usize,
+    },
+}
+
+/// Folds one channel of a study at one mass point, on the current rayon thread pool.
+///
+/// The result does not depend on the number of threads. Points are doubled until the study's precision is met or
+/// `max_points` are used; the record says which.
+///
+/// # Errors
+/// See [`FoldError`].
+pub fn fold_channel(
+    study: &Study,
+    channel: usize,
+    mass_gev: f64,
+    progress: &(dyn Fn(Progress) + Sync),
+) -> Result<Folded, FoldError> {
+    engine::fold_generated(study, channel, mass_gev, progress)
 }

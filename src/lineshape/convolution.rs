@@ -104,7 +104,7 @@ impl Convolution<'_> {
             list.push(start + 4.0);
             list.push(start + 45.0);
         }
-        list.sort_by(f64::total_cmp);
+        truth.cut_off(&mut list);
         list.dedup();
         if start.is_finite() {
             list[0] = start;

@@ -90,6 +90,9 @@ macro_rules! parameter_errors {
                 /// Number of fractions.
                 fractions: usize,
             },
+            /// A line without resolution.
+            #[error("a line with a perfect resolution has no density; give a width or a resolution")]
+            Perfect,
             /// The normalisation integral of a shape did not give a positive finite number.
             #[error("the shape cannot be normalised: its integral is {0}")]
             Normalisation(f64),

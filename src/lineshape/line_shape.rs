@@ -5,7 +5,7 @@ use super::error::{FALLOFF, check_falloff_power, check_positive_mass};
 use super::grid::Grid;
 use super::half::Tail;
 use super::shared::SharedNodes;
-use super::true_mass::{FALLOFF_FROM, TrueMass};
+use super::true_mass::{FALLOFF_RANGE, TrueMass};
 use super::{Domain, Mixture, Natural, Parameter, Resolution, Shape, ShapeError, voigt};
 
 /// How the resolution depends on the true mass.
@@ -60,7 +60,7 @@ impl LineShape {
 
     /// The same with a choice of scaling, and with production falling as `(t/M)^-power` across the natural width.
     ///
-    /// With a falloff the true mass starts at M/2. A falloff does nothing to a line and is then no parameter.
+    /// With a falloff the true mass lies between M/2 and 2M ([`FALLOFF_RANGE`]). A falloff does nothing to a line and is then no parameter.
     ///
     /// # Errors
     /// A power outside 0 to 100; a proportional resolution or a falloff with a mass that is not positive; a falloff that
@@ -78,14 +78,13 @@ impl LineShape {
             check_positive_mass(natural.mass())?;
         }
         let path = if let Natural::Line(mass) = natural {
-            let perfect = || Err(ShapeError::Normalisation(f64::INFINITY));
-            let Some(mixture) = &resolution else { return perfect() };
+            let Some(mixture) = &resolution else { return Err(ShapeError::Perfect) };
             Path::Shifted(mixture.shifted(mass)?)
         } else if resolution.is_none() && falloff.is_none() {
             Path::Natural
         } else {
             let cut = match falloff {
-                Some(_) => Some(FALLOFF_FROM),
+                Some(_) => Some(FALLOFF_RANGE.0),
                 // The Breit-Wigner reaches below 0, where a proportional resolution has no meaning.
                 None => (scales && natural.poles().is_none()).then_some(0.0),
             };
@@ -423,6 +422,7 @@ impl Shape for LineShape {
             Path::Convolved(truth) => match p {
                 0.0 if self.resolution.is_none() || self.proportional() => truth.lowest(),
                 0.0 => f64::NEG_INFINITY,
+                1.0 if self.resolution.is_none() => truth.highest(),
                 1.0 => f64::INFINITY,
                 _ if p > 0.0 && p < 1.0 => self.search(p, false),
                 _ => f64::NAN,

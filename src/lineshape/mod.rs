@@ -42,7 +42,7 @@ pub use natural::Natural;
 pub use relativistic::Relativistic;
 pub use resolution::Resolution;
 pub use running_width::RunningWidth;
-pub use true_mass::FALLOFF_FROM;
+pub use true_mass::FALLOFF_RANGE;
 
 use std::fmt;
 

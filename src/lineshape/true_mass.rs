@@ -4,9 +4,9 @@ use super::pole_pair::Numerator;
 use super::{Natural, ShapeError};
 use crate::numerics::quadrature;
 
-/// With a production falloff the true mass starts at this fraction of the nominal mass: the power would not be integrable
-/// at 0, and no resonance reaches so far.
-pub const FALLOFF_FROM: f64 = 0.5;
+/// With a production falloff the true mass lies in this range, in units of the nominal mass: a power law says nothing
+/// about production further away, and would not be integrable at 0.
+pub const FALLOFF_RANGE: (f64, f64) = (0.5, 2.0);
 
 /// `q(t) (t/M)^-power / Z` on `t > cut M` (or where the natural shape q lives).
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -42,7 +42,7 @@ impl TrueMass {
             breaks.extend([-3.0, 0.0, 3.0].iter().copied().filter(|&s| s > start));
             let end = breaks[breaks.len() - 1].max(truth.level(2.0 * centre.abs())) + 45.0;
             breaks.extend([end - 42.0, end - 30.0, end]);
-            breaks.sort_by(f64::total_cmp);
+            truth.cut_off(&mut breaks);
             let integral = quadrature::integrate::<3>(&breaks, 1e-12, |s, rows| {
                 for (i, &s) in s.iter().enumerate().take(quadrature::NODES) {
                     let (t, weight) = truth.at(s);
@@ -81,6 +81,22 @@ impl TrueMass {
     pub(super) fn start(&self) -> f64 {
         let lowest = self.lowest();
         if lowest.is_finite() { self.level(lowest - self.centre) } else { f64::NEG_INFINITY }
+    }
+
+    /// Upper end of the true mass in GeV.
+    pub(super) fn highest(&self) -> f64 {
+        if self.power.is_some() { FALLOFF_RANGE.1 * self.natural.mass() } else { f64::INFINITY }
+    }
+
+    /// Sorts limits of panels and ends them at the upper end.
+    pub(super) fn cut_off(&self, limits: &mut Vec<f64>) {
+        let highest = self.highest();
+        if highest.is_finite() {
+            let end = self.level(highest - self.centre);
+            limits.retain(|&s| s < end);
+            limits.push(end);
+        }
+        limits.sort_by(f64::total_cmp);
     }
 
     /// Mass t and density per ds.
@@ -137,7 +153,7 @@ impl TrueMass {
     pub(super) fn pdf_at(&self, t: f64) -> f64 {
         if t.is_nan() {
             t
-        } else if t <= self.lowest() {
+        } else if t <= self.lowest() || t > self.highest() {
             0.0
         } else {
             self.pdf(t, t - self.centre)
@@ -172,6 +188,7 @@ impl TrueMass {
         list.extend([low, high]);
         if above {
             list.extend([high - 42.0, high - 30.0].iter().filter(|&&s| s > low));
+            self.cut_off(&mut list);
         }
         list.sort_by(f64::total_cmp);
         list
@@ -179,8 +196,8 @@ impl TrueMass {
 
     /// Probability below t, or above; for shapes with a lower end.
     pub(super) fn integral(&self, t: f64, above: bool) -> f64 {
-        if t <= self.lowest() {
-            return f64::from(u8::from(above));
+        if t <= self.lowest() || t >= self.highest() {
+            return f64::from(u8::from(above == (t <= self.lowest())));
         }
         let integral = quadrature::integrate::<1>(&self.limits(t, above), 1e-12, |s, rows| {
             for (slot, &s) in rows[0].iter_mut().zip(s).take(quadrature::NODES) {
@@ -192,7 +209,7 @@ impl TrueMass {
 
     /// Derivatives of the probability below t in width and power.
     pub(super) fn integral_gradient(&self, t: f64) -> [f64; 2] {
-        if t <= self.lowest() {
+        if t <= self.lowest() || t >= self.highest() {
             return [0.0; 2];
         }
         let above = t > self.centre;
@@ -224,18 +241,26 @@ impl TrueMass {
         self.natural.shape()?.variance()
     }
 
-    /// The integral of t or t² where the density falls fast enough: as t^-(2 + power) (Breit-Wigner and running width) or
-    /// t^-(4 + power).
+    /// The integral of t or t² where the density falls fast enough, as t^-2 (Breit-Wigner and running width) or t^-4, or
+    /// ends.
     fn moment(&self, order: i32) -> Option<f64> {
         let fixed = self.natural.poles().is_some_and(|poles| poles.numerator == Numerator::Constant);
-        let fall = self.power.unwrap_or(0.0) + if fixed { 4.0 } else { 2.0 };
+        let fall = if self.power.is_some() {
+            f64::INFINITY
+        } else if fixed {
+            4.0
+        } else {
+            2.0
+        };
         if fall <= f64::from(order) + 1.0 {
             return None;
         }
         // The integrand falls as exp(-(fall - order - 1) s): reach far enough for a slow fall.
         let mut limits = self.limits(self.lowest(), true);
         let end = limits[limits.len() - 1];
-        limits.push(end + (40.0 / (fall - f64::from(order) - 1.0)).min(500.0));
+        if self.power.is_none() {
+            limits.push(end + (40.0 / (fall - f64::from(order) - 1.0)).min(500.0));
+        }
         let integral = quadrature::integrate::<1>(&limits, 1e-12, |s, rows| {
             for (slot, &s) in rows[0].iter_mut().zip(s).take(quadrature::NODES) {
                 let (t, weight) = self.at(s);
@@ -268,7 +293,7 @@ impl TrueMass {
         let lowest = self.lowest();
         loop {
             let t = super::draw(shape, random);
-            if t <= lowest {
+            if t <= lowest || t > self.highest() {
                 continue;
             }
             let Some(power) = self.power else { return t };

@@ -6,14 +6,16 @@
 //! [`wide!`](crate::wide), it is compiled twice, for the baseline processor and for AVX2, and the version is chosen at
 //! run time. No kernel uses a fused multiply-add, so both versions round alike and give the same bytes.
 
+#[macro_use]
+mod dispatch;
+
 pub mod erfc;
 pub mod faddeeva;
 pub mod kernel;
+pub mod normal;
 pub mod quadrature;
 pub mod root;
 pub mod sobol;
-#[macro_use]
-mod dispatch;
 
 use std::sync::OnceLock;
 

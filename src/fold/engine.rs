@@ -1,0 +1,153 @@
+//! The folding engine: points in blocks, blocks in chunks, chunks in waves, doubled until the precision is met.
+
+use super::last_leg::{Sums, add};
+use super::measure::Workspace;
+use super::plan::Plan;
+use super::{FoldError, FoldRecord, Folded, Progress, estimate};
+use crate::events::Generator;
+use crate::numerics::sobol::{BLOCK, MAX_DIMENSIONS, MAX_POINTS, Scrambling};
+use crate::process::{EventSource, Study};
+use rayon::prelude::*;
+use std::time::Instant;
+
+/// Independent scramblings; their spread is the numerical error.
+pub(super) const REPLICATES: usize = 16;
+
+/// Points of one scrambling that add up on their own before they join the total.
+const CHUNK: u64 = 4096;
+
+/// Chunks at work at once; the number bounds the memory and must not depend on the number of threads.
+const WAVE: usize = 64;
+
+/// Points per scrambling of the first round.
+const FIRST_ROUND: u64 = 256;
+
+/// The totals of one scrambling.
+#[derive(Clone, Debug)]
+pub(super) struct Total {
+    /// By category.
+    pub sums: Vec<Sums>,
+    /// Weight of all generated events.
+    pub generated: f64,
+}
+
+impl Total {
+    pub fn new(categories: usize, edges: usize) -> Self {
+        Total { sums: vec![Sums::new(edges); categories], generated: 0.0 }
+    }
+
+    pub fn add(&mut self, other: &Total) {
+        for (a, b) in self.sums.iter_mut().zip(&other.sums) {
+            a.add(b);
+        }
+        self.generated += other.generated;
+    }
+}
+
+/// Folds generated events of one channel at one mass point.
+///
+/// # Errors
+/// When the study and the call do not fit together; a precision that is not reached is no error but said in the record.
+pub(super) fn fold_generated(
+    study: &Study,
+    channel_index: usize,
+    mass_gev: f64,
+    progress: &(dyn Fn(Progress) + Sync),
+) -> Result<Folded, FoldError> {
+    let started = Instant::now();
+    let channel = study.channels.get(channel_index).ok_or(FoldError::NoSuchChannel(channel_index))?;
+    let EventSource::Generated(production) = &study.resonance.source else { return Err(FoldError::NotGenerated) };
+    let mut generator = Generator::new(&study.resonance, production, &channel.decay, mass_gev)
+        .ok_or(FoldError::BelowThreshold { mass_gev })?;
+    let plan = Plan::new(&study.detector, channel, mass_gev, &generator.dimensions());
+    generator.restrict(plan.rapidity_reach());
+    let dimensions = plan.dimensions.places.len();
+    let scramblings: Vec<Scrambling> = (0..REPLICATES as u64)
+        .map(|r| Scrambling::new(study.seed, r, &plan.dimensions.places))
+        .collect::<Option<_>>()
+        .ok_or(FoldError::TooManyDimensions { found: dimensions, allowed: MAX_DIMENSIONS })?;
+    let categories = channel.categories.len();
+    let edges = plan.axis.squares.len();
+    let mut totals = vec![Total::new(categories, edges); REPLICATES];
+    let most = (study.max_points / REPLICATES as u64).clamp(BLOCK as u64, MAX_POINTS);
+    // The largest power of two within the limit: the points are most even there.
+    let most = 1 << most.ilog2();
+    let mut done = 0;
+    let mut next = FIRST_ROUND.min(most);
+    let mut cpu_seconds = 0.0;
+    loop {
+        let tasks: Vec<(usize, u64, u64)> = (0..REPLICATES)
+            .flat_map(|r| (done..next).step_by(CHUNK as usize).map(move |start| (r, start, (start + CHUNK).min(next))))
+            .collect();
+        for wave in tasks.chunks(WAVE) {
+            let results: Vec<(usize, Total, f64)> = wave
+                .par_iter()
+                .map_init(
+                    || Workspace::new(&plan),
+                    |workspace, (r, start, end)| {
+                        let begun = Instant::now();
+                        let total =
+                            fold_chunk(&generator, &plan, &scramblings[*r], *start, *end, categories, workspace);
+                        (*r, total, begun.elapsed().as_secs_f64())
+                    },
+                )
+                .collect();
+            for (r, total, seconds) in &results {
+                totals[*r].add(total);
+                cpu_seconds += seconds;
+            }
+            progress(Progress {
+                points: (results.len() as u64) * CHUNK.min(next - done),
+                of_at_most: study.max_points,
+            });
+        }
+        done = next;
+        let reached = estimate::precision(&totals);
+        if reached <= study.precision || done >= most {
+            let record = FoldRecord {
+                channel: channel.name.clone(),
+                mass_gev,
+                points: done * REPLICATES as u64,
+                precision_reached: reached,
+                reached: reached <= study.precision,
+                cpu_seconds,
+                wall_seconds: started.elapsed().as_secs_f64(),
+                events_used: None,
+                events_effective: None,
+                events_skipped: Vec::new(),
+            };
+            let templates = estimate::templates(channel, mass_gev, &totals, None);
+            return Ok(Folded { templates, record });
+        }
+        next = next_round(done).min(most);
+    }
+}
+
+/// Rounds grow by 3/2 and 4/3 in turn: points are most even at powers of two, and nearly so half-way.
+fn next_round(done: u64) -> u64 {
+    if done.is_power_of_two() { done / 2 * 3 } else { done / 3 * 4 }
+}
+
+fn fold_chunk(
+    generator: &Generator,
+    plan: &Plan,
+    points: &Scrambling,
+    start: u64,
+    end: u64,
+    categories: usize,
+    workspace: &mut Workspace,
+) -> Total {
+    let mut total = Total::new(categories, plan.axis.squares.len());
+    for first in (start..end).step_by(BLOCK) {
+        generator.fill(points, first, &mut workspace.truth);
+        total.generated += workspace.truth.generated.iter().sum::<f64>();
+        workspace.measure(plan, points, first);
+        for last in &workspace.last {
+            add(plan, last, &mut total.sums[last.category]);
+        }
+        for (_, category, weight) in &workspace.lost {
+            total.sums[*category].lost += weight;
+        }
+    }
+    total
+}
