@@ -32,12 +32,12 @@ const SAMPLES: usize = 1200;
 
 /// Draws the density with its sigma_eff interval and its FWHM into an SVG file, whole or not at all.
 ///
-/// Without a range the central 98 % are drawn.
+/// Without a range the central 96 % are drawn.
 ///
 /// # Errors
 /// See [`DrawError`].
 pub fn draw_shape(shape: &dyn Shape, range_gev: Option<(f64, f64)>, file: &Path) -> Result<(), DrawError> {
-    let (low, high) = range_gev.unwrap_or_else(|| (shape.quantile(0.01), shape.upper_quantile(0.01)));
+    let (low, high) = range_gev.unwrap_or_else(|| (shape.quantile(0.02), shape.upper_quantile(0.02)));
     if !(high > low && (high - low).is_finite()) {
         return Err(DrawError::Range);
     }
@@ -51,7 +51,7 @@ pub fn draw_shape(shape: &dyn Shape, range_gev: Option<(f64, f64)>, file: &Path)
     let mut svg = String::new();
     {
         let root = SVGBackend::with_string(&mut svg, SIZE).into_drawing_area();
-        figure(&root, shape, &masses, &densities, 1.12 * top).map_err(|error| DrawError::Figure(error.to_string()))?;
+        figure(&root, shape, &masses, &densities, 1.3 * top).map_err(|error| DrawError::Figure(error.to_string()))?;
         root.present().map_err(|error| DrawError::Figure(error.to_string()))?;
     }
     // Through a sibling, so that a failure leaves the old file as it was.
