@@ -74,7 +74,11 @@ fn with_gaussian(random: &mut StdRng, natural: Natural) -> Box<dyn Shape> {
 }
 
 fn with_tails(random: &mut StdRng, natural: Natural, scaling: Scaling, falloff: Option<f64>) -> Box<dyn Shape> {
-    let (low, high) = (tail(random), tail(random));
+    let (mut low, mut high) = (tail(random), tail(random));
+    if scaling == Scaling::Proportional {
+        // Slow tails reach x = 0, where the density of a proportional resolution has a logarithmic singularity.
+        (low.1, high.1) = (low.1 + 3.0, high.1 + 3.0);
+    }
     let resolution =
         Resolution::double_crystal_ball(random.random_range(-1.0..1.0), log_uniform(random, 0.2, 5.0), low, high);
     Box::new(LineShape::with_options(natural, Some(resolution.unwrap().into()), scaling, falloff).unwrap())
@@ -113,13 +117,14 @@ fn breaks(shape: &dyn Shape) -> Vec<f64> {
     let peak = shape.peak_guess();
     let parameters = shape.parameters();
     let mut list = vec![peak];
-    let widths: Vec<f64> = parameters
-        .iter()
-        .filter(|p| p.name.starts_with("sigma") || p.name == "width")
-        .map(|p| p.value)
-        .collect();
-    let mut places = vec![1.0, 2.0, 4.0, 8.0, 16.0, 32.0, 64.0, 128.0, 256.0];
-    places.extend(parameters.iter().filter(|p| p.name.starts_with("alpha") || p.name.starts_with("k_")).map(|p| p.value));
+    let widths: Vec<f64> =
+        parameters.iter().filter(|p| p.name.starts_with("sigma") || p.name == "width").map(|p| p.value).collect();
+    // A convolution is smooth on the scale of its widths and slow; it needs fewer pieces.
+    let convolved = parameters[0].name == "mass" && parameters.len() > 2;
+    let mut places =
+        if convolved { vec![2.0, 8.0, 40.0] } else { vec![1.0, 2.0, 4.0, 8.0, 16.0, 32.0, 64.0, 128.0, 256.0] };
+    places
+        .extend(parameters.iter().filter(|p| p.name.starts_with("alpha") || p.name.starts_with("k_")).map(|p| p.value));
     let centres: Vec<f64> = std::iter::once(peak)
         .chain(parameters.iter().filter(|p| p.name.starts_with("bias_")).map(|p| p.value))
         .collect();
@@ -317,8 +322,7 @@ fn slices() {
         let (low, high) = (shape.quantile(0.01), shape.upper_quantile(0.01));
         let m: Vec<f64> = (0..400).map(|i| low + (high - low) * f64::from(i * 7 % 400) / 399.0).collect();
         let count = shape.parameters().len();
-        let (mut pdf, mut ln_pdf, mut cdf, mut sf) =
-            (vec![0.0; 400], vec![0.0; 400], vec![0.0; 400], vec![0.0; 400]);
+        let (mut pdf, mut ln_pdf, mut cdf, mut sf) = (vec![0.0; 400], vec![0.0; 400], vec![0.0; 400], vec![0.0; 400]);
         let (mut ln_with, mut gradient) = (vec![0.0; 400], vec![0.0; 400 * count]);
         shape.pdf_slice(&m, &mut pdf);
         shape.ln_pdf_slice(&m, &mut ln_pdf);

@@ -86,6 +86,10 @@ impl Convolution<'_> {
             }
         }
         list.push(0.0);
+        if self.proportional {
+            // Near x = 0 the scale of t is x itself.
+            list.extend([0.1, 1.0, 10.0].map(|factor| truth.level(factor * x.abs() - truth.centre)));
+        }
         if truth.natural.poles().is_some() {
             // The mirrored pole bends the density at this distance.
             list.push(truth.level(truth.centre));
