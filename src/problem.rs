@@ -35,6 +35,8 @@ impl Problem {
     }
 }
 
+impl std::error::Error for Problem {}
+
 impl fmt::Display for Problem {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         write!(f, "{}", self.file.display())?;

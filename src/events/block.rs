@@ -1,5 +1,6 @@
 //! Truth events as structures of arrays: what the folding engine works on.
 
+use crate::kinematics::TruthEvent;
 use crate::numerics::sobol::{BLOCK, Lane};
 
 /// One leg of a block of events; GeV.
@@ -47,5 +48,26 @@ impl TruthBlock {
             generated: [0.0; BLOCK],
             mass: [0.0; BLOCK],
         }
+    }
+
+    /// Puts one event into lane `i`.
+    pub fn set(&mut self, i: usize, event: &TruthEvent) {
+        for (lanes, leg) in self.legs.iter_mut().zip(&event.legs) {
+            lanes.px[i] = leg.px_gev;
+            lanes.py[i] = leg.py_gev;
+            lanes.pz[i] = leg.pz_gev;
+            lanes.mass[i] = leg.mass_gev;
+            let p_squared = leg.px_gev * leg.px_gev + leg.py_gev * leg.py_gev + leg.pz_gev * leg.pz_gev;
+            lanes.e[i] = (p_squared + leg.mass_gev * leg.mass_gev).sqrt();
+        }
+        self.weight[i] = event.weight;
+        self.generated[i] = event.weight;
+        self.mass[i] = event.mass_gev;
+    }
+
+    /// Leaves lane `i` without an event: what stands there has no weight.
+    pub fn clear(&mut self, i: usize) {
+        self.weight[i] = 0.0;
+        self.generated[i] = 0.0;
     }
 }

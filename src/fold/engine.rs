@@ -6,7 +6,7 @@ use super::plan::Plan;
 use super::{FoldError, FoldRecord, Folded, Progress, estimate};
 use crate::events::Generator;
 use crate::numerics::sobol::{BLOCK, MAX_DIMENSIONS, MAX_POINTS, Scrambling};
-use crate::process::{EventSource, Study};
+use crate::process::{Production, Study};
 use rayon::prelude::*;
 use std::time::Instant;
 
@@ -52,20 +52,16 @@ pub(super) fn fold_generated(
     study: &Study,
     channel_index: usize,
     mass_gev: f64,
+    production: &Production,
     progress: &(dyn Fn(Progress) + Sync),
 ) -> Result<Folded, FoldError> {
     let started = Instant::now();
     let channel = study.channels.get(channel_index).ok_or(FoldError::NoSuchChannel(channel_index))?;
-    let EventSource::Generated(production) = &study.resonance.source else { return Err(FoldError::NotGenerated) };
     let mut generator = Generator::new(&study.resonance, production, &channel.decay, mass_gev)
         .ok_or(FoldError::BelowThreshold { mass_gev })?;
     let plan = Plan::new(&study.detector, channel, mass_gev, &generator.dimensions());
     generator.restrict(plan.rapidity_reach());
-    let dimensions = plan.dimensions.places.len();
-    let scramblings: Vec<Scrambling> = (0..REPLICATES as u64)
-        .map(|r| Scrambling::new(study.seed, r, &plan.dimensions.places))
-        .collect::<Option<_>>()
-        .ok_or(FoldError::TooManyDimensions { found: dimensions, allowed: MAX_DIMENSIONS })?;
+    let scramblings = scramblings(study.seed, &plan)?;
     let categories = channel.categories.len();
     let edges = plan.axis.squares.len();
     let mut totals = vec![Total::new(categories, edges); REPLICATES];
@@ -75,10 +71,15 @@ pub(super) fn fold_generated(
     let mut done = 0;
     let mut next = FIRST_ROUND.min(most);
     let mut cpu_seconds = 0.0;
+    let mut reached = f64::INFINITY;
     loop {
         let tasks: Vec<(usize, u64, u64)> = (0..REPLICATES)
             .flat_map(|r| (done..next).step_by(CHUNK as usize).map(move |start| (r, start, (start + CHUNK).min(next))))
             .collect();
+        let mut finished = 0.0;
+        // The points at which the error will be small enough: a guess, from the rate at which it usually falls.
+        let goal = if done == 0 { f64::INFINITY } else { done as f64 * libm::pow(reached / study.precision, 1.25) };
+        let goal = goal.clamp(next as f64, most as f64);
         for wave in tasks.chunks(WAVE) {
             let results: Vec<(usize, Total, f64)> = wave
                 .par_iter()
@@ -96,13 +97,12 @@ pub(super) fn fold_generated(
                 totals[*r].add(total);
                 cpu_seconds += seconds;
             }
-            progress(Progress {
-                points: (results.len() as u64) * CHUNK.min(next - done),
-                of_at_most: study.max_points,
-            });
+            finished += results.len() as f64;
+            let points = done as f64 + finished / tasks.len() as f64 * (next - done) as f64;
+            progress(Progress { fraction: (points / goal).min(1.0) });
         }
         done = next;
-        let reached = estimate::precision(&totals);
+        reached = estimate::precision(&totals);
         if reached <= study.precision || done >= most {
             let record = FoldRecord {
                 channel: channel.name.clone(),
@@ -112,15 +112,22 @@ pub(super) fn fold_generated(
                 reached: reached <= study.precision,
                 cpu_seconds,
                 wall_seconds: started.elapsed().as_secs_f64(),
-                events_used: None,
-                events_effective: None,
-                events_skipped: Vec::new(),
+                ..FoldRecord::default()
             };
             let templates = estimate::templates(channel, mass_gev, &totals, None);
             return Ok(Folded { templates, record });
         }
         next = next_round(done).min(most);
     }
+}
+
+/// The independent scramblings of a plan.
+pub(super) fn scramblings(seed: u64, plan: &Plan) -> Result<Vec<Scrambling>, FoldError> {
+    let places = &plan.dimensions.places;
+    (0..REPLICATES as u64)
+        .map(|r| Scrambling::new(seed, r, places))
+        .collect::<Option<_>>()
+        .ok_or(FoldError::TooManyDimensions { found: places.len(), allowed: MAX_DIMENSIONS })
 }
 
 /// Rounds grow by 3/2 and 4/3 in turn: points are most even at powers of two, and nearly so half-way.

@@ -1,6 +1,7 @@
 //! From the totals of the scramblings to templates with errors.
 
 use super::engine::Total;
+use super::last_leg::Sums;
 use crate::process::Channel;
 use crate::template::{LabelledTemplate, Replicate, Template};
 
@@ -19,6 +20,52 @@ pub(super) struct ListSums {
     pub weights: f64,
 }
 
+impl ListSums {
+    pub fn new(categories: usize, bins: usize) -> Self {
+        ListSums {
+            squares: vec![vec![0.0; bins]; categories],
+            products: vec![vec![0.0; bins]; categories],
+            accepted_squares: vec![0.0; categories],
+            accepted_products: vec![0.0; categories],
+            weight_squares: 0.0,
+            weights: 0.0,
+        }
+    }
+
+    /// Adds one event of a weight; `sums` holds what its points gave in each category and `unit` is 1 over their number.
+    pub fn add_event(&mut self, weight: f64, sums: &[Sums], unit: f64) {
+        self.weights += weight;
+        self.weight_squares += weight * weight;
+        for (category, sums) in sums.iter().enumerate() {
+            let accepted = sums.accepted * unit;
+            if accepted == 0.0 {
+                continue;
+            }
+            self.accepted_squares[category] += accepted * accepted;
+            self.accepted_products[category] += accepted * weight;
+            let cumulative = sums.cumulative();
+            let bins = self.squares[category].iter_mut().zip(&mut self.products[category]);
+            for ((square, product), pair) in bins.zip(cumulative.windows(2)) {
+                let q = (pair[1] - pair[0]) * unit;
+                *square += q * q;
+                *product += q * accepted;
+            }
+        }
+    }
+
+    pub fn add(&mut self, other: &ListSums) {
+        let add = |a: &mut [f64], b: &[f64]| a.iter_mut().zip(b).for_each(|(a, b)| *a += b);
+        for category in 0..self.squares.len() {
+            add(&mut self.squares[category], &other.squares[category]);
+            add(&mut self.products[category], &other.products[category]);
+        }
+        add(&mut self.accepted_squares, &other.accepted_squares);
+        add(&mut self.accepted_products, &other.accepted_products);
+        self.weight_squares += other.weight_squares;
+        self.weights += other.weights;
+    }
+}
+
 /// Standard error of the mean of values.
 fn standard_error(values: impl Iterator<Item = f64> + Clone) -> f64 {
     let count = values.clone().count() as f64;
@@ -34,7 +81,7 @@ fn replicates(totals: &[Total], category: usize) -> Vec<Replicate> {
     totals.iter().map(|total| normalised(&total.sums[category], total.generated)).collect()
 }
 
-fn normalised(sums: &super::last_leg::Sums, generated: f64) -> Replicate {
+fn normalised(sums: &Sums, generated: f64) -> Replicate {
     let cumulative = sums.cumulative();
     let accepted = sums.accepted;
     // Nothing accepted: probabilities of nothing are 0.

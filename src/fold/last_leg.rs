@@ -60,6 +60,13 @@ impl Sums {
         Sums { below: vec![0.0; edges], steps: vec![0.0; edges + 1], accepted: 0.0, lost: 0.0 }
     }
 
+    pub fn clear(&mut self) {
+        self.below.fill(0.0);
+        self.steps.fill(0.0);
+        self.accepted = 0.0;
+        self.lost = 0.0;
+    }
+
     pub fn add(&mut self, other: &Sums) {
         for (a, b) in self.below.iter_mut().zip(&other.below) {
             *a += b;

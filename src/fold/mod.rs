@@ -5,17 +5,21 @@ mod engine;
 mod estimate;
 mod last_leg;
 mod limits;
+mod list;
 mod measure;
+pub mod plain;
 mod plan;
 mod resolve;
 mod response;
 mod spread;
 
-use crate::process::Study;
+use crate::problem::Problem;
+use crate::process::{EventSource, Study};
 use crate::template::LabelledTemplate;
+use std::path::PathBuf;
 
 /// How a fold of one channel at one mass point went.
-#[derive(Clone, Debug, PartialEq)]
+#[derive(Clone, Debug, Default, PartialEq)]
 pub struct FoldRecord {
     /// Name of the channel.
     pub channel: String,
@@ -37,6 +41,8 @@ pub struct FoldRecord {
     pub events_effective: Option<f64>,
     /// Events of the list that were skipped, with the reason.
     pub events_skipped: Vec<(String, u64)>,
+    /// What else is worth knowing about the file of events.
+    pub notes: Vec<String>,
 }
 
 /// What a fold of one channel at one mass point gives.
@@ -51,10 +57,8 @@ pub struct Folded {
 /// How far a fold is, told from time to time.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Progress {
-    /// Points done since the last call.
-    pub points: u64,
-    /// The most points that the fold may take.
-    pub of_at_most: u64,
+    /// Share of the work done, 0 to 1: a guess while the points that are needed are not known.
+    pub fraction: f64,
 }
 
 /// Why a fold could not be made.
@@ -63,9 +67,33 @@ pub enum FoldError {
     /// The study has no such channel.
     #[error("the study has no channel number {0}")]
     NoSuchChannel(usize),
-    /// The study reads its events from a file.
-    #[error("the study reads its events from a file: there is nothing to generate")]
-    NotGenerated,
+    /// The file of events cannot be used.
+    #[error(transparent)]
+    Events(#[from] Problem),
+    /// The file has no event of the channel.
+    #[error("{}: no event for the channel {channel} ({reasons}); check the channel's legs and the file", .path.display())]
+    NoEvents {
+        /// The file.
+        path: PathBuf,
+        /// Name of the channel.
+        channel: String,
+        /// Why events were skipped, with their numbers.
+        reasons: String,
+    },
+    /// All weights are 0.
+    #[error("{}: all events for the channel {channel} have weight 0; nothing can be folded", .path.display())]
+    NoWeight {
+        /// The file.
+        path: PathBuf,
+        /// Name of the channel.
+        channel: String,
+    },
+    /// No rule says how the legs are picked from events.
+    #[error("channel {channel}: its legs cannot be picked from a file of events")]
+    CannotPick {
+        /// Name of the channel.
+        channel: String,
+    },
     /// The mass point cannot decay to the legs.
     #[error("a resonance of {mass_gev} GeV cannot decay to the legs of this channel")]
     BelowThreshold {
@@ -95,5 +123,8 @@ pub fn fold_channel(
     mass_gev: f64,
     progress: &(dyn Fn(Progress) + Sync),
 ) -> Result<Folded, FoldError> {
-    engine::fold_generated(study, channel, mass_gev, progress)
+    match &study.resonance.source {
+        EventSource::Generated(production) => engine::fold_generated(study, channel, mass_gev, production, progress),
+        EventSource::File(path) => list::fold_file(study, channel, mass_gev, path, progress),
+    }
 }

@@ -1,0 +1,146 @@
+//! Whether the kinematics of an event hold together, to the digits that were printed.
+//!
+//! An event whose momenta contradict each other must never shape a template. Three things are checked:
+//!
+//! * every incoming, intermediate and final particle: `E² - p² = m²`;
+//! * where incoming particles are listed: their momenta add up to those of the final ones;
+//! * where an intermediate row has daughters (rows with it as their only mother): their momenta add up to its own.
+//!
+//! # Tolerance
+//!
+//! A printed number is wrong by up to half a unit of its last digit. The momentum components of a row are not larger
+//! than its energy, so in a common number format none is less precise than the energy: each is known to `delta E` with
+//! `delta = max(10^(1-n)/2, 1e-7)`, n the largest number of significant digits of a momentum or energy of the event.
+//! The floor of 1e-7 is the rounding of single precision, in which some generators compute whatever they print; an error of
+//! that size moves a mass by about 1e-7 of itself. Hence, by adding up the worst cases:
+//!
+//! * `|E² - p² - m²| <= 2 (1 + sqrt 3) delta E² + 2 m dm`, which for a massless particle is the well-known apparent mass of
+//!   order `sqrt(2 E dE)`; `dm` is half a unit of the last digit of the mass column, at most 1e-3 m;
+//! * each component of a sum: `delta` times the sum of all energies that enter.
+
+use std::fmt;
+
+use super::raw::{FINAL, INCOMING, Particle, RESONANCE};
+
+/// Relative precision that is taken as given, whatever was printed: single precision.
+pub(super) const FLOOR: f64 = 1e-7;
+
+/// `2 (1 + sqrt 3)`: worst sum of the errors of an energy and three components of one size, twice.
+const SHELL_FACTOR: f64 = 5.464_101_615_137_754;
+
+/// A mass column is never taken to be less precise than this part of itself.
+const LARGEST_MASS_ERROR: f64 = 1e-3;
+
+/// How the kinematics of an event contradict each other.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
+pub enum Inconsistency {
+    /// An energy is not positive or a mass is negative.
+    Sign,
+    /// `E² - p²` is far from `m²`.
+    OffShell,
+    /// Incoming and final momenta differ.
+    Unbalanced,
+    /// An intermediate particle and its daughters differ.
+    ResonanceUnbalanced,
+}
+
+impl Inconsistency {
+    /// All kinds.
+    pub const ALL: [Inconsistency; 4] =
+        [Inconsistency::Sign, Inconsistency::OffShell, Inconsistency::Unbalanced, Inconsistency::ResonanceUnbalanced];
+}
+
+impl fmt::Display for Inconsistency {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.write_str(match self {
+            Inconsistency::Sign => "an energy is not positive or a mass is negative",
+            Inconsistency::OffShell => "E² - p² of a particle is far from its m²",
+            Inconsistency::Unbalanced => "incoming and final momenta do not balance",
+            Inconsistency::ResonanceUnbalanced => "a resonance and its daughters do not balance",
+        })
+    }
+}
+
+/// How precisely the numbers of an event are known.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Precision<'a> {
+    /// Error of a momentum component or an energy over the energy of the row.
+    pub relative: f64,
+    /// Error of each mass in GeV; empty: exact.
+    pub masses_gev: &'a [f64],
+}
+
+impl Precision<'_> {
+    /// The best precision that is ever asked for.
+    pub(super) const BEST: Precision<'static> = Precision { relative: FLOOR, masses_gev: &[] };
+}
+
+/// The first contradiction in an event, if there is any.
+pub(super) fn contradiction(particles: &[Particle], precision: Precision<'_>) -> Option<Inconsistency> {
+    let mut balance = Balance::default();
+    let mut incoming = false;
+    for (i, particle) in particles.iter().enumerate() {
+        match particle.status {
+            INCOMING => {
+                incoming = true;
+                balance.add(particle, -1.0);
+            }
+            FINAL => balance.add(particle, 1.0),
+            RESONANCE => {}
+            _ => continue,
+        }
+        if particle.e <= 0.0 || (particle.mass < 0.0 && particle.status != INCOMING) {
+            return Some(Inconsistency::Sign);
+        }
+        let mass_error = precision.masses_gev.get(i).copied().unwrap_or(0.0);
+        if !on_shell(particle, precision.relative, mass_error) {
+            return Some(Inconsistency::OffShell);
+        }
+    }
+    if incoming && !balance.holds(precision.relative) {
+        return Some(Inconsistency::Unbalanced);
+    }
+    for (i, resonance) in particles.iter().enumerate().filter(|(_, p)| p.status == RESONANCE) {
+        let mut balance = Balance::default();
+        let daughters = particles.iter().filter(|p| matches!(p.status, FINAL | RESONANCE));
+        let mut any = false;
+        for daughter in daughters.filter(|p| p.only_mother() == Some(i)) {
+            any = true;
+            balance.add(daughter, 1.0);
+        }
+        balance.add(resonance, -1.0);
+        if any && !balance.holds(precision.relative) {
+            return Some(Inconsistency::ResonanceUnbalanced);
+        }
+    }
+    None
+}
+
+fn on_shell(particle: &Particle, relative: f64, mass_error: f64) -> bool {
+    let Particle { px, py, pz, e, mass, .. } = *particle;
+    let excess = e * e - (px * px + py * py + pz * pz) - mass * mass.abs();
+    let mass_error = mass_error.min(LARGEST_MASS_ERROR * mass.abs());
+    let tolerance = SHELL_FACTOR * relative * e * e + 2.0 * mass.abs() * mass_error;
+    // An overflow makes the excess infinite or NaN, which is never consistent.
+    excess.is_finite() && excess.abs() <= tolerance
+}
+
+/// A signed sum of momenta with the sum of energies that entered.
+#[derive(Clone, Copy, Debug, Default)]
+struct Balance {
+    sum: [f64; 4],
+    scale: f64,
+}
+
+impl Balance {
+    fn add(&mut self, particle: &Particle, sign: f64) {
+        for (sum, value) in self.sum.iter_mut().zip([particle.px, particle.py, particle.pz, particle.e]) {
+            *sum += sign * value;
+        }
+        self.scale += particle.e;
+    }
+
+    fn holds(&self, relative: f64) -> bool {
+        self.scale.is_finite() && self.sum.iter().all(|component| component.abs() <= relative * self.scale)
+    }
+}
