@@ -31,7 +31,10 @@ fn agrees(study: &Study, seed: u64) {
         let comparison = common::compare::compare(&sample, index, &labelled.template);
         let lost = sample.categories[index].lost_weight / sample.generated_weight;
         let lost_error = (lost.max(1e-6) / sample.generated as f64).sqrt();
-        println!("{} {}: {comparison:?} lost {lost:e} {:e}", labelled.channel, labelled.category, labelled.template.lost);
+        println!(
+            "{} {}: {comparison:?} lost {lost:e} {:e}",
+            labelled.channel, labelled.category, labelled.template.lost
+        );
         assert!(comparison.agrees(), "{} {}: {comparison:?}", labelled.channel, labelled.category);
         assert!((lost - labelled.template.lost).abs() < 5.0 * lost_error, "lost {lost:e} {:e}", labelled.template.lost);
     }

@@ -89,7 +89,7 @@ impl PolePair {
             return 0.0;
         }
         let (strength, centre, spread) = self.constants();
-        let d = self.from_fixed(m) * (m + centre);
+        let d = self.beyond_fixed(m) * (m + centre);
         match self.numerator {
             Numerator::Constant => strength / (d * d + spread),
             Numerator::MassSquared => {
@@ -101,7 +101,7 @@ impl PolePair {
     }
 
     /// m - M_f.
-    fn from_fixed(&self, m: f64) -> f64 {
+    fn beyond_fixed(&self, m: f64) -> f64 {
         (m - self.mass) + self.offset
     }
 
@@ -118,8 +118,8 @@ impl PolePair {
         let (mass, g) = self.fixed;
         // ln((m² - M²)² + M²Γ²) as 2 ln hypot, each factor divided by m for the running width.
         let (d, s) = match self.numerator {
-            Numerator::Constant => (self.from_fixed(m) * (m + mass), mass * g),
-            Numerator::MassSquared => (self.from_fixed(m) * ((m + mass) / m), mass * g / m),
+            Numerator::Constant => (self.beyond_fixed(m) * (m + mass), mass * g),
+            Numerator::MassSquared => (self.beyond_fixed(m) * ((m + mass) / m), mass * g / m),
         };
         libm::log(self.strength()) - 2.0 * libm::log(libm::hypot(d, s))
     }
@@ -127,7 +127,7 @@ impl PolePair {
     /// `atanh(m/a)` for m below |a|, `atanh(a/m)` above: the two differ by iπ/2.
     fn atanh(&self, m: f64, inverse: bool) -> Complex64 {
         let (a, b) = (self.re, self.im);
-        let from_fixed = self.from_fixed(m);
+        let from_fixed = self.beyond_fixed(m);
         let from_pole = from_fixed + self.lag;
         let re = 0.25 * libm::log1p(4.0 * a * m / (from_pole * from_pole + b * b));
         // |a|² - m²
@@ -275,7 +275,7 @@ impl PolePair {
         // d atanh(m/a)/da = -m/(a² - m²); d atanh(a/m)/da is the opposite of -that: m/(m² - a²), the same function.
         // m² - a² = (m - M_f)(m + M_f) - i M_f Γ_f.
         let (fixed_mass, fixed_width) = self.fixed;
-        let square = Complex64::new(self.from_fixed(m) * (m + fixed_mass), -fixed_mass * fixed_width);
+        let square = Complex64::new(self.beyond_fixed(m) * (m + fixed_mass), -fixed_mass * fixed_width);
         let x_a = Complex64::new(m, 0.0) / square;
         let (f, f_a) = match (self.numerator, above) {
             (Numerator::Constant, false) => (-x / a, -x_a / a + x / (a * a)),

@@ -211,7 +211,7 @@ impl Shape for Resolution {
     }
 
     fn upper_quantile(&self, q: f64) -> f64 {
-        self.mirrored().quantile(q) * -1.0
+        -self.mirrored().quantile(q)
     }
 
     fn peak_guess(&self) -> f64 {

@@ -136,8 +136,8 @@ crate::wide! {
         let mut x = [1.0; BLOCK];
         let mut place = [0_usize; BLOCK];
         let (mut near, mut back) = (0, BLOCK);
-        for i in 0..count {
-            let a = ((m[i] - centre) * scale).abs();
+        for (i, &m) in m.iter().enumerate().take(count) {
+            let a = ((m - centre) * scale).abs();
             let is_far = a > far;
             let slot = if is_far { back - 1 } else { near };
             back -= usize::from(is_far);

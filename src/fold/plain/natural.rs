@@ -103,7 +103,9 @@ impl NaturalMass {
             let edge = |i: u32| from + (to - from) * f64::from(i) / f64::from(RATIO_CELLS);
             (0..RATIO_CELLS).for_each(|i| add(Variable::LogRatio, edge(i), edge(i + 1)));
         }
-        angle_edges(width, least.max(LOW_END), ceiling).windows(2).for_each(|pair| add(Variable::Angle, pair[0], pair[1]));
+        angle_edges(width, least.max(LOW_END), ceiling)
+            .windows(2)
+            .for_each(|pair| add(Variable::Angle, pair[0], pair[1]));
         cells.iter_mut().for_each(|cell| cell.cumulative /= cumulative);
         Ok(NaturalMass { pole_gev, width_gev, cells })
     }
