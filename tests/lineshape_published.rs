@@ -110,7 +110,8 @@ fn complex_error_function_judged() {
         };
         let judge = Complex64::new(x, y).w();
         let (re, im) = faddeeva(x, y);
-        assert!((re / judge.re - 1.0).abs() < 5e-14, "Re w({x} + {y}i) = {re}, judge {}", judge.re);
+        // The judge's 7e-15 are of |w|; of Re w it is off by 9e-14 at 6.0125 + 0.115 i (see the table below).
+        assert!((re / judge.re - 1.0).abs() < 3e-13, "Re w({x} + {y}i) = {re}, judge {}", judge.re);
         // The judge is off by 2e-14 at 7.818 + 1.9e-8 i, where mpmath gives 0.07277082525601732.
         assert!((im - judge.im).abs() < 5e-14 * judge.norm(), "Im w({x} + {y}i) = {im}, judge {}", judge.im);
     }
@@ -120,9 +121,28 @@ fn complex_error_function_judged() {
         let mut out = vec![0.0; x.len()];
         faddeeva_re_slice(&x, &mut out, 0.0, 1.0, y, 1.0);
         for (x, found) in x.iter().zip(&out) {
-            close(*found, Complex64::new(*x, y).w().re, 5e-14, &format!("Re w({x} + {y}i)"));
+            close(*found, Complex64::new(*x, y).w().re, 3e-13, &format!("Re w({x} + {y}i)"));
         }
     }
+}
+
+/// The table of extended precision; both parts by the scalar function, Re w by the slice.
+#[test]
+fn complex_error_function_table() {
+    let path = format!("{}/tests/reference/complex_error_function.csv", env!("CARGO_MANIFEST_DIR"));
+    let mut reader = csv::ReaderBuilder::new().comment(Some(b'#')).from_path(path).unwrap();
+    let mut rows = 0;
+    for row in reader.deserialize() {
+        let (x, y, re, im): (f64, f64, f64, f64) = row.unwrap();
+        let found = faddeeva(x, y);
+        close(found.0, re, 2e-14, &format!("Re w({x} + {y}i)"));
+        close(found.1, im, 2e-14, &format!("Im w({x} + {y}i)"));
+        let mut out = [0.0; 2];
+        faddeeva_re_slice(&[x, -x], &mut out, 0.0, 1.0, y, 1.0);
+        out.iter().for_each(|&found| close(found, re, 2e-14, &format!("Re w({x} + {y}i) of a slice")));
+        rows += 1;
+    }
+    assert_eq!(rows, 400);
 }
 
 fn voigt(sigma: f64, gamma: f64) -> LineShape {
