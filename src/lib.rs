@@ -13,7 +13,7 @@
 //!
 //! # Rooms
 //!
-//! A module imports only from modules that stand before it in this list: [`problem`], [`numerics`], [`kinematics`],
+//! A module imports only from modules that stand before it in this list: [`problem`], [`numerics`], [`kinematics`], [`lineshape`],
 //! [`detector`], [`process`], [`events`], [`template`], [`fold`], [`files`], [`draw`], [`cli`].
 
 pub mod problem;
@@ -21,6 +21,8 @@ pub mod problem;
 pub mod numerics;
 
 pub mod kinematics;
+
+pub mod lineshape;
 
 pub mod detector;
 

@@ -6,6 +6,7 @@
 pub mod check;
 pub mod fold;
 mod outcome;
+pub mod shape;
 mod table;
 
 pub use outcome::{Failure, Outcome};
@@ -43,6 +44,7 @@ struct Program {
 enum Command {
     Check(check::CheckArgs),
     Fold(fold::FoldArgs),
+    Shape(shape::ShapeArgs),
 }
 
 impl Command {
@@ -50,6 +52,7 @@ impl Command {
         match self {
             Command::Check(args) => check::run(args, out),
             Command::Fold(args) => fold::run(args, out),
+            Command::Shape(args) => Ok(shape::run(args, out)?),
         }
     }
 }

@@ -1,5 +1,6 @@
 //! Figures, as SVG with the reader's own sans-serif font.
 
+pub mod curve;
 mod paper;
 mod scale;
 mod template_figure;

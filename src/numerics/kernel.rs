@@ -61,6 +61,15 @@ pub fn ln(x: f64) -> f64 {
     k * LN2_HIGH - ((half_square - (s * (half_square + r * z) + k * LN2_LOW)) - f)
 }
 
+crate::wide! {
+    /// Replaces each number by its natural logarithm, as [`ln`].
+    pub fn ln_in_place(values: &mut [f64]) {
+        for value in values {
+            *value = ln(*value);
+        }
+    }
+}
+
 /// Cosine and sine of `turns` full turns, for |turns| up to 2^40; absolute error below 3e-16.
 #[inline(always)]
 pub fn cos_sin_turns(turns: f64) -> (f64, f64) {

@@ -9,8 +9,12 @@
 #[macro_use]
 mod dispatch;
 
+pub mod erfc;
+pub mod faddeeva;
 pub mod kernel;
 pub mod normal;
+pub mod quadrature;
+pub mod root;
 pub mod sobol;
 
 use std::sync::OnceLock;
