@@ -138,7 +138,7 @@ impl Generator {
                 }
             }
             Production::Table(cells) => {
-                self.from_cells(cells, u_pt, u_rapidity, &mut pt, &mut rapidity);
+                self.draw_cells(cells, u_pt, u_rapidity, &mut pt, &mut rapidity);
                 for leg in &mut block.legs {
                     boost_across(&block.mass, &pt, leg);
                 }
@@ -149,7 +149,7 @@ impl Generator {
         }
     }
 
-    fn from_cells(&self, cells: &[SpectrumCell], u_pt: &Lane, u_y: &Lane, pt: &mut Lane, rapidity: &mut Lane) {
+    fn draw_cells(&self, cells: &[SpectrumCell], u_pt: &Lane, u_y: &Lane, pt: &mut Lane, rapidity: &mut Lane) {
         let between = |(low, high): (f64, f64), u: f64| low + u * (high - low);
         for i in 0..BLOCK {
             let cell = self.cell_sums.partition_point(|sum| *sum <= u_pt[i]).min(cells.len() - 1);

@@ -120,10 +120,8 @@ impl Workspace {
                 }
             }
             let order = &mut self.order[*i];
-            let mut rank = 0;
-            for leg in (0..legs).filter(|leg| *leg != best) {
+            for (rank, leg) in (0..legs).filter(|leg| *leg != best).enumerate() {
                 order[rank] = leg;
-                rank += 1;
             }
             order[legs - 1] = best;
         }
