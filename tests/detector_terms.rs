@@ -7,9 +7,6 @@ use peakfold::detector::{
     TrackerResolution,
 };
 
-/// c/10⁹ by definition of the metre.
-const K: f64 = 0.299_792_458;
-
 fn close(found: f64, expected: f64, relative: f64, what: &str) {
     let off = (found / expected - 1.0).abs();
     assert!(off <= relative, "{what}: found {found}, expected {expected}, off by {off:e}");

@@ -120,8 +120,12 @@ fn contradiction(event: &Owned) -> Option<String> {
         if p.mothers.iter().any(|m| *m as usize > particles.len()) {
             return Some("mother".to_owned());
         }
+        if matches!(p.status, -1 | 1 | 2) && p.e < 0.0 {
+            return Some("negative energy".to_owned());
+        }
         let excess = p.e * p.e - p.px * p.px - p.py * p.py - p.pz * p.pz - p.mass * p.mass;
-        if matches!(p.status, -1 | 1 | 2) && !(excess.abs() <= 1e-3 * p.mass * p.mass * 2.0 + TOLERANCE * p.e * p.e) {
+        let close = excess.abs() <= 2e-3 * p.mass * p.mass + TOLERANCE * p.e * p.e;
+        if matches!(p.status, -1 | 1 | 2) && !close {
             return Some(format!("mass of {p:?}"));
         }
     }

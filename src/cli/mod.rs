@@ -1,33 +1,78 @@
-//! The command line: one file per command.
+//! The command line: one file per command, and how each of them ends.
+//!
+//! A command is a struct of arguments (clap) and a function `run(&args, &mut out) -> Outcome`. To add one: a file, and
+//! an arm in [`Command`] and in its `run`.
 
+pub mod check;
+pub mod fold;
+mod outcome;
 pub mod shape;
+mod table;
 
-use std::process::ExitCode;
+pub use outcome::{Failure, Outcome};
 
 use clap::{Parser, Subcommand};
+use std::io::{BufWriter, Write};
+use std::process::ExitCode;
 
-/// Folds detector resolution into the line shape of a reconstructed mass
-#[derive(Parser)]
-#[command(version, about)]
+const LONG_HELP: &str = "\
+Results go to standard output, messages to standard error.
+
+Exit status:
+  0  done
+  1  a problem with the input; nothing was written
+  2  wrong usage
+  3  a numerical failure, such as a precision that was not reached; what did work was written
+
+Environment:
+  PEAKFOLD_VECTORS=narrow  do without the wide vectors of the processor (slower, the same results)
+  RAYON_NUM_THREADS=N      use N threads instead of one per processor (the same results)";
+
+/// Fold the resolution of a detector into the line shape of a reconstructed mass
+///
+/// peakfold takes a detector as it was calibrated or proposed, a resonance and its decay channels,
+/// and computes the shape that the resonance draws in the reconstructed mass, with the numerical
+/// error of every bin.
+#[derive(Debug, Parser)]
+#[command(name = "peakfold", version, verbatim_doc_comment, after_long_help = LONG_HELP)]
 struct Program {
     #[command(subcommand)]
     command: Command,
 }
 
-#[derive(Subcommand)]
+#[derive(Debug, Subcommand)]
 enum Command {
+    Check(check::CheckArgs),
+    Fold(fold::FoldArgs),
     Shape(shape::ShapeArgs),
+}
+
+impl Command {
+    fn run(&self, out: &mut impl Write) -> Outcome {
+        match self {
+            Command::Check(args) => check::run(args, out),
+            Command::Fold(args) => fold::run(args, out),
+            Command::Shape(args) => shape::run(args, out),
+        }
+    }
 }
 
 /// Runs the program with the arguments of the process and returns its exit status.
 pub fn run() -> ExitCode {
-    match Program::parse().command {
-        Command::Shape(args) => match shape::run(&args, &mut std::io::stdout().lock()) {
-            Ok(()) => ExitCode::SUCCESS,
-            Err(failure) => {
-                eprintln!("error: {failure}");
-                ExitCode::from(failure.status())
-            }
-        },
+    let program = match Program::try_parse() {
+        Ok(program) => program,
+        Err(message) => {
+            // Help, version or wrong usage; whoever reads may be gone already.
+            let _ = message.print();
+            return ExitCode::from(u8::try_from(message.exit_code()).unwrap_or(outcome::USAGE));
+        }
+    };
+    if let Err(error) = crate::files::remove_unfinished_on_interrupt() {
+        outcome::say(&format!("warning: an interrupted run may leave a temporary directory: {error}"));
     }
+    let mut out = BufWriter::new(std::io::stdout().lock());
+    let outcome = program.command.run(&mut out);
+    // Also after a failure: what did work was computed to be read.
+    let flushed = out.flush().map_err(Failure::Output);
+    outcome::report(outcome.and(flushed))
 }

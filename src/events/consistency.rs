@@ -1,22 +1,27 @@
 //! Whether the kinematics of an event hold together, to the digits that were printed.
 //!
-//! An event whose momenta contradict each other must never shape a template. Three things are checked:
+//! An event whose momenta contradict each other must never shape a template. What is checked:
 //!
-//! * every incoming, intermediate and final particle: `E² - p² = m²`;
+//! * every incoming, intermediate and final particle: `E² - p² = m²`, and no negative energy (which generators do write now
+//!   and then) or negative mass;
 //! * where incoming particles are listed: their momenta add up to those of the final ones;
 //! * where an intermediate row has daughters (rows with it as their only mother): their momenta add up to its own.
 //!
 //! # Tolerance
 //!
-//! A printed number is wrong by up to half a unit of its last digit. The momentum components of a row are not larger
-//! than its energy, so in a common number format none is less precise than the energy: each is known to `delta E` with
-//! `delta = max(10^(1-n)/2, 1e-7)`, n the largest number of significant digits of a momentum or energy of the event.
-//! The floor of 1e-7 is the rounding of single precision, in which some generators compute whatever they print; an error of
-//! that size moves a mass by about 1e-7 of itself. Hence, by adding up the worst cases:
+//! A printed number is wrong by up to half a unit of its last digit. How many digits a program prints shows in the longest
+//! numbers of an event (a number may be short because trailing zeros were left out): n significant digits, and d decimals
+//! after the exponent is applied. A momentum component or energy of a row with energy E is then known to
 //!
-//! * `|E² - p² - m²| <= 2 (1 + sqrt 3) delta E² + 2 m dm`, which for a massless particle is the well-known apparent mass of
-//!   order `sqrt(2 E dE)`; `dm` is half a unit of the last digit of the mass column, at most 1e-3 m;
-//! * each component of a sum: `delta` times the sum of all energies that enter.
+//! `err = max(E max(10^(1-n)/2, 1e-7), 10^-d/2)`,
+//!
+//! because no component is larger than E; the first part is that of numbers with an exponent, the second that of numbers with a
+//! fixed point. The floor of 1e-7 is the rounding of single precision, in which some generators compute whatever they print; an
+//! error of that size moves a mass by about 1e-7 of itself. Hence, by adding up the worst cases:
+//!
+//! * `|E² - p² - m²| <= 2 (1 + sqrt 3) E err + 4 err² + 2 m dm`, which for a massless particle is the well-known apparent mass
+//!   of order `sqrt(2 E dE)`; `dm` is half a unit of the last digit of the mass column, at most 1e-3 m;
+//! * each component of a sum: the sum of `err` of all rows that enter.
 
 use std::fmt;
 
@@ -34,7 +39,7 @@ const LARGEST_MASS_ERROR: f64 = 1e-3;
 /// How the kinematics of an event contradict each other.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
 pub enum Inconsistency {
-    /// An energy is not positive or a mass is negative.
+    /// An energy or a mass is negative.
     Sign,
     /// `E² - p²` is far from `m²`.
     OffShell,
@@ -53,7 +58,7 @@ impl Inconsistency {
 impl fmt::Display for Inconsistency {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         f.write_str(match self {
-            Inconsistency::Sign => "an energy is not positive or a mass is negative",
+            Inconsistency::Sign => "an energy or a mass is negative",
             Inconsistency::OffShell => "E² - p² of a particle is far from its m²",
             Inconsistency::Unbalanced => "incoming and final momenta do not balance",
             Inconsistency::ResonanceUnbalanced => "a resonance and its daughters do not balance",
@@ -66,13 +71,19 @@ impl fmt::Display for Inconsistency {
 pub(super) struct Precision<'a> {
     /// Error of a momentum component or an energy over the energy of the row.
     pub relative: f64,
+    /// Error of a momentum component or an energy in GeV, where it is larger.
+    pub absolute_gev: f64,
     /// Error of each mass in GeV; empty: exact.
     pub masses_gev: &'a [f64],
 }
 
 impl Precision<'_> {
     /// The best precision that is ever asked for.
-    pub(super) const BEST: Precision<'static> = Precision { relative: FLOOR, masses_gev: &[] };
+    pub(super) const BEST: Precision<'static> = Precision { relative: FLOOR, absolute_gev: 0.0, masses_gev: &[] };
+
+    fn error_gev(&self, particle: &Particle) -> f64 {
+        (self.relative * particle.e).max(self.absolute_gev)
+    }
 }
 
 /// The first contradiction in an event, if there is any.
@@ -83,21 +94,21 @@ pub(super) fn contradiction(particles: &[Particle], precision: Precision<'_>) ->
         match particle.status {
             INCOMING => {
                 incoming = true;
-                balance.add(particle, -1.0);
+                balance.add(particle, -1.0, precision);
             }
-            FINAL => balance.add(particle, 1.0),
+            FINAL => balance.add(particle, 1.0, precision),
             RESONANCE => {}
             _ => continue,
         }
-        if particle.e <= 0.0 || (particle.mass < 0.0 && particle.status != INCOMING) {
+        if particle.e < 0.0 || (particle.mass < 0.0 && particle.status != INCOMING) {
             return Some(Inconsistency::Sign);
         }
         let mass_error = precision.masses_gev.get(i).copied().unwrap_or(0.0);
-        if !on_shell(particle, precision.relative, mass_error) {
+        if !on_shell(particle, precision.error_gev(particle), mass_error) {
             return Some(Inconsistency::OffShell);
         }
     }
-    if incoming && !balance.holds(precision.relative) {
+    if incoming && !balance.holds() {
         return Some(Inconsistency::Unbalanced);
     }
     for (i, resonance) in particles.iter().enumerate().filter(|(_, p)| p.status == RESONANCE) {
@@ -106,41 +117,41 @@ pub(super) fn contradiction(particles: &[Particle], precision: Precision<'_>) ->
         let mut any = false;
         for daughter in daughters.filter(|p| p.only_mother() == Some(i)) {
             any = true;
-            balance.add(daughter, 1.0);
+            balance.add(daughter, 1.0, precision);
         }
-        balance.add(resonance, -1.0);
-        if any && !balance.holds(precision.relative) {
+        balance.add(resonance, -1.0, precision);
+        if any && !balance.holds() {
             return Some(Inconsistency::ResonanceUnbalanced);
         }
     }
     None
 }
 
-fn on_shell(particle: &Particle, relative: f64, mass_error: f64) -> bool {
+fn on_shell(particle: &Particle, error: f64, mass_error: f64) -> bool {
     let Particle { px, py, pz, e, mass, .. } = *particle;
     let excess = e * e - (px * px + py * py + pz * pz) - mass * mass.abs();
     let mass_error = mass_error.min(LARGEST_MASS_ERROR * mass.abs());
-    let tolerance = SHELL_FACTOR * relative * e * e + 2.0 * mass.abs() * mass_error;
+    let tolerance = SHELL_FACTOR * error * e + 4.0 * error * error + 2.0 * mass.abs() * mass_error;
     // An overflow makes the excess infinite or NaN, which is never consistent.
     excess.is_finite() && excess.abs() <= tolerance
 }
 
-/// A signed sum of momenta with the sum of energies that entered.
+/// A signed sum of momenta with the sum of the errors that entered.
 #[derive(Clone, Copy, Debug, Default)]
 struct Balance {
     sum: [f64; 4],
-    scale: f64,
+    error: f64,
 }
 
 impl Balance {
-    fn add(&mut self, particle: &Particle, sign: f64) {
+    fn add(&mut self, particle: &Particle, sign: f64, precision: Precision<'_>) {
         for (sum, value) in self.sum.iter_mut().zip([particle.px, particle.py, particle.pz, particle.e]) {
             *sum += sign * value;
         }
-        self.scale += particle.e;
+        self.error += precision.error_gev(particle);
     }
 
-    fn holds(&self, relative: f64) -> bool {
-        self.scale.is_finite() && self.sum.iter().all(|component| component.abs() <= relative * self.scale)
+    fn holds(&self) -> bool {
+        self.error.is_finite() && self.sum.iter().all(|component| component.abs() <= self.error)
     }
 }

@@ -1,1 +1,60 @@
 //! What is read and written: detector and study files, run directories.
+//!
+//! A file goes through three stages: its text is parsed as TOML with the place of every key, each value is read with a
+//! check of its type and range, and the whole is checked for what its parts must satisfy together. Problems are
+//! collected, with file, line and key, over all files of a study; only a study without any becomes typed.
+
+mod channel_tables;
+mod detector_entries;
+mod detector_file;
+mod digest;
+mod domain;
+mod interrupt;
+mod number;
+mod reader;
+mod resonance_table;
+mod run_read;
+mod run_record;
+mod run_target;
+mod run_write;
+mod source;
+mod spectrum_file;
+mod study_checks;
+mod study_file;
+mod uncertainties;
+
+pub use detector_file::load_detector;
+pub use digest::FileDigest;
+pub use interrupt::remove_unfinished_on_interrupt;
+pub use number::shortest;
+pub use run_read::{Run, read_run};
+pub use run_record::{FoldSummary, RunRecord, Skipped};
+pub use run_target::{Committed, Staging, Target, TargetError};
+pub use run_write::{NOMINAL, RunContents, write_templates};
+pub use study_file::load_study;
+
+use crate::detector::Detector;
+use crate::problem::Problem;
+use crate::process::Study;
+
+/// A study that was read without a problem.
+#[derive(Clone, Debug)]
+pub struct LoadedStudy {
+    /// The study.
+    pub study: Study,
+    /// Every file that it depends on: the study, the detector, then a spectrum table or an event file.
+    pub inputs: Vec<FileDigest>,
+    /// What is allowed but likely not meant.
+    pub warnings: Vec<Problem>,
+}
+
+/// A detector that was read without a problem.
+#[derive(Clone, Debug)]
+pub struct LoadedDetector {
+    /// The detector.
+    pub detector: Detector,
+    /// Its file.
+    pub input: FileDigest,
+    /// What is allowed but likely not meant.
+    pub warnings: Vec<Problem>,
+}

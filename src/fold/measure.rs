@@ -114,7 +114,8 @@ impl Workspace {
         for i in &self.live {
             let mut best = 0;
             for leg in 1..legs {
-                if self.resolved[leg].pull(*i).abs() > self.resolved[best].pull(*i).abs() {
+                // Of equal legs always the same one: rounding must not decide.
+                if self.resolved[leg].pull(*i).abs() > (1.0 + 1e-9) * self.resolved[best].pull(*i).abs() {
                     best = leg;
                 }
             }

@@ -5,7 +5,8 @@ project. Prints one line for every event that serves a channel, and nothing for 
 
     number channel weight mass px1 py1 pz1 m1 px2 py2 pz2 m2
 
-`number` counts events from 1; the negative lepton comes first; floats are printed as `float.hex`.
+`number` counts all events from 1; events in which an incoming (-1), intermediate (2) or final (1) particle has a negative
+energy serve no channel; the negative lepton comes first; floats are printed as `float.hex`.
 
 usage: lhe_read.py FILE CHANNEL     (two-electron or two-muon)
 """
@@ -68,6 +69,8 @@ def mass_of(legs):
 
 def pick(rows, code):
     """The two legs and the truth mass, or None."""
+    if any(row[9] < 0.0 for row in rows if row[1] in (-1, 1, 2)):
+        return None
     final = [i for i in range(1, len(rows) + 1) if rows[i - 1][1] == 1]
 
     def pair(indices):

@@ -72,9 +72,7 @@ fn numbers(mut cursor: Cursor<'_>, columns: &[&str], d_exponents: &mut u64) -> R
         let word = cursor.word().unwrap_or_default();
         let whole = !matches!(*name, "EBMUP1" | "EBMUP2" | "XSECUP" | "XERRUP" | "XMAXUP");
         let value = if whole { integer(word, d_exponents).map(|value| value as f64) } else { float(word, d_exponents) };
-        values.push(value.map_err(|fault| {
-            format!("column {} ({name}) is {}, {fault}; a finite number is allowed", index + 1, shown(word))
-        })?);
+        values.push(value.map_err(|fault| format!("column {} ({name}) is {}, {fault}", index + 1, shown(word)))?);
     }
     Ok(values)
 }

@@ -83,9 +83,9 @@ pub(super) enum NumberFault {
 impl fmt::Display for NumberFault {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         f.write_str(match self {
-            NumberFault::Text => "which is not a number",
-            NumberFault::NotFinite => "which is not finite",
-            NumberFault::NotWhole => "which is not a whole number in range",
+            NumberFault::Text => "which is not a number; a finite number is needed",
+            NumberFault::NotFinite => "which is not finite; a finite number is needed",
+            NumberFault::NotWhole => "which is not a whole number in range; one is needed",
         })
     }
 }
@@ -133,8 +133,8 @@ pub(super) fn integer(word: &[u8], d_exponents: &mut u64) -> Result<i64, NumberF
     if value == value.trunc() && value.abs() < 9e15 { Ok(value as i64) } else { Err(NumberFault::NotWhole) }
 }
 
-/// Number of significant digits that a number was printed with, and half a unit of its last digit.
-pub(super) fn printed_precision(word: &[u8]) -> (i32, f64) {
+/// Number of significant digits that a number was printed with, and of decimals once its exponent is applied.
+pub(super) fn printed_digits(word: &[u8]) -> (i32, i32) {
     let exponent_at = word.iter().position(|b| matches!(b, b'e' | b'E' | b'd' | b'D')).unwrap_or(word.len());
     let (mantissa, exponent) = word.split_at(exponent_at);
     let mut significant = 0;
@@ -152,8 +152,7 @@ pub(super) fn printed_precision(word: &[u8]) -> (i32, f64) {
     }
     let exponent: i32 =
         exponent.get(1..).and_then(|e| std::str::from_utf8(e).ok()).and_then(|e| e.parse().ok()).unwrap_or(0);
-    let power = exponent.saturating_sub(decimals).clamp(-300, 300);
-    (significant, 0.5 * libm::pow(10.0, f64::from(power)))
+    (significant, i32::saturating_sub(decimals, exponent).clamp(-300, 300))
 }
 
 /// A word as it is shown in a message: short and printable.

@@ -2,7 +2,7 @@
 
 use std::path::PathBuf;
 
-use super::numbers::{Cursor, float, integer, printed_precision, shown};
+use super::numbers::{Cursor, float, integer, printed_digits, shown};
 use super::report::Report;
 use super::weights::WeightChoice;
 use crate::events::consistency::{FLOOR, Precision, contradiction};
@@ -60,8 +60,8 @@ pub(super) fn parse_event(
     let mut found = contradiction(batch.pending(), Precision::BEST);
     if found.is_some() {
         // Only now is it worth looking at how many digits were printed.
-        let (relative, masses_gev) = event_precision(text);
-        found = contradiction(batch.pending(), Precision { relative, masses_gev: &masses_gev });
+        let mut masses_gev = Vec::new();
+        found = contradiction(batch.pending(), event_precision(text, &mut masses_gev));
     }
     match found {
         Some(kind) => {
@@ -109,7 +109,7 @@ fn column<T>(
     read(word).map_err(|fault| Fault {
         line,
         message: format!(
-            "column {} ({}) is {}, {fault}; a finite number is allowed",
+            "column {} ({}) is {}, {fault}",
             index + 1,
             columns.get(index).copied().unwrap_or_default(),
             shown(word)
@@ -167,7 +167,7 @@ fn read_event(
         return Err(Fault { line: head_line, message });
     }
     if let Some(row) = circular(batch.pending()) {
-        let message = format!("the mothers of particle row {} lead back to it", row + 1);
+        let message = format!("the mothers of particle row {} lead into a circle", row + 1);
         return Err(Fault { line: head_line, message });
     }
     context.weight.of_event(event_weight, cursor, d_exponents).map_err(|message| Fault { line: head_line, message })
@@ -236,20 +236,24 @@ fn circular(particles: &[Particle]) -> Option<usize> {
     }
 }
 
-/// Precision of momenta and energies (relative to the energy of the row) and of each mass, from the printed digits.
+/// What the printed digits of an event tell about its precision: the longest momentum or energy counts, and each mass by
+/// itself, whose errors are written to `masses_gev`.
 #[cold]
-fn event_precision(text: &[u8]) -> (f64, Vec<f64>) {
+fn event_precision<'a>(text: &[u8], masses_gev: &'a mut Vec<f64>) -> Precision<'a> {
     let mut cursor = Cursor::new(text, 0);
-    let mut most_digits = 1;
-    let mut masses_gev = Vec::new();
+    let (mut most_digits, mut most_decimals) = (1, -300);
     // The rows are known to be well formed, so that every line of 13 columns is one, and what follows does no harm.
     while to_content(&mut cursor) {
         if cursor.peek() != Some(b'<') && cursor.words_left() == ROW.len() {
             for index in 0..=10 {
-                let (digits, half_unit) = cursor.word().map_or((0, 0.0), printed_precision);
+                let word = cursor.word().unwrap_or_default();
                 match index {
-                    6..=9 => most_digits = most_digits.max(digits),
-                    10 => masses_gev.push(half_unit),
+                    6..=9 => {
+                        let (digits, decimals) = printed_digits(word);
+                        most_digits = most_digits.max(digits);
+                        most_decimals = most_decimals.max(decimals);
+                    }
+                    10 => masses_gev.push(half_of_power(-printed_digits(word).1)),
                     _ => {}
                 }
             }
@@ -258,5 +262,11 @@ fn event_precision(text: &[u8]) -> (f64, Vec<f64>) {
             break;
         }
     }
-    (FLOOR.max(0.5 * libm::pow(10.0, f64::from(1 - most_digits))), masses_gev)
+    let relative = FLOOR.max(half_of_power(1 - most_digits));
+    Precision { relative, absolute_gev: half_of_power(-most_decimals), masses_gev }
+}
+
+/// Half of a power of ten.
+fn half_of_power(exponent: i32) -> f64 {
+    0.5 * libm::pow(10.0, f64::from(exponent))
 }

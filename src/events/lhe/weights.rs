@@ -123,9 +123,7 @@ impl NamedWeight {
             (None, None, _) => return Err(format!("this event has no weight `{name}`")),
         };
         let word = word.ok_or_else(|| format!("weight `{name}` of this event is not one number"))?;
-        float(word, d_exponents).map_err(|fault| {
-            format!("weight `{name}` of this event is {}, {fault}; a finite number is allowed", shown(word))
-        })
+        float(word, d_exponents).map_err(|fault| format!("weight `{name}` of this event is {}, {fault}", shown(word)))
     }
 
     fn listed_word<'a>(&self, content: &'a [u8], position: usize) -> Result<Option<&'a [u8]>, String> {

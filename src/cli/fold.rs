@@ -1,0 +1,169 @@
+//! `peakfold fold`: the main job.
+
+use super::outcome::{Failure, Outcome, say};
+use super::table::{with_error, write_table};
+use crate::draw::template_figures;
+use crate::files::{LoadedStudy, RunContents, RunRecord, Target, load_study};
+use crate::fold::{FoldRecord, Folded, fold_channel};
+use crate::process::Study;
+use crate::template::{LabelledTemplate, Measured};
+use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
+use std::io::{self, IsTerminal, Write};
+use std::path::{Path, PathBuf};
+use std::sync::Mutex;
+use std::sync::PoisonError;
+use std::time::Instant;
+
+/// Steps of the progress bar per channel and mass.
+const STEPS: u64 = 1000;
+
+/// Folds a study: templates, widths and figures of every channel, category and mass
+#[derive(Clone, Debug, clap::Args)]
+pub struct FoldArgs {
+    /// The study to fold (TOML)
+    pub study: PathBuf,
+    /// The directory to write; replaced if it holds the result of the same inputs
+    #[arg(short, long, value_name = "DIR")]
+    pub output: PathBuf,
+    /// Threads to use [default: one per processor]
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..=1024))]
+    pub threads: Option<u16>,
+    /// No progress on the screen
+    #[arg(long)]
+    pub quiet: bool,
+    /// Replace DIR also when it holds the result of other inputs
+    #[arg(long)]
+    pub replace: bool,
+}
+
+/// Folds the study and writes the run; the table goes to `out`, progress and messages to stderr.
+///
+/// # Errors
+/// Why nothing was written, or what was not reached in a run that was written.
+pub fn run(args: &FoldArgs, out: &mut impl Write) -> Outcome {
+    let started = Instant::now();
+    let LoadedStudy { study, inputs, warnings } = load_study(&args.study)?;
+    for warning in warnings {
+        say(&format!("warning: {warning}"));
+    }
+    let target = Target::prepare(&args.output, args.replace, &inputs)?;
+    let threads = args.threads.map_or(0, usize::from);
+    let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build().map_err(|error| {
+        Failure::Input(format!("cannot start {threads} threads: {error}; ask for fewer with --threads"))
+    })?;
+    let threads = pool.current_num_threads();
+    let (templates, records) = pool.install(|| fold_all(&study, args.quiet))?;
+
+    let mut record = RunRecord::new(&study, inputs, &records);
+    record.threads = threads;
+    let further = match template_figures(&templates) {
+        Ok(figures) => figures.into_iter().map(|(path, svg)| (path, svg.into_bytes())).collect(),
+        Err(error) => {
+            record.not_reached.push(format!("figures: {error}"));
+            Vec::new()
+        }
+    };
+    record.wall_seconds = started.elapsed().as_secs_f64();
+    let not_reached = record.not_reached.clone();
+    let table = rows(&templates);
+    let committed = RunContents { record, templates, further }.commit(target)?;
+
+    // The run is written; a reader of the table who has gone away changes nothing.
+    let _ = report(out, &table, &records, &args.output);
+    if let Some(old) = committed.old_left_at {
+        say(&format!("warning: the old result could not be deleted and lies in {}", old.display()));
+    }
+    if not_reached.is_empty() {
+        return Ok(());
+    }
+    Err(Failure::Numerical(
+        not_reached.iter().map(|line| format!("not reached: {line}")).collect::<Vec<_>>().join("\n"),
+    ))
+}
+
+fn fold_all(study: &Study, quiet: bool) -> Result<(Vec<LabelledTemplate>, Vec<FoldRecord>), Failure> {
+    let masses = &study.resonance.masses_gev;
+    let bar = progress_bar((study.channels.len() * masses.len()) as u64, quiet);
+    let (mut templates, mut records) = (Vec::new(), Vec::new());
+    for (index, channel) in study.channels.iter().enumerate() {
+        for mass_gev in masses {
+            bar.set_message(format!("{} at {mass_gev} GeV", channel.name));
+            let before = records.len() as u64 * STEPS;
+            // Reports come from several threads and start as guesses; the bar only moves forward.
+            let furthest = Mutex::new(before);
+            let folded = fold_channel(study, index, *mass_gev, &|progress| {
+                let here = before + (progress.fraction.clamp(0.0, 1.0) * STEPS as f64) as u64;
+                let mut furthest = furthest.lock().unwrap_or_else(PoisonError::into_inner);
+                if here > *furthest {
+                    *furthest = here;
+                    bar.set_position(here);
+                }
+            });
+            let Folded { templates: of_channel, record } = folded.map_err(|source| {
+                bar.finish_and_clear();
+                Failure::Input(format!("channel {} at {mass_gev} GeV: {source}", channel.name))
+            })?;
+            templates.extend(of_channel);
+            records.push(record);
+            bar.set_position(records.len() as u64 * STEPS);
+        }
+    }
+    bar.finish_and_clear();
+    Ok((templates, records))
+}
+
+fn progress_bar(folds: u64, quiet: bool) -> ProgressBar {
+    let shown = !quiet && io::stderr().is_terminal();
+    let target = if shown { ProgressDrawTarget::stderr() } else { ProgressDrawTarget::hidden() };
+    let bar = ProgressBar::with_draw_target(Some(folds * STEPS), target);
+    // The template is fixed; should it ever be wrong, the plain bar serves.
+    if let Ok(style) = ProgressStyle::with_template("{bar:30} {percent:>3} %  {eta} left  {msg}") {
+        bar.set_style(style);
+    }
+    if shown {
+        bar.enable_steady_tick(std::time::Duration::from_millis(200));
+    }
+    bar
+}
+
+const HEADER: [&str; 7] =
+    ["channel", "category", "mass [GeV]", "acceptance", "peak [GeV]", "sigma_eff [GeV]", "FWHM [GeV]"];
+
+fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
+    let mut rows = Vec::new();
+    for labelled in templates {
+        let t = &labelled.template;
+        let widths = t.widths().unwrap_or_default();
+        let cell = |measured: Measured| with_error(measured.value, measured.error);
+        // Both errors of an acceptance count: that of the points and that of the event list.
+        let error = libm::hypot(t.acceptance_error, t.acceptance_list_error);
+        rows.push(vec![
+            labelled.channel.clone(),
+            labelled.category.clone(),
+            labelled.mass_gev.to_string(),
+            with_error(Some(t.acceptance), Some(error)),
+            cell(widths.peak_gev),
+            cell(widths.sigma_eff_gev),
+            cell(widths.fwhm_gev),
+        ]);
+    }
+    rows
+}
+
+fn report(out: &mut impl Write, table: &[Vec<String>], records: &[FoldRecord], path: &Path) -> io::Result<()> {
+    write_table(out, &HEADER, table, 2)?;
+    writeln!(out, "\nDigits in parentheses: numerical standard error of the last digits; -: not on the mass axis.")?;
+    for record in records {
+        if let Some(used) = record.events_used {
+            writeln!(out, "{} at {} GeV: {used} events used", record.channel, record.mass_gev)?;
+            for (reason, events) in &record.events_skipped {
+                writeln!(out, "  {events} events skipped: {reason}")?;
+            }
+        }
+        for note in &record.notes {
+            writeln!(out, "  note: {note}")?;
+        }
+    }
+    writeln!(out, "Written to {}", path.display())?;
+    out.flush()
+}

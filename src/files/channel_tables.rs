@@ -1,0 +1,183 @@
+//! The tables `[[channel]]` of a study.
+
+use super::domain::{ABS_ETA, Domain, NOT_NEGATIVE};
+use super::reader::{Item, Section};
+use crate::detector::{EtaRange, Object};
+use crate::kinematics::MAX_LEGS;
+use crate::process::{Category, Channel, Cuts, Decay, MassAxis, ShapeChoice};
+
+const SHAPES: [(&str, ShapeChoice); 4] = [
+    ("gaussian", ShapeChoice::Gaussian),
+    ("crystal-ball", ShapeChoice::CrystalBall),
+    ("double-crystal-ball", ShapeChoice::DoubleCrystalBall),
+    ("gauss-exp", ShapeChoice::GaussExp),
+];
+
+/// Most bins of an axis.
+const MOST_BINS: u64 = 100_000;
+
+/// Largest measured |eta| of a cut.
+const LARGEST_ABS_ETA: Domain =
+    Domain { contains: |x| x > 0.0 && (ABS_ETA.contains)(x), text: "an |eta| larger than 0, up to 20" };
+
+/// A channel with the lines that later messages need.
+#[derive(Debug)]
+pub(super) struct PlacedChannel {
+    pub channel: Channel,
+    /// Where its decay and its axis stand.
+    pub decay_line: usize,
+    pub axis_line: usize,
+    /// Its name in keys, `channel.two-photon`, and the key of its decay.
+    pub path: String,
+    pub decay_key: &'static str,
+}
+
+/// Reads the channels; those whose legs or axis could not be read are left out. `generated` says whether the events are
+/// generated, if that is known.
+pub(super) fn read(sections: Vec<Section<'_>>, generated: Option<bool>) -> Vec<PlacedChannel> {
+    let mut seen: Vec<(String, usize)> = Vec::new();
+    let mut channels = Vec::new();
+    for mut section in sections {
+        let name = section.name("name", "a unique name for the channel");
+        match seen.iter().find(|(other, _)| !name.is_empty() && *other == name) {
+            Some((_, line)) => section.problem(
+                "name",
+                format!("{name:?} names another channel (line {line}) too; every channel needs its own name"),
+            ),
+            None => seen.push((name.clone(), section.line)),
+        }
+        channels.extend(channel(section, name, generated));
+    }
+    channels
+}
+
+fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> Option<PlacedChannel> {
+    let decay = decay(&mut section, generated);
+    let legs = decay.as_ref().map_or(MAX_LEGS, |decay| decay.legs().len());
+    let cuts = Cuts {
+        max_abs_eta: section.optional("max_abs_eta").map(|item| item.number(&LARGEST_ABS_ETA)),
+        gap_abs_eta: section.optional("gap_abs_eta").map(|item| {
+            let (low, high) = item.rising_pair(&ABS_ETA);
+            EtaRange { low, high }
+        }),
+        min_pt_gev: per_leg(section.optional("min_pt_gev"), legs),
+        min_pt_over_mass: per_leg(section.optional("min_pt_over_mass"), legs),
+    };
+    let axis = axis(&mut section);
+    let shape = section.optional("shape").and_then(|item| item.word(&SHAPES));
+    let categories = categories(section.tables("category"));
+    let path = section.path.clone();
+    let decay_key = if matches!(decay, Some(Decay::Cascade(_))) { "via" } else { "legs" };
+    let decay_line = section.line_of(decay_key);
+    let axis_line = section.line_of("mass_axis");
+    section.finish();
+    let channel = Channel {
+        name,
+        decay: decay?,
+        cuts,
+        axis: axis?,
+        shape: shape.unwrap_or(ShapeChoice::DoubleCrystalBall),
+        categories,
+    };
+    Some(PlacedChannel { channel, decay_line, axis_line, path, decay_key })
+}
+
+fn decay(section: &mut Section<'_>, generated: Option<bool>) -> Option<Decay> {
+    match (section.optional("legs"), section.optional("via")) {
+        (Some(item), None) => {
+            let legs = objects(&item)?;
+            if generated == Some(true) && legs.len() != 2 {
+                item.problem(format!(
+                    "found {} legs, must be 2 with `production`; give `via` for four legs, or events from a file",
+                    legs.len()
+                ));
+                return None;
+            }
+            if !(2..=MAX_LEGS).contains(&legs.len()) {
+                item.problem(format!("found {} legs, must be 2 to {MAX_LEGS}", legs.len()));
+                return None;
+            }
+            Some(Decay::Direct(legs))
+        }
+        (None, Some(item)) => cascade(&item),
+        (Some(_), Some(via)) => {
+            via.problem("`legs` is there too; give one of them");
+            None
+        }
+        (None, None) => {
+            section.problem("legs", "missing; give the legs, as [\"photon\", \"photon\"], or `via` for X -> V V");
+            None
+        }
+    }
+}
+
+fn objects(item: &Item<'_>) -> Option<Vec<Object>> {
+    let words = Object::ALL.map(|object| (object.name(), object));
+    let found: Vec<Option<Object>> = item.list()?.iter().map(|element| element.word(&words)).collect();
+    found.into_iter().collect()
+}
+
+fn cascade(item: &Item<'_>) -> Option<Decay> {
+    const ALLOWED: &str = "two pairs of legs, as [[\"electron\", \"electron\"], [\"muon\", \"muon\"]]";
+    let items = item.list()?;
+    let [first, second] = items.as_slice() else {
+        item.reject(ALLOWED);
+        return None;
+    };
+    let pair = |item: &Item<'_>| -> Option<[Object; 2]> {
+        let objects = objects(item)?;
+        let pair = objects.as_slice().try_into().ok();
+        if pair.is_none() {
+            item.problem(format!("found {} legs, must be {ALLOWED}", objects.len()));
+        }
+        pair
+    };
+    let (first, second) = (pair(first), pair(second));
+    Some(Decay::Cascade([first?, second?]))
+}
+
+fn per_leg(item: Option<Item<'_>>, legs: usize) -> Vec<f64> {
+    let Some(item) = item else { return Vec::new() };
+    let values = item.numbers(&NOT_NEGATIVE);
+    if values.len() > legs {
+        item.problem(format!("found {} values, must be at most one a leg ({legs}), in falling pT", values.len()));
+    }
+    values
+}
+
+fn axis(section: &mut Section<'_>) -> Option<MassAxis> {
+    let what = "the axis of reconstructed mass, { low_gev = …, high_gev = …, bins = … }";
+    let mut table = section.required("mass_axis", what)?.section()?;
+    let low = table.number("low_gev", &NOT_NEGATIVE);
+    let high = table.number("high_gev", &NOT_NEGATIVE);
+    let bins = table.required("bins", "the number of bins").and_then(|item| item.whole(1, MOST_BINS));
+    let relative = table.flag_or("relative", false);
+    if low >= high {
+        let message = format!("found {low} to {high}, which is empty: `low_gev` must be below `high_gev`");
+        table.problem("low_gev", message);
+    }
+    table.finish();
+    Some(MassAxis { low, high, bins: bins? as usize, relative })
+}
+
+fn categories(sections: Vec<Section<'_>>) -> Vec<Category> {
+    if sections.is_empty() {
+        return vec![Category { name: "all".to_owned(), max_abs_eta: None }];
+    }
+    let mut categories: Vec<Category> = Vec::new();
+    for mut section in sections {
+        let name = section.name("name", "a name for the category");
+        if !name.is_empty() && categories.iter().any(|other| other.name == name) {
+            section
+                .problem("name", format!("{name:?} names another category of the channel too; give each its own name"));
+        }
+        let max_abs_eta = section.optional("max_abs_eta").map(|item| item.number(&LARGEST_ABS_ETA));
+        if let Some(before) = categories.iter().find(|other| other.max_abs_eta.is_none()) {
+            let message = format!("stays empty: category {:?} before it takes every event", before.name);
+            section.warn("name", message);
+        }
+        section.finish();
+        categories.push(Category { name, max_abs_eta });
+    }
+    categories
+}

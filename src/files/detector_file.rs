@@ -1,0 +1,178 @@
+//! The detector file: all entries, and what they must satisfy together.
+
+use std::path::Path;
+
+use super::detector_entries as entries;
+use super::reader::Section;
+use super::source::{InputText, Sheet, Unreadable, read_text};
+use super::{FileDigest, LoadedDetector};
+use crate::detector::{Calorimeter, Detector, EtaRange, Object};
+use crate::problem::{Problem, Problems};
+
+/// How far from 1 the fractions of one region may add up.
+const FRACTION_TOLERANCE: f64 = 1e-9;
+
+/// Reads and checks a detector file.
+///
+/// # Errors
+/// Every problem of the file, not only the first.
+pub fn load_detector(path: &Path) -> Result<LoadedDetector, Problems> {
+    let reading = read(path).map_err(|unreadable| unreadable.of_file(path))?;
+    match reading.detector {
+        Some(detector) if reading.problems.is_empty() => {
+            Ok(LoadedDetector { detector, input: reading.input, warnings: reading.warnings })
+        }
+        _ => Err(Problems(reading.problems)),
+    }
+}
+
+/// A detector file as far as it could be read.
+#[derive(Debug)]
+pub(super) struct DetectorReading {
+    /// What could be read, for further checks even where there are problems; `None` where some entry's object or region
+    /// is not known.
+    pub detector: Option<Detector>,
+    pub input: FileDigest,
+    pub problems: Vec<Problem>,
+    pub warnings: Vec<Problem>,
+}
+
+pub(super) fn read(path: &Path) -> Result<DetectorReading, Unreadable> {
+    let InputText { text, input } = read_text(path)?;
+    let sheet = Sheet::new(path, &text);
+    let detector = sheet.parse(&text).and_then(|table| {
+        let root = Section::new(&sheet, 1, String::new(), table.get_ref());
+        detector(root)
+    });
+    let (problems, warnings) = sheet.into_findings();
+    Ok(DetectorReading { detector, input, problems, warnings })
+}
+
+/// An entry as it was read, with its line for later messages.
+struct Placed<T> {
+    line: usize,
+    entry: T,
+}
+
+fn detector(mut root: Section<'_>) -> Option<Detector> {
+    let sheet = root.sheet;
+    let name = root.title("name");
+    root.not_yet("efficiency");
+    let (calorimeters, calorimeters_whole) = placed(root.tables("calorimeter"), entries::calorimeter);
+    let (trackers, trackers_whole) = placed(root.tables("tracker"), entries::tracker);
+    let (directions, _) = placed(root.tables("direction"), entries::direction);
+    let vertex = root.table("vertex").map(entries::vertex);
+    if root.optional("calorimeter").is_none() && root.optional("tracker").is_none() {
+        root.problem("calorimeter", "neither [[calorimeter]] nor [[tracker]] is there; give at least one entry");
+    }
+    let whole = calorimeters_whole && trackers_whole;
+
+    unique_names(
+        sheet,
+        calorimeters
+            .iter()
+            .map(|placed| (placed.line, "calorimeter", placed.entry.name.as_str()))
+            .chain(trackers.iter().map(|placed| (placed.line, "tracker", placed.entry.name.as_str()))),
+    );
+    one_direction_an_object(sheet, directions.iter().map(|placed| (placed.line, placed.entry.object)));
+    fractions(sheet, &calorimeters);
+    let lines = (lines(&calorimeters), lines(&trackers));
+    let detector = Detector {
+        name,
+        calorimeters: calorimeters.into_iter().map(|placed| placed.entry).collect(),
+        trackers: trackers.into_iter().map(|placed| placed.entry).collect(),
+        directions: directions.into_iter().map(|placed| placed.entry).collect(),
+        vertex,
+    };
+    warn_of_hidden_entries(sheet, &detector, &lines.0, &lines.1);
+    root.finish();
+    whole.then_some(detector)
+}
+
+/// The entries that could be read, and whether all could.
+fn placed<'a, T>(sections: Vec<Section<'a>>, read: fn(Section<'a>) -> Option<T>) -> (Vec<Placed<T>>, bool) {
+    let count = sections.len();
+    let entries: Vec<Placed<T>> = sections
+        .into_iter()
+        .filter_map(|section| {
+            let line = section.line;
+            read(section).map(|entry| Placed { line, entry })
+        })
+        .collect();
+    let whole = entries.len() == count;
+    (entries, whole)
+}
+
+fn lines<T>(entries: &[Placed<T>]) -> Vec<usize> {
+    entries.iter().map(|placed| placed.line).collect()
+}
+
+fn unique_names<'n>(sheet: &Sheet, names: impl Iterator<Item = (usize, &'static str, &'n str)>) {
+    let mut seen: Vec<(usize, &str)> = Vec::new();
+    for (line, kind, name) in names.filter(|(_, _, name)| !name.is_empty()) {
+        match seen.iter().find(|(_, other)| *other == name) {
+            Some((first, _)) => sheet.problem(
+                line,
+                &format!("{kind}.{name}.name"),
+                format!("{name:?} names another entry (line {first}) too; every calorimeter and tracker entry needs its own name"),
+            ),
+            None => seen.push((line, name)),
+        }
+    }
+}
+
+fn one_direction_an_object(sheet: &Sheet, directions: impl Iterator<Item = (usize, Object)>) {
+    let mut seen: Vec<(usize, Object)> = Vec::new();
+    for (line, object) in directions {
+        match seen.iter().find(|(_, other)| *other == object) {
+            Some((first, _)) => sheet.problem(
+                line,
+                "direction.object",
+                format!("a second direction of the {object} (the first is at line {first}); keep one an object"),
+            ),
+            None => seen.push((line, object)),
+        }
+    }
+}
+
+fn fractions(sheet: &Sheet, calorimeters: &[Placed<Calorimeter>]) {
+    let mut seen: Vec<(Object, EtaRange)> = Vec::new();
+    for Placed { line, entry } in calorimeters {
+        if seen.contains(&(entry.object, entry.eta)) {
+            continue;
+        }
+        seen.push((entry.object, entry.eta));
+        let sharing: Vec<&Calorimeter> = calorimeters
+            .iter()
+            .map(|other| &other.entry)
+            .filter(|other| other.object == entry.object && other.eta == entry.eta)
+            .collect();
+        let sum: f64 = sharing.iter().map(|other| other.fraction).sum();
+        if (sum - 1.0).abs() > FRACTION_TOLERANCE {
+            let terms = sharing.iter().map(|other| format!("{} {}", other.name, other.fraction)).collect::<Vec<_>>();
+            let message = format!(
+                "the fractions of the {} entries for |eta| {} to {} add to {sum} ({}), must add to 1",
+                entry.object,
+                entry.eta.low,
+                entry.eta.high,
+                terms.join(", ")
+            );
+            sheet.problem(*line, &format!("calorimeter.{}.fraction", entry.name), message);
+        }
+    }
+}
+
+fn warn_of_hidden_entries(sheet: &Sheet, detector: &Detector, calorimeter_lines: &[usize], tracker_lines: &[usize]) {
+    const MESSAGE: &str = "never used: entries before it measure its whole range; reorder the entries or remove it";
+    let regions = |object| detector.calorimeter_regions(object);
+    for (index, (entry, line)) in detector.calorimeters.iter().zip(calorimeter_lines).enumerate() {
+        if !regions(entry.object).iter().any(|region| region.entries.contains(&index)) {
+            sheet.warn(*line, &format!("calorimeter.{}", entry.name), MESSAGE);
+        }
+    }
+    for (index, (entry, line)) in detector.trackers.iter().zip(tracker_lines).enumerate() {
+        if !detector.tracker_regions(entry.object).iter().any(|region| region.entry == index) {
+            sheet.warn(*line, &format!("tracker.{}", entry.name), MESSAGE);
+        }
+    }
+}

@@ -1,0 +1,173 @@
+//! The table `[resonance]` of a study.
+
+use std::path::Path;
+
+use super::FileDigest;
+use super::domain::{ANY, MASS, NOT_NEGATIVE};
+use super::reader::{Item, Section};
+use super::source::{Sheet, Unreadable, digest};
+use super::spectrum_file;
+use crate::problem::Problem;
+use crate::process::{EventSource, Intermediate, Natural, Production, Resonance, Width};
+
+const NATURAL_SHAPES: [(&str, Natural); 3] = [
+    ("breit-wigner", Natural::BreitWigner),
+    ("relativistic", Natural::Relativistic),
+    ("running-width", Natural::RunningWidth),
+];
+
+/// The V of X -> V V(*) when none is given: mass and width in GeV.
+const INTERMEDIATE: Intermediate = Intermediate { mass_gev: 91.188, width_gev: 2.4955 };
+
+/// What other files of the study brought along.
+#[derive(Debug, Default)]
+pub(super) struct OtherFiles {
+    pub inputs: Vec<FileDigest>,
+    pub problems: Vec<Problem>,
+}
+
+/// Reads the table; `None` when it is not known where the events come from.
+pub(super) fn read(mut section: Section<'_>, files: &mut OtherFiles) -> Option<Resonance> {
+    let masses_gev = masses(&mut section);
+    let width = section.table("width").map_or(Width::Gev(0.0), width);
+    let natural = section.optional("natural").and_then(|item| item.word(&NATURAL_SHAPES));
+    let falloff_power = section.number_or("falloff_power", &ANY, 0.0);
+    let source = source(&mut section, files);
+    if matches!(source, Some(EventSource::File(_))) && masses_gev.len() > 1 {
+        let message = format!(
+            "found {} masses, must be one: with `events` it labels the result and scales a relative axis",
+            masses_gev.len()
+        );
+        section.problem("masses_gev", message);
+    }
+    let intermediate = section.table("intermediate").map_or(INTERMEDIATE, |mut table| {
+        let intermediate = Intermediate {
+            mass_gev: table.number_or("mass_gev", &MASS, INTERMEDIATE.mass_gev),
+            width_gev: table.number_or("width_gev", &MASS, INTERMEDIATE.width_gev),
+        };
+        table.finish();
+        intermediate
+    });
+    section.not_yet("radiation");
+    section.finish();
+    Some(Resonance {
+        masses_gev,
+        width,
+        natural: natural.unwrap_or(Natural::Relativistic),
+        falloff_power,
+        source: source?,
+        intermediate,
+    })
+}
+
+fn masses(section: &mut Section<'_>) -> Vec<f64> {
+    let Some(item) = section.required("masses_gev", "the masses in GeV, rising") else { return Vec::new() };
+    let Some(items) = item.list() else { return Vec::new() };
+    if items.is_empty() {
+        item.problem("found no mass; give at least one, in GeV");
+    }
+    let masses: Vec<f64> = items.iter().map(|item| item.number(&MASS)).collect();
+    for ((item, mass), before) in items.iter().zip(&masses).skip(1).zip(&masses) {
+        if mass <= before {
+            item.problem(format!("found {mass} after {before}; the masses must rise, each once"));
+        }
+    }
+    masses
+}
+
+fn width(mut section: Section<'_>) -> Width {
+    let gev = section.optional("gev").map(|item| item.number(&NOT_NEGATIVE));
+    let relative = section.optional("relative").map(|item| item.number(&NOT_NEGATIVE));
+    let width = match (gev, relative) {
+        (Some(gev), None) => Width::Gev(gev),
+        (None, Some(relative)) => Width::Relative(relative),
+        (both, _) => {
+            let found = if both.is_some() { "both `gev` and `relative`" } else { "neither `gev` nor `relative`" };
+            section.sheet.problem(section.line, &section.path, format!("found {found}, must be one of them"));
+            Width::Gev(f64::NAN)
+        }
+    };
+    section.finish();
+    width
+}
+
+fn source(section: &mut Section<'_>, files: &mut OtherFiles) -> Option<EventSource> {
+    match (section.optional("production"), section.optional("events")) {
+        (Some(item), None) => production(item.section()?, files).map(EventSource::Generated),
+        (None, Some(item)) => events(&item, section.sheet, files),
+        (Some(_), Some(events)) => {
+            events.problem("`production` is there too; give either generated events or a file, not both");
+            None
+        }
+        (None, None) => {
+            let message = "missing; say where the events come from: `production = { pt_mean_gev = …, rapidity_sigma = … }` \
+                           or `events = \"file.lhe\"`";
+            section.problem("production", message);
+            None
+        }
+    }
+}
+
+fn production(mut section: Section<'_>, files: &mut OtherFiles) -> Option<Production> {
+    let Some(item) = section.optional("table") else {
+        let production = Production::Spectrum {
+            pt_mean_gev: section.number("pt_mean_gev", &NOT_NEGATIVE),
+            rapidity_sigma: section.number("rapidity_sigma", &NOT_NEGATIVE),
+        };
+        section.finish();
+        return Some(production);
+    };
+    for key in ["pt_mean_gev", "rapidity_sigma"] {
+        if section.optional(key).is_some() {
+            section.problem(key, "`table` is there too; give the table or the two numbers, not both");
+        }
+    }
+    let sheet = section.sheet;
+    section.finish();
+    let path = sheet.resolve(file_name(&item)?);
+    match spectrum_file::read(&path) {
+        Ok((cells, input, problems)) => {
+            files.inputs.push(input);
+            files.problems.extend(problems);
+            Some(Production::Table(cells))
+        }
+        Err(Unreadable::Access(message)) => {
+            item.problem(message);
+            None
+        }
+        Err(Unreadable::Content(problem)) => {
+            files.problems.push(problem);
+            None
+        }
+    }
+}
+
+fn events(item: &Item<'_>, sheet: &Sheet, files: &mut OtherFiles) -> Option<EventSource> {
+    let named = file_name(item)?;
+    if is_csv(named) {
+        item.problem("events from CSV are not available in this version yet; give an LHE file (.lhe, .lhe.gz)");
+        return None;
+    }
+    let path = sheet.resolve(named);
+    match digest(&path) {
+        Ok(input) => files.inputs.push(input),
+        Err(message) => item.problem(message),
+    }
+    Some(EventSource::File(path))
+}
+
+/// The name of a file; `None` after a problem.
+pub(super) fn file_name<'a>(item: &Item<'a>) -> Option<&'a str> {
+    let named = item.text()?;
+    if named.trim().is_empty() {
+        item.problem("found an empty text, must be the path of a file, relative to this file");
+        return None;
+    }
+    Some(named)
+}
+
+fn is_csv(named: &str) -> bool {
+    let lower = named.to_lowercase();
+    let bare = lower.strip_suffix(".gz").unwrap_or(&lower);
+    Path::new(bare).extension().is_some_and(|extension| extension == "csv")
+}

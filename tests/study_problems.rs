@@ -1,0 +1,258 @@
+//! Bad detector and study files: which line and key is named, and what is said.
+#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic)]
+
+use std::path::{Path, PathBuf};
+
+use peakfold::files::{LoadedStudy, load_study};
+use peakfold::problem::{Problem, Problems};
+
+const DETECTOR: &str = include_str!("inputs/detector.toml");
+const STUDY: &str = include_str!("inputs/study.toml");
+const SPECTRUM: &str = include_str!("inputs/spectrum.csv");
+
+/// A directory with the three files, each as given.
+struct Pair {
+    directory: tempfile::TempDir,
+}
+
+impl Pair {
+    fn new(study: &str, detector: &str) -> Self {
+        let directory = tempfile::tempdir().unwrap();
+        let write = |name: &str, text: &str| std::fs::write(directory.path().join(name), text).unwrap();
+        write("study.toml", study);
+        write("detector.toml", detector);
+        write("spectrum.csv", SPECTRUM);
+        // Read as bytes only here.
+        write("truth.lhe", "abc");
+        Pair { directory }
+    }
+
+    fn path(&self, name: &str) -> PathBuf {
+        self.directory.path().join(name)
+    }
+
+    fn load(&self) -> Result<LoadedStudy, Problems> {
+        load_study(&self.path("study.toml"))
+    }
+
+    fn problems(&self) -> Vec<Problem> {
+        self.load().expect_err("the study should be refused").0
+    }
+}
+
+/// Which file is changed, what is replaced by what; then where the one problem must stand: text of its line, key, parts
+/// of the message.
+type Case = (&'static str, &'static str, &'static str, &'static str, &'static str, &'static [&'static str]);
+
+const S: &str = "study.toml";
+const D: &str = "detector.toml";
+const AXIS: &str = "mass_axis = { low_gev = 0.8, high_gev = 1.2, bins = 200, relative = true }";
+const GEOMETRY: &str = "points = 12";
+
+#[rustfmt::skip]
+const BAD: &[Case] = &[
+    // Keys.
+    (D, "constant = 0.007", "constnat = 0.007", "constnat", "calorimeter.photon-plain.constnat", &["unknown key", "did you mean `constant`?"]),
+    (D, "noise_gev = 0.25", "noise = 0.25", "noise = ", "calorimeter.photon-plain.noise", &["unknown key", "did you mean `noise_gev`?"]),
+    (D, "alpha_low = 1.6", "alphalow = 1.6, alpha_low = 1.6", "tail =", "calorimeter.photon-plain.tail.alphalow", &["`alpha_low`"]),
+    (D, "stochastic = 0.12\n", "", "[[calorimeter]]\nname = \"photon-converted\"", "calorimeter.photon-converted.stochastic", &["missing", "0 or more"]),
+    (S, "seed = 20261", "sede = 20261", "sede", "sede", &["did you mean `seed`?"]),
+    (S, "[resonance]", "[resonnance]", "name = \"All", "resonance", &["missing"]),
+    (S, "max_abs_eta = 0.8", "max_eta = 0.8", "max_eta", "channel.two-photon.category.central.max_eta", &["did you mean `max_abs_eta`?"]),
+    (S, "shape = ", "zzz = ", "zzz", "channel.two-photon.zzz", &["unknown key: allowed: ", "`shape`"]),
+    // Numbers.
+    (D, "stochastic = 0.095", "stochastic = -0.095", "-0.095", "calorimeter.photon-plain.stochastic", &["found -0.095", "0 or more"]),
+    (D, "constant = 0.007", "constant = nan", "= nan", "calorimeter.photon-plain.constant", &["found nan", "finite"]),
+    (D, "constant = 0.007", "constant = inf", "= inf", "calorimeter.photon-plain.constant", &["found inf", "finite"]),
+    (D, "constant = 0.007", "constant = 1e400", "1e400", "calorimeter.photon-plain.constant", &["found 1e400", "finite"]),
+    (D, "constant = 0.007", "constant = \"0.007\"", "\"0.007\"", "calorimeter.photon-plain.constant", &["found \"0.007\"", "number"]),
+    (D, "bias = -0.001", "bias = -1.0", "bias", "calorimeter.photon-plain.bias", &["larger than -1"]),
+    (D, "eta = [0, 1.4]", "eta = [1.4, 1.4]", "[1.4, 1.4]", "calorimeter.electron-barrel.eta", &["empty"]),
+    (D, "eta = [0, 1.4]", "eta = [-1, 1.4]", "[-1, 1.4]", "calorimeter.electron-barrel.eta[1]", &["found -1", "from 0 to 20"]),
+    (D, "eta = [0, 1.4]", "eta = [0, 1, 2]", "[0, 1, 2]", "calorimeter.electron-barrel.eta", &["found 3 numbers", "two"]),
+    (D, "alpha_low = 1.6", "alpha_low = 0", "tail =", "calorimeter.photon-plain.tail.alpha_low", &["found 0", "larger than 0"]),
+    (D, "n_high = 8.0", "n_high = 1.0", "tail =", "calorimeter.photon-plain.tail.n_high", &["found 1.0", "larger than 1"]),
+    (D, "fraction = 0.3", "fraction = 0.2", "[[calorimeter]]", "calorimeter.photon-plain.fraction", &["add to 0.8999999999999999", "photon-plain 0.7, photon-converted 0.2", "must add to 1"]),
+    (D, "right_choice = 0.8", "right_choice = 1.1", "right_choice", "vertex.right_choice", &["from 0 to 1"]),
+    (D, GEOMETRY, "points = 1", "points = 1", "tracker.electron-track.geometry.points", &["found 1", "from 2 to"]),
+    (D, "points = 12\npoint_resolution_um = 25.0\nradiation_lengths = 0.3\nvertex_constraint = true", "points = 2\npoint_resolution_um = 25.0\nradiation_lengths = 0.3", "points = 2", "tracker.electron-track.geometry.points", &["found 2", "from 3 to"]),
+    (D, GEOMETRY, "points = 12.0", "points = 12.0", "tracker.electron-track.geometry.points", &["found 12.0", "whole number"]),
+    (D, "field_t = 3.0", "field_t = 0.0", "field_t", "tracker.electron-track.geometry.field_t", &["larger than 0"]),
+    (D, "\n[tracker.geometry]", "scattering = 0.1\n[tracker.geometry]", "scattering = 0.1", "tracker.electron-track.scattering", &["not both"]),
+    // Names, objects.
+    (D, "name = \"electron-track\"", "name = \"photon-plain\"", "[[tracker]]\nname = \"photon-plain\"", "tracker.photon-plain.name", &["names another entry (line 3)"]),
+    (D, "name = \"electron-track\"", "name = \"a/b\"", "a/b", "tracker[2].name", &["slashes"]),
+    (D, "name = \"electron-track\"", "name = \"\"", "name = \"\"", "tracker[2].name", &["must not be empty"]),
+    (D, "object = \"muon\"", "object = \"moun\"", "moun", "tracker.muon-central.object", &["found \"moun\"", "did you mean `muon`?"]),
+    (D, "object = \"muon\"", "object = \"jet\"", "\"jet\"", "tracker.muon-central.object", &["found \"jet\"", "`electron`, `muon`"]),
+    (D, "[vertex]", "[[direction]]\nobject = \"photon\"\nsigma_theta_mrad = 1\nsigma_phi_mrad = 1\n[vertex]", "[[direction]]\nobject = \"photon\"\nsigma_theta_mrad = 1\n", "direction.object", &["second direction of the photon"]),
+    // Uncertainties.
+    (D, "constant = 0.0015", "constnat = 0.0015", "constnat", "calorimeter.photon-plain.uncertainty.constnat", &["did you mean `constant`?"]),
+    (D, "constant = 0.0015", "constant = -1", "= -1,", "calorimeter.photon-plain.uncertainty.constant", &["found -1", "0 or more"]),
+    (D, "{ right_choice = \"vertex\" }", "{ spread_right_mm = \"vertex\" }", "share = { spread", "vertex.share.spread_right_mm", &["nothing to share", "no uncertainty"]),
+    (D, "share.scale = \"em-scale\"", "share.scale = \"a:b\"", "a:b", "calorimeter.electron-barrel.share.scale", &["colons"]),
+    (D, "{ geometry = { radiation_lengths = 0.02 } }", "{ scattering = 0.1 }", "scattering = 0.1", "tracker.electron-track.uncertainty.scattering", &["no such number"]),
+    // Not yet.
+    (D, "stochastic = 0.12", "stochastic = 0.12\ncalibration = \"terms.toml\"", "calibration", "calorimeter.photon-converted.calibration", &["not available in this version yet"]),
+    (D, "[vertex]", "[[efficiency]]\nobject = \"photon\"\n[vertex]", "[[efficiency]]", "efficiency", &["not available in this version yet"]),
+    (S, "falloff_power = 4.0", "radiation = { recombination_delta_r = 0.1 }", "radiation", "resonance.radiation", &["not available in this version yet"]),
+    (S, "production = { table = \"spectrum.csv\" }", "events = \"t.csv.gz\"", "t.csv.gz", "resonance.events", &["not available in this version yet"]),
+    // The study's own numbers.
+    (S, "precision = 1e-3", "precision = 0.0", "precision", "precision", &["found 0.0", "larger than 0"]),
+    (S, "precision = 1e-3", "precision = 1", "precision", "precision", &["smaller than 1"]),
+    (S, "max_points = 65536", "max_points = 4095", "4095", "max_points", &["found 4095", "from 4096"]),
+    (S, "seed = 20261", "seed = -1", "seed", "seed", &["found -1", "whole number"]),
+    (S, "detector = \"detector.toml\"", "detector = \"nowhere.toml\"", "nowhere", "detector", &["there is no file", "nowhere.toml"]),
+    (S, "detector = \"detector.toml\"", "detector = \".\"", "\".\"", "detector", &["is a directory"]),
+    (S, "[150, 180.0, 210.0]", "[]", "masses_gev", "resonance.masses_gev", &["found no mass"]),
+    (S, "[150, 180.0, 210.0]", "[150,\n0.0, 210.0]", "0.0, 210.0", "resonance.masses_gev[2]", &["found 0.0", "larger than 0"]),
+    (S, "[150, 180.0, 210.0]", "[150,\n150, 210.0]", "150, 210.0", "resonance.masses_gev[2]", &["found 150 after 150", "rise"]),
+    (S, "[150, 180.0, 210.0]", "[0.2, 180, 210]", "masses_gev", "resonance.masses_gev", &["found 0.2", "\"mixed\"", "0.21233874"]),
+    (S, "relative = 0.02", "relative = -0.02", "width", "resonance.width.relative", &["found -0.02"]),
+    (S, "{ relative = 0.02 }", "{ relative = 0.02, gev = 1 }", "width", "resonance.width", &["both"]),
+    (S, "{ relative = 0.02 }", "{}", "width", "resonance.width", &["neither"]),
+    (S, "\"running-width\"", "\"runing-width\"", "natural", "resonance.natural", &["did you mean `running-width`?"]),
+    (S, "production = { table = \"spectrum.csv\" }\n", "", "[resonance]", "resonance.production", &["missing", "events"]),
+    (S, "falloff_power = 4.0", "events = \"truth.lhe\"", "truth.lhe", "resonance.events", &["not both"]),
+    (S, "production = { table = \"spectrum.csv\" }", "events = \"truth.lhe\"", "masses_gev", "resonance.masses_gev", &["found 3 masses", "must be one"]),
+    (S, "[150, 180.0, 210.0]\nwidth = { relative = 0.02 }\nnatural = \"running-width\"\nfalloff_power = 4.0\nproduction = { table = \"spectrum.csv\" }", "[150]\nevents = \"gone.lhe\"", "gone", "resonance.events", &["there is no file"]),
+    (S, "table = \"spectrum.csv\"", "pt_mean_gev = -1, rapidity_sigma = 1", "pt_mean", "resonance.production.pt_mean_gev", &["found -1"]),
+    (S, "table = \"spectrum.csv\"", "table = \"spectrum.csv\", rapidity_sigma = 1", "production", "resonance.production.rapidity_sigma", &["not both"]),
+    (S, "width_gev = 2.0", "width_gev = 0", "intermediate", "resonance.intermediate.width_gev", &["larger than 0"]),
+    // Channels.
+    (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\"]", "legs", "channel.two-photon.legs", &["found 1 legs", "must be 2"]),
+    (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\", \"photon\"]", "legs", "channel.two-photon.legs", &["found 3 legs", "must be 2"]),
+    (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"foton\"]", "legs", "channel.two-photon.legs[2]", &["did you mean `photon`?"]),
+    (S, "legs = [\"photon\", \"photon\"]\n", "", "[[channel]]", "channel.two-photon.legs", &["missing", "`via`"]),
+    (S, "via = ", "legs = [\"muon\", \"muon\"]\nvia = ", "via", "channel.mixed.via", &["`legs` is there too"]),
+    (S, "[\"muon\", \"muon\"]]", "[\"muon\"]]", "via", "channel.mixed.via[2]", &["found 1 legs", "two pairs"]),
+    (S, ", [\"muon\", \"muon\"]]", "]", "via", "channel.mixed.via", &["two pairs"]),
+    (S, "legs = [\"photon\", \"photon\"]", "legs = [\"jet\", \"jet\"]", "legs", "channel.two-photon.legs", &["no entry of the detector measures the leg \"jet\""]),
+    (S, "max_abs_eta = 1.4\ngap_abs_eta = [0.4, 0.5]", "max_abs_eta = 1.4\ngap_abs_eta = [0.0, 1.4]", "legs", "channel.two-photon.legs", &["within the acceptance", "nowhere", "0 to 1.4"]),
+    (S, "gap_abs_eta = [0.4, 0.5]", "gap_abs_eta = [0.5, 0.4]", "gap", "channel.two-photon.gap_abs_eta", &["empty"]),
+    (S, "max_abs_eta = 1.4", "max_abs_eta = 0", "max_abs_eta = 0\n", "channel.two-photon.max_abs_eta", &["larger than 0"]),
+    (S, "min_pt_gev = [30.0]", "min_pt_gev = [30, 20, 10]", "min_pt_gev", "channel.two-photon.min_pt_gev", &["found 3 values", "(2)"]),
+    (S, "min_pt_gev = [30.0]", "min_pt_gev = [30, -20]", "min_pt_gev", "channel.two-photon.min_pt_gev[2]", &["found -20"]),
+    (S, "bins = 200", "bins = 0", "bins = 0", "channel.two-photon.mass_axis.bins", &["found 0", "from 1 to 100000"]),
+    (S, "bins = 200", "bins = 1000000000", "bins = 1", "channel.two-photon.mass_axis.bins", &["from 1 to 100000"]),
+    (S, "low_gev = 0.8", "low_gev = 1.2", "mass_axis", "channel.two-photon.mass_axis.low_gev", &["1.2 to 1.2", "below"]),
+    (S, "low_gev = 0.8", "low_gev = -0.8", "mass_axis", "channel.two-photon.mass_axis.low_gev", &["found -0.8"]),
+    (S, "relative = true", "relative = 1", "mass_axis", "channel.two-photon.mass_axis.relative", &["true or false"]),
+    (S, AXIS, "", "[[channel]]", "channel.two-photon.mass_axis", &["missing"]),
+    (S, "\"gauss-exp\"", "\"gaus\"", "gaus", "channel.two-photon.shape", &["did you mean `gaussian`?"]),
+    (S, "name = \"mixed\"", "name = \"two-photon\"", "name = \"two-photon\"\nvia", "channel.two-photon.name", &["another channel (line 15)"]),
+    (S, "name = \"mixed\"", "name = \"a,b\"", "a,b", "channel[2].name", &["commas"]),
+    (S, "name = \"rest\"", "name = \"central\"", "name = \"central\"\n\n", "channel.two-photon.category.central.name", &["another category"]),
+    (S, "name = \"rest\"", "name = \"re'st\"", "re'st", "channel.two-photon.category[2].name", &["quotes"]),
+    // Not TOML.
+    (S, "seed = 20261", "seed = ", "seed = ", "", &["not TOML"]),
+];
+
+/// What is wrong with the answer to a case; `None` when nothing is.
+fn fault((file, from, to, line_text, key, parts): &Case) -> Option<String> {
+    let original = if *file == S { STUDY } else { DETECTOR };
+    assert!(original.contains(from), "{from:?} stands in {file}");
+    let changed = original.replacen(from, to, 1);
+    let pair = if *file == S { Pair::new(&changed, DETECTOR) } else { Pair::new(STUDY, &changed) };
+    let problems = pair.problems();
+    let line = changed[..changed.find(line_text).expect(line_text)].matches('\n').count() + 1;
+    let found = problems.iter().find(|problem| problem.key.as_deref().unwrap_or("") == *key);
+    let why = match found {
+        None => "no problem of this key".to_owned(),
+        // A misspelt required table is unknown and missing.
+        Some(_) if problems.len() > 1 && *key != "resonance" => "more than one problem".to_owned(),
+        Some(found) if found.file != pair.path(file) => "another file".to_owned(),
+        Some(found) if found.line != Some(line) => format!("line {line} expected"),
+        Some(found) => {
+            let missing = parts.iter().find(|part| !found.message.contains(**part))?;
+            format!("{missing:?} expected in the message")
+        }
+    };
+    Some(format!("{from:?} -> {to:?}: {why}, for {key}\n{}\n", Problems(problems)))
+}
+
+#[test]
+fn bad_inputs_name_line_key_and_what_to_do() {
+    let faults: Vec<String> = BAD.iter().filter_map(fault).collect();
+    assert!(faults.is_empty(), "{}", faults.join("\n"));
+}
+
+#[test]
+fn problems_of_all_files_are_reported_together() {
+    let study = STUDY.replace("seed = 20261", "sed = 20261").replace("bins = 100 ", "bins = 0 ");
+    let detector = DETECTOR.replace("noise_gev = 0.25", "noise_gev = -1").replace("field_t = 3.0\n", "");
+    let pair = Pair::new(&study, &detector);
+    std::fs::write(pair.path("spectrum.csv"), format!("{SPECTRUM}50,40,-1,1,1\n60,70,a,1,-1\n70,80\n")).unwrap();
+    let found: Vec<_> = pair
+        .problems()
+        .into_iter()
+        .map(|p| (p.file.file_name().unwrap().to_str().unwrap().to_owned(), p.line.unwrap(), p.key.unwrap()))
+        .collect();
+    let line = |text: &str, part: &str| text[..text.find(part).unwrap()].matches('\n').count() + 1;
+    let expected = [
+        ("study.toml", 3, "sed"),
+        ("study.toml", line(&study, "bins = 0"), "channel.mixed.mass_axis.bins"),
+        ("detector.toml", line(&detector, "noise_gev = -1"), "calorimeter.photon-plain.noise_gev"),
+        ("detector.toml", line(&detector, "[tracker.geometry]"), "tracker.electron-track.geometry.field_t"),
+        ("spectrum.csv", 5, "pt_low_gev"),
+        ("spectrum.csv", 6, "rapidity_low"),
+        ("spectrum.csv", 6, "weight"),
+        ("spectrum.csv", 7, "pt_low_gev,pt_high_gev,rapidity_low,rapidity_high,weight"),
+    ];
+    assert_eq!(found, expected.map(|(file, line, key)| (file.to_owned(), line, key.to_owned())));
+}
+
+#[test]
+fn spectrum_without_weight_or_with_other_columns() {
+    let pair = Pair::new(STUDY, DETECTOR);
+    let refused = |text: &str, part: &str| {
+        std::fs::write(pair.path("spectrum.csv"), text).unwrap();
+        let problems = pair.problems();
+        assert_eq!(problems.len(), 1, "{problems:?}");
+        assert!(problems[0].message.contains(part), "{problems:?}");
+        assert_eq!(problems[0].file, pair.path("spectrum.csv"));
+    };
+    refused("pt_low_gev,pt_high_gev,rapidity_low,rapidity_high,weight\n0,1,-1,1,0\n", "no cell has a weight");
+    refused("pt_low_gev,pt_high_gev,rapidity_low,rapidity_high\n0,1,-1,1\n", "must be pt_low_gev,");
+    refused("", "must be pt_low_gev,");
+    std::fs::remove_file(pair.path("spectrum.csv")).unwrap();
+    let problems = pair.problems();
+    assert_eq!(problems[0].key.as_deref(), Some("resonance.production.table"));
+}
+
+#[test]
+fn files_that_cannot_be_read() {
+    let pair = Pair::new(STUDY, DETECTOR);
+    let of = |path: &Path| load_study(path).expect_err("refused").0.remove(0);
+    let missing = of(&pair.path("gone.toml"));
+    assert!(missing.message.contains("there is no file"), "{missing}");
+    let directory = of(pair.directory.path());
+    assert!(directory.message.contains("is a directory"), "{directory}");
+    std::fs::write(pair.path("study.toml"), b"name = \"a\"\nx = \"\xff\"\n").unwrap();
+    let bytes = of(&pair.path("study.toml"));
+    assert!(bytes.message.contains("not UTF-8") && bytes.line == Some(2), "{bytes}");
+    std::fs::write(pair.path("study.toml"), STUDY).unwrap();
+    std::fs::write(pair.path("detector.toml"), b"name = \"a\"\n\n\"\xff\"\n").unwrap();
+    let bytes = of(&pair.path("study.toml"));
+    assert!(bytes.file == pair.path("detector.toml") && bytes.line == Some(3), "{bytes}");
+    std::fs::write(pair.path("study.toml"), "").unwrap();
+    let keys: Vec<_> = pair.problems().into_iter().filter_map(|problem| problem.key).collect();
+    assert_eq!(keys, ["name", "detector", "resonance", "channel"]);
+}
+
+#[test]
+fn a_file_cut_anywhere_is_no_panic() {
+    let pair = Pair::new(STUDY, DETECTOR);
+    let mut refused = 0;
+    for (name, text) in [("study.toml", STUDY), ("detector.toml", DETECTOR), ("spectrum.csv", SPECTRUM)] {
+        for end in (0..text.len()).step_by(3) {
+            std::fs::write(pair.path(name), &text[..end]).unwrap();
+            if let Err(problems) = pair.load() {
+                assert!(!problems.0.is_empty() && !problems.to_string().is_empty());
+                refused += 1;
+            }
+        }
+        std::fs::write(pair.path(name), text).unwrap();
+    }
+    assert!(refused > 500, "{refused}");
+}
