@@ -44,7 +44,7 @@ struct Program {
 enum Command {
     Check(check::CheckArgs),
     Fold(fold::FoldArgs),
-    Shape(shape::ShapeArgs),
+    Shape(Box<shape::ShapeArgs>),
 }
 
 impl Command {
