@@ -24,7 +24,10 @@ fn fold(study: &Study) -> Folded {
 /// what the measurement lost. The templates are made several times more precise than the plain masses are.
 fn agrees(study: &Study, seed: u64) {
     let mut study = study.clone();
-    if std::env::var_os("PEAKFOLD_LONG").is_none() {
+    if std::env::var_os("PEAKFOLD_LONG").is_some() {
+        study.precision /= 4.0;
+        study.max_points = 1 << 26;
+    } else {
         study.precision = study.precision.max(4e-4);
     }
     let study = &study;
