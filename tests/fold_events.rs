@@ -169,7 +169,8 @@ fn the_error_of_the_list_is_that_of_a_ratio_of_sums() {
 #[test]
 fn a_file_without_the_channel_is_told_with_reasons() {
     let error = fold_channel(&study(Object::Photon, &extract()), 0, 91.188, &|_| ()).unwrap_err();
-    assert!(matches!(error, FoldError::NoEvents { .. }), "{error}");
+    assert!(matches!(error, FoldError::Events(_)), "{error}");
+    assert!(error.to_string().contains("no event serves channel `pair`"), "{error}");
     assert!(error.to_string().contains("dilepton_200.lhe.gz"), "{error}");
     let gone = fold_channel(&study(Object::Muon, Path::new("gone.lhe")), 0, 91.188, &|_| ()).unwrap_err();
     assert!(matches!(gone, FoldError::Events(_)), "{gone}");

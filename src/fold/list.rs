@@ -32,13 +32,12 @@ struct Pass {
     points: u64,
 }
 
-/// One pass over the events: `per_event` points of every scrambling for each, a power of two, starting at `first_point`.
+/// One pass over the events: `per_event` points of every scrambling for each, a power of two.
 struct Folder<'a> {
     plan: &'a Plan,
     scramblings: &'a [Scrambling],
     categories: usize,
     per_event: u64,
-    first_point: u64,
     queue: Vec<TruthEvent>,
     folded: u64,
     pass: Pass,
@@ -51,14 +50,14 @@ impl Folder<'_> {
         while self.queue.len() >= BATCH * WAVE || (last && !self.queue.is_empty()) {
             let count = self.queue.len().min(BATCH * WAVE);
             let (plan, scramblings, categories) = (self.plan, self.scramblings, self.categories);
-            let (per_event, first_point, folded) = (self.per_event, self.first_point, self.folded);
+            let (per_event, folded) = (self.per_event, self.folded);
             let results: Vec<Pass> = self.queue[..count]
                 .par_chunks(BATCH)
                 .enumerate()
                 .map_init(
                     || Workspace::new(plan),
                     |workspace, (batch, events)| {
-                        let start = first_point + (folded + (batch * BATCH) as u64) * per_event;
+                        let start = (folded + (batch * BATCH) as u64) * per_event;
                         fold_batch(plan, scramblings, categories, events, per_event, start, workspace)
                     },
                 )
@@ -92,18 +91,15 @@ pub(super) fn fold_file(
     let plan = Plan::new(&study.detector, channel, mass_gev, &TruthDimensions::default());
     let scramblings = scramblings(study.seed, &plan)?;
     let (categories, edges) = (channel.categories.len(), plan.axis.squares.len());
-    let mut totals = vec![Total::new(categories, edges); REPLICATES];
     let mut kept: Option<Vec<TruthEvent>> = None;
     let mut record = FoldRecord { channel: channel.name.clone(), mass_gev, ..FoldRecord::default() };
-    let (mut per_event, mut done_per_event) = (1, 0);
+    let mut per_event = 1;
     loop {
         let mut folder = Folder {
             plan: &plan,
             scramblings: &scramblings,
             categories,
             per_event,
-            // Passes take points one after the other: the points per event of all earlier passes come first.
-            first_point: done_per_event * record.events_used.unwrap_or(0).next_multiple_of(BLOCK as u64),
             queue: Vec::new(),
             folded: 0,
             pass: Pass {
@@ -127,6 +123,7 @@ pub(super) fn fold_file(
                     folder.take(events, false);
                 })?;
                 folder.take([], true);
+                selection.verdict(path, &channel.name)?;
                 kept = all;
                 record.events_used = Some(selection.used);
                 record.events_skipped = skips(&selection);
@@ -134,37 +131,38 @@ pub(super) fn fold_file(
             }
         }
         let used = record.events_used.unwrap_or(0);
-        if used == 0 {
-            let reasons = record.events_skipped.iter().map(|(reason, count)| format!("{count} {reason}"));
-            return Err(FoldError::NoEvents {
-                path: path.to_path_buf(),
-                channel: channel.name.clone(),
-                reasons: reasons.collect::<Vec<_>>().join("; "),
-            });
-        }
         let pass = folder.pass;
-        if pass.list.weight_squares == 0.0 {
-            return Err(FoldError::NoWeight { path: path.to_path_buf(), channel: channel.name.clone() });
-        }
-        for (total, part) in totals.iter_mut().zip(&pass.totals) {
-            total.add(part);
-        }
         record.cpu_seconds += pass.cpu_seconds;
         record.points += pass.points;
-        done_per_event += per_event;
-        let reached = estimate::precision(&totals);
-        // Each pass takes as many points as all before it.
-        let more = record.points * 2 <= study.max_points && 2 * done_per_event * used <= MAX_POINTS;
-        if reached <= study.precision || !more {
+        let reached = estimate::precision(&pass.totals);
+        let next = next_per_event(
+            per_event,
+            reached / study.precision,
+            used,
+            study.max_points - record.points.min(study.max_points),
+        );
+        if reached <= study.precision || next <= per_event {
             record.precision_reached = reached;
             record.reached = reached <= study.precision;
             record.wall_seconds = started.elapsed().as_secs_f64();
             record.events_effective = Some(pass.list.weights * pass.list.weights / pass.list.weight_squares);
-            let templates = estimate::templates(channel, mass_gev, &totals, Some(&pass.list));
+            let templates = estimate::templates(channel, mass_gev, &pass.totals, Some(&pass.list));
             return Ok(Folded { templates, record });
         }
-        per_event = done_per_event;
+        per_event = next;
     }
+}
+
+/// Points per event of the next pass, for an error that is `excess` times too large: each pass stands alone, since more
+/// points of one event are worth more than those of two passes. After the first the error falls about as points^-0.8;
+/// no pass takes more than is `left`, and one that could not take more points than the last is not made.
+fn next_per_event(per_event: u64, excess: f64, events: u64, left: u64) -> u64 {
+    let wanted = if per_event == 1 { 4.0 } else { per_event as f64 * libm::pow(excess, 1.25).max(2.0) };
+    // `as` saturates; the clamp leaves room for the next power of two.
+    let wanted = (wanted.min(1e9) as u64).next_power_of_two();
+    let per_pass = events.max(1);
+    let most = (left / REPLICATES as u64).min(MAX_POINTS) / per_pass;
+    if most == 0 { 0 } else { wanted.min(1 << most.ilog2()) }
 }
 
 /// Reads the file once and hands on the events of the channel, in the order of the file.

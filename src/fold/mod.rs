@@ -16,7 +16,6 @@ mod spread;
 use crate::problem::Problem;
 use crate::process::{EventSource, Study};
 use crate::template::LabelledTemplate;
-use std::path::PathBuf;
 
 /// How a fold of one channel at one mass point went.
 #[derive(Clone, Debug, Default, PartialEq)]
@@ -67,27 +66,9 @@ pub enum FoldError {
     /// The study has no such channel.
     #[error("the study has no channel number {0}")]
     NoSuchChannel(usize),
-    /// The file of events cannot be used.
+    /// The file of events cannot be used, or has none for the channel.
     #[error(transparent)]
     Events(#[from] Problem),
-    /// The file has no event of the channel.
-    #[error("{}: no event for the channel {channel} ({reasons}); check the channel's legs and the file", .path.display())]
-    NoEvents {
-        /// The file.
-        path: PathBuf,
-        /// Name of the channel.
-        channel: String,
-        /// Why events were skipped, with their numbers.
-        reasons: String,
-    },
-    /// All weights are 0.
-    #[error("{}: all events for the channel {channel} have weight 0; nothing can be folded", .path.display())]
-    NoWeight {
-        /// The file.
-        path: PathBuf,
-        /// Name of the channel.
-        channel: String,
-    },
     /// No rule says how the legs are picked from events.
     #[error("channel {channel}: its legs cannot be picked from a file of events")]
     CannotPick {
