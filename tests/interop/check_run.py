@@ -1,6 +1,6 @@
 """A run directory, read back with Python's own modules and judged by what its columns promise.
 
-usage: check_run.py DIR     the directory of a finished `peakfold fold`
+usage: check_run.py PROGRAM RUN     RUN is the directory of a finished fold of generated or read events; PROGRAM is not used
 
 * numbers are the shortest that read back as the same value (Python's `repr` gives the shortest too);
 * edges of neighbouring bins are the same text; the bins and the parts outside of the axis add to 1;
@@ -103,7 +103,7 @@ def check_widths(row, edges, probability):
 
 
 def main():
-    (directory,) = map(pathlib.Path, sys.argv[1:])
+    directory = pathlib.Path(sys.argv[2])
     run = json.loads((directory / "run.json").read_text(encoding="utf-8"))
     templates = {}
     for row in read(directory / "templates.csv"):

@@ -1,6 +1,6 @@
 """`peakfold shape` against the distributions of SciPy on grids that reach far into the tails.
 
-usage: check_shape.py PROGRAM
+usage: check_shape.py PROGRAM RUN     RUN is not used
 
 The judge of what SciPy has no closed form for (the distribution function of a Voigt profile) is its quadrature of SciPy's
 density.
@@ -37,7 +37,7 @@ def compare(what, found, expected, tolerance):
 
 
 def main():
-    (program,) = sys.argv[1:]
+    program = sys.argv[1]
     natural = lambda kind: ("--natural", kind, "--width", WIDTH)
     gaussian = ("--resolution", "gaussian", "--sigma", SIGMA)
 
