@@ -52,7 +52,7 @@ impl Command {
         match self {
             Command::Check(args) => check::run(args, out),
             Command::Fold(args) => fold::run(args, out),
-            Command::Shape(args) => Ok(shape::run(args, out)?),
+            Command::Shape(args) => shape::run(args, out),
         }
     }
 }
