@@ -1,7 +1,7 @@
 //! The command line: one file per command, and how each of them ends.
 //!
 //! A command is a struct of arguments (clap) and a function `run(&args, &mut out) -> Outcome`. To add one: a file, and
-//! an arm in [`Command`] and in its `run`.
+//! an arm in the enum `Command` and in its `run`.
 
 pub mod check;
 pub mod fold;
