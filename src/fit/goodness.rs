@@ -83,8 +83,7 @@ pub(super) fn goodness(
     Some((bins, goodness))
 }
 
-/// Equal bins across the window, or across the bulk of the masses where it is open (then with an outer bin on that side
-/// for the goodness only in that it reaches to the last mass).
+/// Equal bins across the window; where it is open, across the bulk of the masses with one outer bin on that side.
 fn of_masses(model: &Model, values: &[f64], masses: &Masses) -> Option<Vec<GoodnessBin>> {
     let gev = masses.gev();
     let n = gev.len();
@@ -97,7 +96,6 @@ fn of_masses(model: &Model, values: &[f64], masses: &Masses) -> Option<Vec<Goodn
     if !(edges[count] > edges[0]) {
         return None;
     }
-    // The last edge of a closed window belongs to it.
     edges[count] = ends.1;
     let mut bins: Vec<(f64, f64)> = edges.windows(2).map(|pair| (pair[0], pair[1])).collect();
     if !model.window.0.is_finite() {
@@ -109,13 +107,19 @@ fn of_masses(model: &Model, values: &[f64], masses: &Masses) -> Option<Vec<Goodn
     let told = expected(model, values, &bins, false)?;
     // Without yields the expectation is per event.
     let scale = if model.counted { 1.0 } else { masses.total() };
-    let mut found = vec![(0.0, 0.0); bins.len()];
-    for (i, &m) in gev.iter().enumerate() {
-        let w = masses.weights().map_or(1.0, |w| w[i]);
-        let bin = bins.partition_point(|b| b.1 <= m).min(bins.len() - 1);
-        found[bin].0 += w;
-        found[bin].1 += w * w;
-    }
+    let found: Vec<(f64, f64)> = bins
+        .iter()
+        .enumerate()
+        .map(|(i, bin)| {
+            // The last edge of a closed window belongs to it.
+            let from = gev.partition_point(|&m| m < bin.0);
+            let to = if i + 1 == bins.len() { n } else { gev.partition_point(|&m| m < bin.1) };
+            match masses.weights() {
+                None => ((to - from) as f64, (to - from) as f64),
+                Some(w) => w[from..to].iter().fold((0.0, 0.0), |sum, w| (sum.0 + w, sum.1 + w * w)),
+            }
+        })
+        .collect();
     let list = bins.iter().enumerate().map(|(i, &(low_gev, high_gev))| {
         let expected = scale * told.events[i];
         let variance = if masses.weights().is_some() { found[i].1 } else { expected };

@@ -86,18 +86,19 @@ fn spread(histogram: &Histogram) -> (Vec<f64>, Vec<f64>) {
 
 /// Starts of the yields and of the background: signal yield, then the background's own.
 pub(super) fn yields(data: &Data, background: Option<Background>, window: (f64, f64)) -> Vec<f64> {
-    let (m, w, total) = match data {
-        Data::Masses(masses) => {
-            let w = masses.weights().map_or_else(|| vec![1.0; masses.gev().len()], <[f64]>::to_vec);
-            (masses.gev().to_vec(), w, masses.total())
-        }
-        Data::Histogram(histogram) => {
-            let (m, w) = spread(histogram);
-            (m, w, histogram.total())
-        }
+    let total = match data {
+        Data::Masses(masses) => masses.total(),
+        Data::Histogram(histogram) => histogram.total(),
     };
     let total = total.max(1.0);
     let Some(kind) = background else { return vec![total] };
+    let (m, w) = match data {
+        Data::Masses(masses) => {
+            let w = masses.weights().map_or_else(|| vec![1.0; masses.gev().len()], <[f64]>::to_vec);
+            (masses.gev().to_vec(), w)
+        }
+        Data::Histogram(histogram) => spread(histogram),
+    };
     let width = window.1 - window.0;
     let between = |from: f64, to: f64| -> f64 {
         m.iter()
