@@ -77,7 +77,7 @@ fn recovers_a_million_points() {
     assert!(outcome.warnings.is_empty(), "{:?}", outcome.warnings);
 }
 
-/// Mean and width of the pulls of 200 fits, with 3 standard errors of either: 0.22 and 0.15.
+/// Mean and width of pulls; the bounds are 3 standard errors for 200 of them.
 fn check_pulls(name: &str, pulls: &[f64]) {
     let n = pulls.len() as f64;
     let mean = pulls.iter().sum::<f64>() / n;
@@ -85,10 +85,13 @@ fn check_pulls(name: &str, pulls: &[f64]) {
     assert!(mean.abs() < 0.22 && (width - 1.0).abs() < 0.15, "{name}: mean {mean}, width {width}");
 }
 
+/// At 10^4 points the estimates are biased by up to a tenth of an error (sigma: -0.08 in 4000 fits; gone at 10^5 points),
+/// as maximum likelihood is. With 200 fits that leaves one set of seeds in a few outside the bounds (the first 200 here
+/// give -0.24 for sigma), so 1000 fits are made, whose mean is known to 0.03.
 #[test]
 fn pulls_are_standard_normal() {
     let mut pulls = vec![vec![]; 6];
-    for seed in 0..200 {
+    for seed in 0..1000 {
         let data = Data::from(Masses::new(draw(&truth(), 10_000, 1000 + seed), None).unwrap());
         let outcome = run(data.clone(), elsewhere(), OPEN, &Settings::default());
         for (k, (name, truth)) in TRUTH.iter().enumerate() {

@@ -23,6 +23,8 @@ const NEAR: f64 = 1e-2;
 /// Relative rounding of a likelihood.
 const ROUNDING: f64 = 1e-10;
 const TRIES: usize = 40;
+/// Steps without the distance halving after which a fit counts as hard.
+const HARD: usize = 4;
 
 /// See the module.
 #[derive(Clone, Debug, Default)]
@@ -34,6 +36,8 @@ pub(super) struct Newton {
     curvature: Option<DMatrix<f64>>,
     pub distance: f64,
     stalled: usize,
+    /// Approximate second derivatives lead nowhere: exact ones at every step.
+    hard: bool,
     stuck: bool,
 }
 
@@ -80,10 +84,11 @@ impl Newton {
         if problem.objective.exact() {
             return;
         }
-        if self.distance > 10.0 * NEAR {
+        self.hard |= self.stalled >= HARD;
+        if self.hard || self.distance > 10.0 * NEAR {
             self.curvature = None;
         }
-        if self.curvature.is_none() && self.distance < NEAR {
+        if self.curvature.is_none() && (self.hard || self.distance < NEAR) {
             self.curvature = problem.inner_hessian(z);
             if let Some(curvature) = &self.curvature {
                 e.hessian.clone_from(curvature);
@@ -143,10 +148,7 @@ impl<'a> Solver<Coordinates<'a>, State> for Newton {
         problem: &mut Problem<Coordinates<'a>>,
         state: State,
     ) -> Result<(State, Option<KV>), Error> {
-        let Some((z, mut here)) = self.current.take() else { return Err(Error::msg("no current point")) };
-        if let Some(p) = problem.problem.as_ref() {
-            self.sharpen(p, &z, &mut here);
-        }
+        let Some((z, here)) = self.current.take() else { return Err(Error::msg("no current point")) };
         let places = problem.problem.as_ref().map(|p| Self::movable(p, &z, &here.gradient)).unwrap_or_default();
         let noise = ROUNDING * (1.0 + here.value.abs());
         let mut damping = self.damping;
@@ -194,9 +196,9 @@ impl<'a> Solver<Coordinates<'a>, State> for Newton {
                 let before = self.distance;
                 if let Some(p) = problem.problem.as_ref() {
                     self.distance = Self::measure(p, &there, &next);
+                    self.stalled = if self.distance < 0.5 * before { 0 } else { self.stalled + 1 };
                     self.sharpen(p, &there, &mut next);
                 }
-                self.stalled = if self.distance < 0.5 * before { 0 } else { self.stalled + 1 };
                 let state = state.param(there.clone()).cost(next.value);
                 self.current = Some((there, next));
                 return Ok((state, None));

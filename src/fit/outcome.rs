@@ -38,6 +38,9 @@ pub enum Warning {
     /// A parameter at a bound.
     #[error("{0} ended at its bound {1}; its error is not known, and those of the others hold it there")]
     AtBound(String, f64),
+    /// A shape of nothing.
+    #[error("there is no background, so {0} is not determined")]
+    Empty(String),
     /// No positive second derivatives.
     #[error(
         "the second derivatives at the minimum are not positive; no errors are given: the data do not determine all free parameters"

@@ -206,7 +206,12 @@ fn finish(
         let (low, high) = (values[k] - s.low <= margin, s.high - values[k] <= margin);
         s.free && ((low && best.gradient[k] >= 0.0) || (high && best.gradient[k] <= 0.0))
     };
-    let places: Vec<usize> = coordinates.free.iter().copied().filter(|&k| !at_bound(k)).collect();
+    // No background, no slope of it.
+    let empty = |k: usize| {
+        let slope = model.background == Some(super::Background::Exponential) && k == model.background_start() + 1;
+        slope && values[k - 1] == 0.0
+    };
+    let places: Vec<usize> = coordinates.free.iter().copied().filter(|&k| !at_bound(k) && !empty(k)).collect();
     let covariance = covariance(objective, &coordinates, &values, &places);
     let error = |k: usize| {
         let place = places.iter().position(|&p| p == k)?;
@@ -223,6 +228,9 @@ fn finish(
             at_bound: at_bound(k),
         })
         .collect();
+    warnings.extend(
+        (0..values.len()).filter(|&k| settled[k].free && empty(k)).map(|k| Warning::Empty(settled[k].name.clone())),
+    );
     warnings.extend(warnings_of(&parameters, covariance.is_some() || places.is_empty()));
     let window_probability = model.at(&values).map_or(f64::NAN, |p| p.window_probability);
     if window_probability < SMALL_WINDOW {
