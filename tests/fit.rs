@@ -320,7 +320,7 @@ fn table_and_figure() {
     let output = peakfold(&extract, &format!("{DIMUON} --plot {}", figure.display()));
     assert!(output.status.success());
     let text = String::from_utf8(output.stdout).unwrap();
-    for word in ["mass", "width", "fixed", "signal_yield", "background_slope", "chi2/ndf", "correlation", "converged"] {
+    for word in ["mass", "width", "fixed", "signal_yield", "background_slope", "chi2", "correlation", "converged"] {
         assert!(text.contains(word), "{word} is not in\n{text}");
     }
     let svg = std::fs::read_to_string(figure).unwrap();

@@ -87,7 +87,7 @@ pub(super) fn goodness(
 fn of_masses(model: &Model, values: &[f64], masses: &Masses) -> Option<Vec<GoodnessBin>> {
     let gev = masses.gev();
     let n = gev.len();
-    let count = ((n / 20).max(1)).min(MOST_BINS).max(5);
+    let count = (n / 5).clamp(10, MOST_BINS);
     let ends = (
         if model.window.0.is_finite() { model.window.0 } else { gev[n / 500] },
         if model.window.1.is_finite() { model.window.1 } else { gev[n - 1 - n / 500] },
