@@ -90,59 +90,59 @@ fn names_what_is_wrong() {
         (
             "--mass 125 --resolution crystal-ball --sigma 1 --alpha-low 1 --n-low 0.7 --at 1",
             1,
-            "error: --n-low is 0.7; it must be a finite number above 1\n",
+            "peakfold: --n-low is 0.7; it must be a finite number above 1\n",
         ),
         (
             "--mass 125 --resolution gaussian --sigma -1 --at 1",
             1,
-            "error: --sigma is -1; it must be a finite number above 0\n",
+            "peakfold: --sigma is -1; it must be a finite number above 0\n",
         ),
         (
             "--natural relativistic --mass -5 --width 1 --at 1",
             1,
-            "error: --mass is -5; it must be a finite number above 0\n",
+            "peakfold: --mass is -5; it must be a finite number above 0\n",
         ),
         (
             "--natural relativistic --mass 91 --width nan --at 1",
             1,
-            "error: --width is NaN; it must be a finite number above 0\n",
+            "peakfold: --width is NaN; it must be a finite number above 0\n",
         ),
         (
             "--natural relativistic --mass 91 --width 2 --falloff-power -3 --at 1",
             1,
-            "error: --falloff-power is -3; it must be from 0 to 100\n",
+            "peakfold: --falloff-power is -3; it must be from 0 to 100\n",
         ),
-        ("--natural relativistic --mass 91 --at 1", 2, "error: relativistic needs --width\n"),
+        ("--natural relativistic --mass 91 --at 1", 2, "peakfold: relativistic needs --width\n"),
         (
             "--mass 91 --resolution gaussian --sigma 1 --k-low 1 --at 1",
             2,
-            "error: --k-low has no meaning with --resolution gaussian; leave it out\n",
+            "peakfold: --k-low has no meaning with --resolution gaussian; leave it out\n",
         ),
         (
             "--mass 91 --at 1",
             2,
-            "error: a line with a perfect resolution has no density; give a width or a resolution: --natural and \
+            "peakfold: a line with a perfect resolution has no density; give a width or a resolution: --natural and \
              --resolution are both none\n",
         ),
         (
             "--mass 91 --resolution gaussian --sigma 1 --from 5 --to 2",
             1,
-            "error: --from is 5 and --to is 2; --from must be below --to\n",
+            "peakfold: --from is 5 and --to is 2; --from must be below --to\n",
         ),
         (
             "--mass 91 --resolution gaussian --sigma 1 --from 1 --to 2 --points 1",
             1,
-            "error: --points is 1; it must be from 2 to 10000000\n",
+            "peakfold: --points is 1; it must be from 2 to 10000000\n",
         ),
         (
             "--mass 91 --resolution gaussian --sigma 1 --at inf",
             1,
-            "error: a mass is inf; masses must be finite numbers\n",
+            "peakfold: a mass is inf; masses must be finite numbers\n",
         ),
         (
             "--mass 91 --resolution gaussian --sigma 1",
             2,
-            "error: nothing is asked for; give --at MASSES, or --from and --to, or --widths, or --plot FILE.svg\n",
+            "peakfold: nothing is asked for; give --at MASSES, or --from and --to, or --widths, or --plot FILE.svg\n",
         ),
     ] {
         let output = shape(arguments);

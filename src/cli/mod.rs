@@ -56,7 +56,7 @@ impl Command {
             Command::Check(args) => check::run(args, out),
             Command::Fit(args) => fit::run(args, out),
             Command::Fold(args) => fold::run(args, out),
-            Command::Shape(args) => Ok(shape::run(args, out)?),
+            Command::Shape(args) => shape::run(args, out),
         }
     }
 }

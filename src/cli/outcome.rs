@@ -1,6 +1,5 @@
 //! How a command ends: done, or a failure with its exit status.
 
-use super::shape::ShapeFailure;
 use crate::files::TargetError;
 use crate::problem::{Problem, Problems};
 use std::io::{ErrorKind, Write};
@@ -42,15 +41,6 @@ impl From<Problems> for Failure {
 impl From<TargetError> for Failure {
     fn from(error: TargetError) -> Self {
         Failure::Input(error.to_string())
-    }
-}
-
-impl From<ShapeFailure> for Failure {
-    fn from(failure: ShapeFailure) -> Self {
-        match failure {
-            ShapeFailure::Usage(message) => Failure::Usage(message),
-            other => Failure::Input(other.to_string()),
-        }
     }
 }
 

@@ -5,6 +5,7 @@ use std::path::PathBuf;
 
 use clap::{Args, ValueEnum};
 
+use super::{Failure, Outcome};
 use crate::draw::curve;
 use crate::lineshape::widths::{
     FWHM_PER_SIGMA, ONE_SIGMA, central_interval, full_width_at_half_maximum, narrowest_interval, peak,
@@ -114,35 +115,6 @@ pub struct ShapeArgs {
     pub plot: Option<PathBuf>,
 }
 
-/// Why the calculator gives no answer.
-#[derive(Debug, thiserror::Error)]
-pub enum ShapeFailure {
-    /// Options that do not go together: exit status 2.
-    #[error("{0}")]
-    Usage(String),
-    /// A value outside its domain: exit status 1.
-    #[error("{}", as_option(.0))]
-    Value(ShapeError),
-    /// A range of masses that is none: exit status 1.
-    #[error("{0}")]
-    Range(String),
-    /// A file or stream that cannot be written: exit status 1.
-    #[error("{what}: {source}")]
-    Output {
-        /// The file, or `standard output`.
-        what: String,
-        /// What the system said.
-        source: std::io::Error,
-    },
-}
-
-impl ShapeFailure {
-    /// Exit status of the program.
-    pub fn status(&self) -> u8 {
-        if matches!(self, ShapeFailure::Usage(_)) { 2 } else { 1 }
-    }
-}
-
 /// The most points of one call.
 const MAX_POINTS: usize = 10_000_000;
 
@@ -151,7 +123,7 @@ impl ShapeArgs {
     ///
     /// # Errors
     /// Options that are missing or do not belong to the chosen shapes; values outside their domains.
-    pub fn line_shape(&self) -> Result<LineShape, ShapeFailure> {
+    pub fn line_shape(&self) -> Result<LineShape, Failure> {
         self.check_options()?;
         let natural = self.natural_shape()?;
         let scaling = if self.proportional { Scaling::Proportional } else { Scaling::Constant };
@@ -159,12 +131,12 @@ impl ShapeArgs {
         let falloff = (self.falloff_power != 0.0).then_some(self.falloff_power);
         let resolution = self.resolution_shape()?.map(Mixture::from);
         LineShape::with_options(natural, resolution, scaling, falloff).map_err(|error| match error {
-            ShapeError::Perfect => ShapeFailure::Usage(format!("{error}: --natural and --resolution are both none")),
-            other => ShapeFailure::Value(other),
+            ShapeError::Perfect => Failure::Usage(format!("{error}: --natural and --resolution are both none")),
+            other => other.into(),
         })
     }
 
-    fn natural_shape(&self) -> Result<Natural, ShapeFailure> {
+    fn natural_shape(&self) -> Result<Natural, Failure> {
         let width = || need(self.width, "--width", &name(self.natural));
         Ok(match self.natural {
             NaturalKind::None => Natural::line(self.mass)?,
@@ -174,18 +146,13 @@ impl ShapeArgs {
         })
     }
 
-    fn resolution_shape(&self) -> Result<Option<Resolution>, ShapeFailure> {
+    fn resolution_shape(&self) -> Result<Option<Resolution>, Failure> {
         let kind = name(self.resolution);
         let sigma = || need(self.sigma, "--sigma", &kind);
-        let low = || {
-            Ok::<_, ShapeFailure>((need(self.alpha_low, "--alpha-low", &kind)?, need(self.n_low, "--n-low", &kind)?))
-        };
-        let high = || {
-            Ok::<_, ShapeFailure>((
-                need(self.alpha_high, "--alpha-high", &kind)?,
-                need(self.n_high, "--n-high", &kind)?,
-            ))
-        };
+        let low =
+            || Ok::<_, Failure>((need(self.alpha_low, "--alpha-low", &kind)?, need(self.n_low, "--n-low", &kind)?));
+        let high =
+            || Ok::<_, Failure>((need(self.alpha_high, "--alpha-high", &kind)?, need(self.n_high, "--n-high", &kind)?));
         let bias = self.bias;
         Ok(Some(match self.resolution {
             ResolutionKind::None => return Ok(None),
@@ -211,7 +178,7 @@ impl ShapeArgs {
     }
 
     /// Options that the chosen shapes do not have.
-    fn check_options(&self) -> Result<(), ShapeFailure> {
+    fn check_options(&self) -> Result<(), Failure> {
         use ResolutionKind::{CrystalBall, DoubleCrystalBall, GaussExp};
         let is = |kinds: &[ResolutionKind]| kinds.contains(&self.resolution);
         let resolution = format!("--resolution {}", name(self.resolution));
@@ -235,11 +202,11 @@ impl ShapeArgs {
         ];
         for (given, allowed, option, with) in checks {
             if given && !allowed {
-                return Err(ShapeFailure::Usage(format!("{option} has no meaning with {with}; leave it out")));
+                return Err(Failure::Usage(format!("{option} has no meaning with {with}; leave it out")));
             }
         }
         if self.at.is_empty() && self.from.is_none() && !self.widths && self.plot.is_none() {
-            return Err(ShapeFailure::Usage(
+            return Err(Failure::Usage(
                 "nothing is asked for; give --at MASSES, or --from and --to, or --widths, or --plot FILE.svg"
                     .to_owned(),
             ));
@@ -248,25 +215,25 @@ impl ShapeArgs {
     }
 
     /// The masses to evaluate, in the order asked for.
-    fn masses(&self) -> Result<Vec<f64>, ShapeFailure> {
+    fn masses(&self) -> Result<Vec<f64>, Failure> {
         if let Some(bad) = self.at.iter().chain(&self.from).chain(&self.to).find(|m| !m.is_finite()) {
-            return Err(ShapeFailure::Range(format!("a mass is {bad}; masses must be finite numbers")));
+            return Err(Failure::Input(format!("a mass is {bad}; masses must be finite numbers")));
         }
         let (Some(from), Some(to)) = (self.from, self.to) else { return Ok(self.at.clone()) };
         if from >= to {
-            return Err(ShapeFailure::Range(format!("--from is {from} and --to is {to}; --from must be below --to")));
+            return Err(Failure::Input(format!("--from is {from} and --to is {to}; --from must be below --to")));
         }
         if !(2..=MAX_POINTS).contains(&self.points) {
-            return Err(ShapeFailure::Range(format!("--points is {}; it must be from 2 to {MAX_POINTS}", self.points)));
+            return Err(Failure::Input(format!("--points is {}; it must be from 2 to {MAX_POINTS}", self.points)));
         }
         let last = (self.points - 1) as f64;
         Ok((0..self.points).map(|i| from + (to - from) * (i as f64 / last)).collect())
     }
 }
 
-impl From<ShapeError> for ShapeFailure {
+impl From<ShapeError> for Failure {
     fn from(error: ShapeError) -> Self {
-        ShapeFailure::Value(error)
+        Failure::Input(as_option(&error))
     }
 }
 
@@ -283,46 +250,43 @@ fn name(kind: impl ValueEnum) -> String {
     kind.to_possible_value().map_or_else(String::new, |value| value.get_name().to_owned())
 }
 
-fn need(value: Option<f64>, option: &str, kind: &str) -> Result<f64, ShapeFailure> {
-    value.ok_or_else(|| ShapeFailure::Usage(format!("{kind} needs {option}")))
+fn need(value: Option<f64>, option: &str, kind: &str) -> Result<f64, Failure> {
+    value.ok_or_else(|| Failure::Usage(format!("{kind} needs {option}")))
 }
 
 /// Runs the command; results go to `out`.
 ///
 /// # Errors
-/// See [`ShapeFailure`].
-pub fn run(args: &ShapeArgs, out: &mut impl Write) -> Result<(), ShapeFailure> {
+/// See [`Failure`].
+pub fn run(args: &ShapeArgs, out: &mut impl Write) -> Outcome {
     let shape = args.line_shape()?;
     let masses = args.masses()?;
     if let Some(file) = &args.plot {
-        let range = args.from.zip(args.to);
-        curve::draw_shape(&shape, range, file).map_err(|error| match error {
-            curve::DrawError::Range => ShapeFailure::Range(format!("{error}; give --from and --to")),
-            curve::DrawError::Output(source) => ShapeFailure::Output { what: file.display().to_string(), source },
-            curve::DrawError::Figure(_) => ShapeFailure::Range(error.to_string()),
+        curve::draw_shape(&shape, args.from.zip(args.to), file).map_err(|error| {
+            Failure::Input(match error {
+                curve::DrawError::Range => format!("{error}; give --from and --to"),
+                curve::DrawError::Output(error) => format!("{}: {error}", file.display()),
+                curve::DrawError::Figure(_) => error.to_string(),
+            })
         })?;
     }
-    let write = |out: &mut dyn Write| -> std::io::Result<()> {
-        if !masses.is_empty() {
-            writeln!(out, "m_gev,pdf,cdf")?;
-            for &m in &masses {
-                writeln!(out, "{m:.16e},{:.16e},{:.16e}", shape.pdf(m), shape.cdf(m))?;
-            }
+    write_results(&shape, &masses, args.widths, out).map_err(Failure::Output)
+}
+
+fn write_results(shape: &LineShape, masses: &[f64], widths: bool, out: &mut impl Write) -> std::io::Result<()> {
+    if !masses.is_empty() {
+        writeln!(out, "m_gev,pdf,cdf")?;
+        for &m in masses {
+            writeln!(out, "{m:.16e},{:.16e},{:.16e}", shape.pdf(m), shape.cdf(m))?;
         }
-        if args.widths {
-            if !masses.is_empty() {
-                writeln!(out)?;
-            }
-            write!(out, "{}", width_table(&shape))?;
-        }
-        out.flush()
-    };
-    match write(out) {
-        // Whoever reads may stop early.
-        Err(error) if error.kind() == std::io::ErrorKind::BrokenPipe => Ok(()),
-        Err(source) => Err(ShapeFailure::Output { what: "standard output".to_owned(), source }),
-        Ok(()) => Ok(()),
     }
+    if widths {
+        if !masses.is_empty() {
+            writeln!(out)?;
+        }
+        write!(out, "{}", width_table(shape))?;
+    }
+    out.flush()
 }
 
 /// The widths, one a line, in GeV.

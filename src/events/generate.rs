@@ -53,7 +53,9 @@ impl Generator {
             Decay::Direct(_) => None,
             Decay::Cascade(_) => {
                 let thresholds = [masses[0] + masses[1], masses[2] + masses[3]];
-                Some(CascadeSampler::new(&resonance.intermediate, thresholds, natural.range_gev()))
+                let width = resonance.width.at_gev(mass_gev);
+                let range = natural.range_gev();
+                Some(CascadeSampler::new(&resonance.intermediate, thresholds, range, mass_gev, width))
             }
         };
         let cell_sums = match production {

@@ -69,11 +69,20 @@ impl PairMasses {
     /// Draws the masses of both pairs for a resonance of mass `parent`, larger than both thresholds together.
     pub(super) fn sample(&self, parent: f64, rng: &mut StdRng) -> [f64; 2] {
         let least = self.thresholds[0].min(self.thresholds[1]);
+        let most = self.thresholds[0].max(self.thresholds[1]);
+        // The larger mass is above the larger threshold.
         let (lowest, highest) = (self.angle(least), self.angle(parent - least));
+        let lowest_larger = self.angle(most);
+        // Near threshold all of the density is small: lambda is at most that of both masses at their thresholds, and
+        // x1 x2 at most s²(1 - s)² with s the least possible share of the larger mass, 1/16 from s = 1/2 down.
+        let (a, b) = ((self.thresholds[0] / parent).powi(2), (self.thresholds[1] / parent).powi(2));
+        let lambda_most = ((1.0 - a - b).powi(2) - 4.0 * a * b).max(0.0);
+        let share = (most / parent).max(0.5);
+        let ceiling = lambda_most.sqrt() * (lambda_most + 12.0 * (share * (1.0 - share)).powi(2)).min(1.0);
         // The smaller mass is at most half the parent's, so this is the widest range of its angle.
         let widest = self.angle(0.5 * parent) - lowest;
         loop {
-            let larger_squared = self.squared_mass(lowest + (highest - lowest) * rng.random::<f64>());
+            let larger_squared = self.squared_mass(lowest_larger + (highest - lowest_larger) * rng.random::<f64>());
             let larger = larger_squared.max(0.0).sqrt();
             let x = larger_squared / (parent * parent);
             let range = self.angle(larger.min(parent - larger)) - lowest;
@@ -81,8 +90,9 @@ impl PairMasses {
             // convex in x2, so its largest value is at one of the ends.
             let gap = 1.0 - x.sqrt();
             let bound = (1.0 - x) * ((1.0 - x) * (1.0 - x)).max(12.0 * x * gap * gap);
-            // The bound itself is at most 1, so this first test accepts with bound * range/widest.
-            let height = rng.random::<f64>() * widest;
+            let bound = bound.min(ceiling);
+            // This first test accepts with bound/ceiling * range/widest.
+            let height = rng.random::<f64>() * widest * ceiling;
             if height >= bound * range {
                 continue;
             }

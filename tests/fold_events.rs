@@ -1,0 +1,186 @@
+//! Folds of events read from a file: against the plain path, against the truth, and what is told of them.
+#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic)]
+
+mod common;
+
+use peakfold::detector::{EtaRange, Object};
+use peakfold::events::lhe::{EventFile, Options};
+use peakfold::events::{EventBatch, Selector};
+use peakfold::fold::{FoldError, Folded, fold_channel, plain};
+use peakfold::kinematics::TruthEvent;
+use peakfold::process::{Decay, EventSource, MassAxis, Study};
+use std::path::{Path, PathBuf};
+
+/// 200 events of `dilepton_events.lhe.gz` (open test data from scikit-hep-testdata, BSD-3).
+fn extract() -> PathBuf {
+    Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/dilepton_200.lhe.gz")
+}
+
+/// All 10 000 events, where they are at hand: `PEAKFOLD_SHARED_DATA` or `../shared/data`.
+fn whole() -> Option<PathBuf> {
+    let folder = std::env::var_os("PEAKFOLD_SHARED_DATA")
+        .map_or_else(|| Path::new(env!("CARGO_MANIFEST_DIR")).join("../shared/data"), PathBuf::from);
+    let path = folder.join("dilepton_events.lhe.gz");
+    path.is_file().then_some(path)
+}
+
+/// Unbiased Gaussian responses of about 1.5 %, no cuts but the detector's reach, an axis around the Z mass.
+fn study(object: Object, path: &Path) -> Study {
+    let mut detector = common::empty_detector();
+    let reach = EtaRange { low: 0.0, high: 4.0 };
+    detector.calorimeters = vec![common::calorimeter("calorimeter", Object::Electron, reach, 0.015)];
+    detector.trackers = vec![common::tracker("tracker", Object::Muon, reach, 2e-4, 0.012)];
+    let mut channel = common::channel("pair", Decay::Direct(vec![object; 2]));
+    channel.axis = MassAxis { low: 70.0, high: 110.0, bins: 160, relative: false };
+    let mut study = common::study(detector, 91.188, channel);
+    study.resonance.source = EventSource::File(path.to_path_buf());
+    study.precision = 1e-3;
+    study
+}
+
+fn fold(study: &Study) -> Folded {
+    fold_channel(study, 0, 91.188, &|_| ()).expect("a template")
+}
+
+/// The truth events of the channel, as the reader picks them.
+fn truth(study: &Study, path: &Path) -> Vec<TruthEvent> {
+    let selector = Selector::new(&study.channels[0].decay, 91.188).unwrap();
+    let mut file = EventFile::open(path, &Options::default()).unwrap();
+    let (mut batch, mut events) = (EventBatch::default(), Vec::new());
+    while file.next_batch(&mut batch).unwrap() {
+        events.extend(batch.events().filter_map(|event| selector.select(&event).ok()));
+    }
+    events
+}
+
+/// Where the running sum of weighted entries reaches half of its end.
+fn median(mut entries: Vec<(f64, f64)>) -> f64 {
+    entries.sort_by(|a, b| a.0.total_cmp(&b.0));
+    let total: f64 = entries.iter().map(|(_, w)| w).sum();
+    let mut sum = 0.0;
+    for (value, weight) in entries {
+        sum += weight;
+        if sum >= 0.5 * total {
+            return value;
+        }
+    }
+    f64::NAN
+}
+
+/// The same list smeared plainly, 4000 times an event.
+#[test]
+fn a_short_list_agrees_with_plain_smearing_of_the_same_events() {
+    for object in [Object::Electron, Object::Muon] {
+        let study = study(object, &extract());
+        let folded = fold(&study);
+        let events = truth(&study, &extract());
+        assert_eq!(folded.record.events_used, Some(events.len() as u64));
+        assert!(events.iter().any(|event| event.weight < 0.0), "the extract has negative weights");
+        let sample = plain::smear_events(&study, 0, &events, 4000, 3).expect("plain masses");
+        let template = &folded.templates[0].template;
+        // Smearings of one list scatter less than independent events: the bound is that of the smearing alone, from
+        // bins summed to 16 wide ones.
+        let mut counts = [0.0; 16];
+        let mut squares = [0.0; 16];
+        for (mass, weight) in sample.categories[0].masses_gev.iter().zip(&sample.categories[0].weights) {
+            let bin = ((mass - 70.0) / 2.5).floor();
+            if (0.0..16.0).contains(&bin) {
+                counts[bin as usize] += weight;
+                squares[bin as usize] += weight * weight;
+            }
+        }
+        let accepted: f64 = sample.categories[0].weights.iter().sum();
+        for (bin, count) in counts.iter().enumerate() {
+            let told: f64 = template.probability[10 * bin..10 * bin + 10].iter().sum();
+            let error = squares[bin].sqrt() / accepted + template.error[10 * bin..10 * bin + 10].iter().sum::<f64>();
+            assert!(
+                (count / accepted - told).abs() < 4.5 * error,
+                "{object} bin {bin}: {} {told} {error}",
+                count / accepted
+            );
+        }
+        let acceptance = accepted / sample.generated_weight;
+        assert!((acceptance - template.acceptance).abs() < 2e-3, "{acceptance} {}", template.acceptance);
+    }
+}
+
+/// With an unbiased detector the median of the template is the median of the accepted truth masses on the same axis, to
+/// 0.1 %; events are counted, and effective ones are fewer where weights are negative.
+#[test]
+fn all_events_keep_the_median_of_the_truth() {
+    let Some(path) = whole() else {
+        println!("skipped: dilepton_events.lhe.gz is not at hand");
+        return;
+    };
+    for (object, used) in [(Object::Electron, 4966), (Object::Muon, 5033)] {
+        let study = study(object, &path);
+        let folded = fold(&study);
+        assert_eq!(folded.record.events_used, Some(used), "counted by tests/interop/lhe_read.py");
+        let skipped: u64 = folded.record.events_skipped.iter().map(|(_, count)| count).sum();
+        assert_eq!(used + skipped, 10_000);
+        assert!(folded.record.reached);
+        // All weights have the same size: (n+ - n-)²/n events count.
+        assert!(folded.record.events_effective.unwrap() < used as f64);
+        let reach = libm::sinh(4.0);
+        let accepted = truth(&study, &path).into_iter().filter(|event| {
+            event.legs[..2].iter().all(|leg| leg.pz_gev.abs() < reach * leg.px_gev.hypot(leg.py_gev))
+                && (70.0..110.0).contains(&event.mass_gev)
+        });
+        let truth_median = median(accepted.map(|event| (event.mass_gev, event.weight)).collect());
+        let template = &folded.templates[0].template;
+        let centres = template.edges_gev.windows(2).map(|edge| 0.5 * (edge[0] + edge[1]));
+        let folded_median = median(centres.zip(template.probability.iter().copied()).collect());
+        assert!((folded_median / truth_median - 1.0).abs() < 1e-3 + 0.125 / 91.0, "{folded_median} {truth_median}");
+        let list: f64 = template.list_error.iter().zip(&template.error).map(|(a, b)| a / b.max(1e-300)).sum();
+        assert!(list / 160.0 > 3.0, "the list dominates the error");
+    }
+}
+
+/// The error of the list by the formula for a ratio of sums, p = sum q/sum a: variance sum (q - p a)²/(sum a)² (standard
+/// error propagation), with each event's share q of a bin and accepted weight a from 20 000 plain smearings of it.
+#[test]
+fn the_error_of_the_list_is_that_of_a_ratio_of_sums() {
+    let mut study = study(Object::Muon, &extract());
+    study.channels[0].axis.bins = 16;
+    let template = &fold(&study).templates[0].template;
+    let mut shares = Vec::new();
+    for (index, event) in truth(&study, &extract()).iter().enumerate() {
+        let sample = plain::smear_events(&study, 0, &[*event], 20_000, index as u64).unwrap();
+        let mut share = [0.0; 17];
+        for (mass, weight) in sample.categories[0].masses_gev.iter().zip(&sample.categories[0].weights) {
+            let bin = ((mass - 70.0) / 2.5).floor();
+            if (0.0..16.0).contains(&bin) {
+                share[bin as usize] += weight / 20_000.0;
+            }
+            share[16] += weight / 20_000.0;
+        }
+        shares.push(share);
+    }
+    let accepted: f64 = shares.iter().map(|share| share[16]).sum();
+    for bin in 0..16 {
+        let p = shares.iter().map(|share| share[bin]).sum::<f64>() / accepted;
+        let error = shares.iter().map(|share| (share[bin] - p * share[16]).powi(2)).sum::<f64>().sqrt() / accepted;
+        // 20 000 smearings know a share of a few per cent to a few per cent of itself.
+        let difference = (template.list_error[bin] - error).abs();
+        assert!(difference < 0.05 * error + 1e-4, "bin {bin}: {} {error}", template.list_error[bin]);
+    }
+}
+
+#[test]
+fn a_file_without_the_channel_is_told_with_reasons() {
+    let error = fold_channel(&study(Object::Photon, &extract()), 0, 91.188, &|_| ()).unwrap_err();
+    assert!(matches!(error, FoldError::NoEvents { .. }), "{error}");
+    assert!(error.to_string().contains("dilepton_200.lhe.gz"), "{error}");
+    let gone = fold_channel(&study(Object::Muon, Path::new("gone.lhe")), 0, 91.188, &|_| ()).unwrap_err();
+    assert!(matches!(gone, FoldError::Events(_)), "{gone}");
+}
+
+#[test]
+fn threads_do_not_change_a_bit() {
+    let study = study(Object::Electron, &extract());
+    let with = |threads| {
+        let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build().unwrap();
+        pool.install(|| fold(&study)).templates
+    };
+    assert_eq!(with(1), with(3));
+}
