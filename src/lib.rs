@@ -14,7 +14,7 @@
 //! # Rooms
 //!
 //! A module imports only from modules that stand before it in this list: [`problem`], [`numerics`], [`kinematics`], [`lineshape`],
-//! [`detector`], [`process`], [`events`], [`template`], [`fold`], [`files`], [`draw`], [`cli`].
+//! [`fit`], [`detector`], [`process`], [`events`], [`template`], [`fold`], [`files`], [`draw`], [`cli`].
 
 pub mod problem;
 
@@ -23,6 +23,8 @@ pub mod numerics;
 pub mod kinematics;
 
 pub mod lineshape;
+
+pub mod fit;
 
 pub mod detector;
 

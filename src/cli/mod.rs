@@ -4,6 +4,8 @@
 //! an arm in the enum `Command` and in its `run`.
 
 pub mod check;
+pub mod fit;
+mod fit_text;
 pub mod fold;
 mod outcome;
 pub mod shape;
@@ -43,6 +45,7 @@ struct Program {
 #[derive(Debug, Subcommand)]
 enum Command {
     Check(check::CheckArgs),
+    Fit(Box<fit::FitArgs>),
     Fold(fold::FoldArgs),
     Shape(Box<shape::ShapeArgs>),
 }
@@ -51,6 +54,7 @@ impl Command {
     fn run(&self, out: &mut impl Write) -> Outcome {
         match self {
             Command::Check(args) => check::run(args, out),
+            Command::Fit(args) => fit::run(args, out),
             Command::Fold(args) => fold::run(args, out),
             Command::Shape(args) => shape::run(args, out),
         }

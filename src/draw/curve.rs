@@ -54,16 +54,7 @@ pub fn draw_shape(shape: &dyn Shape, range_gev: Option<(f64, f64)>, file: &Path)
         figure(&root, shape, &masses, &densities, 1.3 * top).map_err(|error| DrawError::Figure(error.to_string()))?;
         root.present().map_err(|error| DrawError::Figure(error.to_string()))?;
     }
-    // Through a sibling, so that a failure leaves the old file as it was.
-    let mut sibling = file.as_os_str().to_owned();
-    sibling.push(".part");
-    let sibling = std::path::PathBuf::from(sibling);
-    let written = std::fs::write(&sibling, svg).and_then(|()| std::fs::rename(&sibling, file));
-    if written.is_err() {
-        // The first error is the one to report; the part may not even exist.
-        let _ = std::fs::remove_file(&sibling);
-    }
-    Ok(written?)
+    Ok(super::write_whole(file, &svg)?)
 }
 
 type Failure<'a> = DrawingAreaErrorKind<<SVGBackend<'a> as DrawingBackend>::ErrorType>;

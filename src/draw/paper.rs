@@ -26,6 +26,13 @@ pub(super) const FRAME: RGBColor = RGBColor(0x88, 0x88, 0x88);
 #[error("a figure could not be drawn: {0}")]
 pub struct DrawError(String);
 
+impl DrawError {
+    /// There is nothing to draw.
+    pub(super) fn nothing(why: &str) -> Self {
+        DrawError(why.to_owned())
+    }
+}
+
 impl<E: std::error::Error + Send + Sync> From<DrawingAreaErrorKind<E>> for DrawError {
     fn from(error: DrawingAreaErrorKind<E>) -> Self {
         DrawError(error.to_string())

@@ -1,4 +1,4 @@
-//! What is read and written: detector and study files, run directories.
+//! What is read and written: detector and study files, run directories, data to fit.
 //!
 //! A file goes through three stages: its text is parsed as TOML with the place of every key, each value is read with a
 //! check of its type and range, and the whole is checked for what its parts must satisfy together. Problems are
@@ -9,6 +9,7 @@ mod detector_entries;
 mod detector_file;
 mod digest;
 mod domain;
+mod fit_data;
 mod interrupt;
 mod number;
 mod reader;
@@ -25,6 +26,7 @@ mod uncertainties;
 
 pub use detector_file::load_detector;
 pub use digest::FileDigest;
+pub use fit_data::load_fit_data;
 pub use interrupt::remove_unfinished_on_interrupt;
 pub use number::shortest;
 pub use run_read::{Run, read_run};
