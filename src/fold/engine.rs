@@ -117,7 +117,7 @@ pub(super) fn fold_generated(
             let templates = estimate::templates(channel, mass_gev, &totals, None);
             return Ok(Folded { templates, record });
         }
-        next = next_round(done).min(most);
+        next = next_round(done, reached / study.precision).min(most);
     }
 }
 
@@ -130,9 +130,13 @@ pub(super) fn scramblings(seed: u64, plan: &Plan) -> Result<Vec<Scrambling>, Fol
         .ok_or(FoldError::TooManyDimensions { found: places.len(), allowed: MAX_DIMENSIONS })
 }
 
-/// Rounds grow by 3/2 and 4/3 in turn: points are most even at powers of two, and nearly so half-way.
-fn next_round(done: u64) -> u64 {
-    if done.is_power_of_two() { done / 2 * 3 } else { done / 3 * 4 }
+/// The points of the next round, for an error that is `excess` times too large: as many as should do, at most twice as many
+/// as before, in whole blocks. Points are most even at powers of two: one just above is taken instead.
+fn next_round(done: u64, excess: f64) -> u64 {
+    let growth = libm::pow(excess, 1.25).clamp(1.125, 2.0);
+    let wanted = ((done as f64 * growth) as u64).next_multiple_of(BLOCK as u64);
+    let even = wanted.next_power_of_two();
+    if 16 * even <= 17 * wanted { even } else { wanted }
 }
 
 fn fold_chunk(

@@ -5,7 +5,7 @@ use super::limits::{Intervals, allowed};
 use super::plan::{AxisPlan, Plan};
 use super::response::{UnitTail, power_tail};
 use crate::kinematics::MAX_LEGS;
-use crate::numerics::normal::{NORMAL_REACH, normal_cdf, normal_cdf_within};
+use crate::numerics::normal::{NORMAL_REACH, normal_cdf};
 use crate::wide;
 
 /// What measures a leg.
@@ -240,11 +240,15 @@ fn add_rising(axis: &AxisPlan, last: &LastLeg, tail: Option<&UnitTail>, from: f6
             }
             let low = if start > -NORMAL_REACH { normal_cdf(start) } else { 0.0 };
             let high = if end < NORMAL_REACH { normal_cdf(end) } else { 1.0 };
-            let (first, last_edge) = (edge(start), edge(end));
+            let (first, mut last_edge) = (edge(start), edge(end));
+            if end >= NORMAL_REACH {
+                // All edges from here on have the whole weight below: a few more fill the last vector.
+                last_edge = (first + (last_edge - first).next_multiple_of(4)).min(axis.squares.len());
+            }
             sums.steps[first] -= w * low;
             sums.steps[last_edge] += w * high;
             sums.accepted += w * (high - low);
-            fill(axis, last, first, last_edge, &mut sums.below, |t| w * normal_cdf_within(t));
+            fill(axis, last, first, last_edge, &mut sums.below, |t| w * normal_cdf(t));
         }
         Some(tail) => {
             let (low, high) = (tail.cdf(start), tail.cdf(end));

@@ -10,12 +10,7 @@ pub const NORMAL_REACH: f64 = 6.8;
 /// the error function at 40 digits; all coefficients are positive, so nothing cancels.
 #[inline(always)]
 pub fn normal_cdf(t: f64) -> f64 {
-    normal_cdf_within(t.clamp(-NORMAL_REACH, NORMAL_REACH))
-}
-
-/// [`normal_cdf`] for arguments that are known to lie within ±[`NORMAL_REACH`].
-#[inline(always)]
-pub fn normal_cdf_within(t: f64) -> f64 {
+    let t = t.clamp(-NORMAL_REACH, NORMAL_REACH);
     // Estrin's scheme: short chains of dependent operations.
     let z = t * t;
     let z2 = z * z;

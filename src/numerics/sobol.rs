@@ -180,12 +180,19 @@ impl Dimension {
             digit | (mixer.next() & (digit - 1))
         });
         let columns = plain.map(|number| {
-            (0..COLUMNS).filter(|j| number >> (COLUMNS - 1 - j) & 1 == 1).fold(0, |sum, j| sum ^ matrix[j])
+            let (mut rest, mut sum) = (number, 0);
+            while rest != 0 {
+                sum ^= matrix[rest.leading_zeros() as usize];
+                rest &= !(1 << (COLUMNS - 1) >> rest.leading_zeros());
+            }
+            sum
         });
         let shift = mixer.next() >> (64 - BITS);
-        let within = std::array::from_fn(|i| {
-            (0..BLOCK_BITS).filter(|bit| i >> bit & 1 == 1).fold(0, |sum, bit| sum ^ columns[bit])
-        });
+        let mut within = [0; BLOCK];
+        for i in 1..BLOCK {
+            // One column more than the point without the last bit of its number.
+            within[i] = within[i & (i - 1)] ^ columns[i.trailing_zeros() as usize];
+        }
         Dimension { columns, within, shift }
     }
 }
