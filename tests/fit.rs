@@ -1,6 +1,6 @@
 //! The command `fit` and the fits of the library: recovered values, pulls, and what is said to bad input.
 //!
-//! `tests/interop/fit_iminuit.py` compares with iminuit. Here samples are drawn from a known truth.
+//! `tests/interop/check_fit.py` compares with iminuit. Here samples are drawn from a known truth.
 #![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic)]
 
 use std::path::{Path, PathBuf};

@@ -152,7 +152,15 @@ fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
 
 fn report(out: &mut impl Write, table: &[Vec<String>], records: &[FoldRecord], path: &Path) -> io::Result<()> {
     write_table(out, &HEADER, table, 2)?;
-    writeln!(out, "\nDigits in parentheses: numerical standard error of the last digits; -: not on the mass axis.")?;
+    let list = if records.iter().any(|record| record.events_used.is_some()) {
+        "; that of an acceptance includes\nthe statistics of the event list"
+    } else {
+        ""
+    };
+    writeln!(
+        out,
+        "\nDigits in parentheses: numerical standard error of the last digits{list}; -: not on the mass axis."
+    )?;
     for record in records {
         if let Some(used) = record.events_used {
             writeln!(out, "{} at {} GeV: {used} events used", record.channel, record.mass_gev)?;

@@ -1,7 +1,7 @@
 #!/usr/bin/env python3
 """Fits the same files with `peakfold fit` and with iminuit 2.33.0, and compares values and errors.
 
-usage: fit_iminuit.py PEAKFOLD
+usage: check_fit.py PROGRAM [RUN], the second for the sake of a common call
 
 The likelihoods are written here from their definitions (normalised in the window; extended with a background; Poisson or
 chi-square for a histogram), with NumPy and SciPy, and share nothing with the program. Values must agree to 1e-3 of the
@@ -165,7 +165,7 @@ def iminuit_with_covariance(case):
 
 
 def main():
-    if len(sys.argv) != 2:
+    if len(sys.argv) not in (2, 3):
         sys.exit(__doc__)
     program = os.path.abspath(sys.argv[1])
     worst = 0
