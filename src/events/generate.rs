@@ -12,7 +12,10 @@ use crate::wide;
 
 /// Turns points of the unit cube into truth events of one channel at one mass point.
 ///
-/// The azimuth of production is fixed (along x): the detector is the same all around.
+/// The azimuth of production is fixed (along x): the detector is the same all around. It is also the same on both sides:
+/// of events that are mirror images in the transverse plane, or along the beam where the rapidities are symmetric, or that
+/// differ by an exchange of equal decay products, one is drawn. That leaves all templates as they are and lets the points
+/// fill an eighth of the space.
 #[derive(Clone, Debug)]
 pub struct Generator {
     production: Production,
@@ -23,6 +26,8 @@ pub struct Generator {
     cascade: Option<CascadeSampler>,
     /// Legs beyond this |rapidity| are out of reach.
     reach: f64,
+    /// Whether the resonance decays to two alike.
+    alike: bool,
 }
 
 /// The dimensions of the sequence that truth events take.
@@ -58,11 +63,23 @@ impl Generator {
                 Some(CascadeSampler::new(&resonance.intermediate, thresholds, range, mass_gev, width))
             }
         };
+        let alike = match decay {
+            Decay::Direct(legs) => legs.windows(2).all(|pair| pair[0] == pair[1]),
+            Decay::Cascade([first, second]) => first == second,
+        };
         let cell_sums = match production {
             Production::Spectrum { .. } => Vec::new(),
             Production::Table(cells) => running_sums(cells),
         };
-        Some(Generator { production: production.clone(), cell_sums, natural, masses, cascade, reach: f64::INFINITY })
+        Some(Generator {
+            production: production.clone(),
+            cell_sums,
+            natural,
+            masses,
+            cascade,
+            reach: f64::INFINITY,
+            alike,
+        })
     }
 
     /// Draws mostly events whose legs stay within this |rapidity|, with weights that make up for it exactly; the preference
@@ -94,18 +111,24 @@ impl Generator {
         } else {
             self.natural.fill(&lane(MASS), &mut block.mass, &mut block.weight);
         }
+        let mut u_cos = lane(COS_THETA);
+        if self.alike {
+            // The first of two alike may be the one with the larger momentum along the beam.
+            u_cos = u_cos.map(|u| 0.5 + 0.5 * u);
+        }
+        let u_phi = lane(PHI).map(|u| 0.5 * u);
         match &self.cascade {
             None => {
                 let (m1, m2) = ([self.masses[0]; BLOCK], [self.masses[1]; BLOCK]);
                 let [a, b, ..] = block.legs.as_mut_slice() else { return };
-                split(&lane(COS_THETA), &lane(PHI), &block.mass, &m1, &m2, a, b);
+                split(&u_cos, &u_phi, &block.mass, &m1, &m2, a, b);
             }
             Some(cascade) => {
                 let (mut v1, mut v2) = (LegLanes::default(), LegLanes::default());
                 let (mut m1, mut m2) = ([0.0; BLOCK], [0.0; BLOCK]);
                 let weight = &mut block.weight;
                 cascade.fill(&block.mass, &lane(CASCADE), &lane(CASCADE + 1), &mut m1, &mut m2, weight);
-                split(&lane(COS_THETA), &lane(PHI), &block.mass, &m1, &m2, &mut v1, &mut v2);
+                split(&u_cos, &u_phi, &block.mass, &m1, &m2, &mut v1, &mut v2);
                 let [a, b, c, d] = block.legs.as_mut_slice() else { return };
                 let mass = |leg: usize| [self.masses[leg]; BLOCK];
                 split(&lane(CASCADE + 2), &lane(CASCADE + 3), &m1, &mass(0), &mass(1), a, b);
@@ -184,9 +207,12 @@ wide! {
 }
 
 wide! {
+    /// The upper half of a Gaussian.
     fn gaussian(sigma: f64, uniform: &Lane, values: &mut Lane) {
         for i in 0..BLOCK {
-            values[i] = sigma * kernel::normal_quantile(uniform[i]);
+            let u = 0.5 + 0.5 * uniform[i];
+            let u = if u < 1.0 - 1.2e-16 { u } else { 1.0 - 1.2e-16 };
+            values[i] = sigma * kernel::normal_quantile(u);
         }
     }
 }
@@ -212,10 +238,12 @@ wide! {
 const DEFENSIVE: f64 = 1.0 / 16.0;
 
 wide! {
-    /// Gaussian rapidities, mostly between `low` and `high`: density over drawn density multiplies the weight.
+    /// Rapidities of the upper half of a Gaussian, mostly between `low` and `high`: density over drawn density multiplies
+    /// the weight.
     fn within(sigma: f64, uniform: &Lane, low: &Lane, high: &Lane, rapidity: &mut Lane, weight: &mut Lane) {
         for i in 0..BLOCK {
-            let below = normal_cdf(low[i] / sigma);
+            let from = if low[i] > 0.0 { low[i] } else { 0.0 };
+            let below = normal_cdf(from / sigma);
             let inside = normal_cdf(high[i] / sigma) - below;
             let reachable = inside > 1e-9;
             let anywhere = uniform[i] < DEFENSIVE || !reachable;
@@ -225,13 +253,14 @@ wide! {
                 (0.0, 1.0)
             };
             let u = (uniform[i] - start) / length;
-            let u = if anywhere { u } else { below + u * inside };
+            let u = if anywhere { 0.5 + 0.5 * u } else { below + u * inside };
             let u = if u > 1e-16 { u } else { 1e-16 };
             let u = if u < 1.0 - 1.2e-16 { u } else { 1.0 - 1.2e-16 };
             let y = sigma * kernel::normal_quantile(u);
             rapidity[i] = y;
-            let preferred = !anywhere || (low[i] < y && y < high[i]);
-            let drawn = if preferred { (1.0 - DEFENSIVE) / inside } else { 0.0 };
+            let preferred = !anywhere || (from < y && y < high[i]);
+            // Of the half Gaussian, twice as dense, the share between the limits is 2 inside.
+            let drawn = if preferred { (1.0 - DEFENSIVE) / (2.0 * inside) } else { 0.0 };
             let factor = 1.0 / (drawn + DEFENSIVE);
             weight[i] *= if reachable { factor } else { 1.0 };
         }
