@@ -79,6 +79,7 @@ fn contents() -> RunContents {
             channel: "two-photon".to_owned(),
             mass_gev,
             points: 65536,
+            final_points: 65536,
             precision_reached: if mass_gev > 160.0 { f64::INFINITY } else { 8e-5 },
             reached: mass_gev < 160.0,
             cpu_seconds: 0.5,

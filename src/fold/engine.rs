@@ -4,6 +4,7 @@ use super::last_leg::{Sums, add};
 use super::measure::Workspace;
 use super::plan::Plan;
 use super::{FoldError, FoldRecord, Folded, Progress, estimate};
+use crate::detector::Detector;
 use crate::events::Generator;
 use crate::numerics::sobol::{BLOCK, MAX_DIMENSIONS, MAX_POINTS, Scrambling};
 use crate::process::{Production, Study};
@@ -44,22 +45,24 @@ impl Total {
     }
 }
 
-/// Folds generated events of one channel at one mass point.
+/// Folds generated events of one channel at one mass point, with `exactly` so many points if that is given.
 ///
 /// # Errors
 /// When the study and the call do not fit together; a precision that is not reached is no error but said in the record.
 pub(super) fn fold_generated(
     study: &Study,
+    detector: &Detector,
     channel_index: usize,
     mass_gev: f64,
     production: &Production,
+    exactly: Option<u64>,
     progress: &(dyn Fn(Progress) + Sync),
 ) -> Result<Folded, FoldError> {
     let started = Instant::now();
     let channel = study.channels.get(channel_index).ok_or(FoldError::NoSuchChannel(channel_index))?;
     let mut generator = Generator::new(&study.resonance, production, &channel.decay, mass_gev)
         .ok_or(FoldError::BelowThreshold { mass_gev })?;
-    let plan = Plan::new(&study.detector, channel, mass_gev, &generator.dimensions());
+    let plan = Plan::new(detector, channel, mass_gev, &generator.dimensions());
     generator.restrict(plan.rapidity_reach());
     let scramblings = scramblings(study.seed, &plan)?;
     let categories = channel.categories.len();
@@ -68,8 +71,10 @@ pub(super) fn fold_generated(
     let most = (study.max_points / REPLICATES as u64).clamp(BLOCK as u64, MAX_POINTS);
     // The largest power of two within the limit: the points are most even there.
     let most = 1 << most.ilog2();
+    // Points of another fold are taken in one round.
+    let exactly = exactly.map(|points| (points / REPLICATES as u64).clamp(BLOCK as u64, MAX_POINTS));
     let mut done = 0;
-    let mut next = FIRST_ROUND.min(most);
+    let mut next = exactly.unwrap_or(FIRST_ROUND.min(most));
     let mut cpu_seconds = 0.0;
     let mut reached = f64::INFINITY;
     loop {
@@ -79,7 +84,7 @@ pub(super) fn fold_generated(
         let mut finished = 0.0;
         // The points at which the error will be small enough: a guess, from the rate at which it usually falls.
         let goal = if done == 0 { f64::INFINITY } else { done as f64 * libm::pow(reached / study.precision, 1.25) };
-        let goal = goal.clamp(next as f64, most as f64);
+        let goal = goal.clamp(next as f64, most.max(next) as f64);
         for wave in tasks.chunks(WAVE) {
             let results: Vec<(usize, Total, f64)> = wave
                 .par_iter()
@@ -103,11 +108,12 @@ pub(super) fn fold_generated(
         }
         done = next;
         reached = estimate::precision(&totals);
-        if reached <= study.precision || done >= most {
+        if reached <= study.precision || done >= most || exactly.is_some() {
             let record = FoldRecord {
                 channel: channel.name.clone(),
                 mass_gev,
                 points: done * REPLICATES as u64,
+                final_points: done * REPLICATES as u64,
                 precision_reached: reached,
                 reached: reached <= study.precision,
                 cpu_seconds,

@@ -6,6 +6,7 @@ use super::last_leg::{Sums, add};
 use super::measure::Workspace;
 use super::plan::Plan;
 use super::{FoldError, FoldRecord, Folded, Progress};
+use crate::detector::Detector;
 use crate::events::lhe::{EventFile, Options};
 use crate::events::{Selection, Selector, TruthDimensions};
 use crate::kinematics::TruthEvent;
@@ -76,24 +77,26 @@ impl Folder<'_> {
     }
 }
 
-/// Folds the events of a file for one channel.
+/// Folds the events of a file for one channel, in one pass with `exactly` so many points an event if that is given.
 pub(super) fn fold_file(
     study: &Study,
+    detector: &Detector,
     channel_index: usize,
     mass_gev: f64,
     path: &Path,
+    exactly: Option<u64>,
     progress: &(dyn Fn(Progress) + Sync),
 ) -> Result<Folded, FoldError> {
     let started = Instant::now();
     let channel = study.channels.get(channel_index).ok_or(FoldError::NoSuchChannel(channel_index))?;
     let selector = Selector::new(&channel.decay, study.resonance.intermediate.mass_gev)
         .ok_or_else(|| FoldError::CannotPick { channel: channel.name.clone() })?;
-    let plan = Plan::new(&study.detector, channel, mass_gev, &TruthDimensions::default());
+    let plan = Plan::new(detector, channel, mass_gev, &TruthDimensions::default());
     let scramblings = scramblings(study.seed, &plan)?;
     let (categories, edges) = (channel.categories.len(), plan.axis.squares.len());
     let mut kept: Option<Vec<TruthEvent>> = None;
     let mut record = FoldRecord { channel: channel.name.clone(), mass_gev, ..FoldRecord::default() };
-    let mut per_event = 1;
+    let mut per_event = exactly.unwrap_or(1);
     loop {
         let mut folder = Folder {
             plan: &plan,
@@ -141,7 +144,8 @@ pub(super) fn fold_file(
             used,
             study.max_points - record.points.min(study.max_points),
         );
-        if reached <= study.precision || next <= per_event {
+        if reached <= study.precision || next <= per_event || exactly.is_some() {
+            record.final_points = pass.points;
             record.precision_reached = reached;
             record.reached = reached <= study.precision;
             record.wall_seconds = started.elapsed().as_secs_f64();

@@ -13,6 +13,7 @@ mod resolve;
 mod response;
 mod spread;
 
+use crate::detector::Detector;
 use crate::problem::Problem;
 use crate::process::{EventSource, Study};
 use crate::template::LabelledTemplate;
@@ -26,6 +27,8 @@ pub struct FoldRecord {
     pub mass_gev: f64,
     /// Points used, over all scramblings.
     pub points: u64,
+    /// Points that the templates come from: of a list, those of the last pass only.
+    pub final_points: u64,
     /// Error reached, as the study's `precision` is defined, in the worst category.
     pub precision_reached: f64,
     /// Whether the study's `precision` was reached.
@@ -104,8 +107,43 @@ pub fn fold_channel(
     mass_gev: f64,
     progress: &(dyn Fn(Progress) + Sync),
 ) -> Result<Folded, FoldError> {
+    fold_with(study, &study.detector, channel, mass_gev, None, progress)
+}
+
+/// Folds as [`fold_channel`] did before, at exactly the same points, with another detector: what the two templates differ
+/// by is then the effect of the detector, without the noise of the points. This is how a calibration shift is folded.
+///
+/// `record` is that of the earlier fold of the same study, channel and mass point.
+///
+/// # Errors
+/// See [`FoldError`].
+pub fn fold_shifted(
+    study: &Study,
+    detector: &Detector,
+    channel: usize,
+    record: &FoldRecord,
+    progress: &(dyn Fn(Progress) + Sync),
+) -> Result<Folded, FoldError> {
+    fold_with(study, detector, channel, record.mass_gev, Some(record), progress)
+}
+
+fn fold_with(
+    study: &Study,
+    detector: &Detector,
+    channel: usize,
+    mass_gev: f64,
+    record: Option<&FoldRecord>,
+    progress: &(dyn Fn(Progress) + Sync),
+) -> Result<Folded, FoldError> {
     match &study.resonance.source {
-        EventSource::Generated(production) => engine::fold_generated(study, channel, mass_gev, production, progress),
-        EventSource::File(path) => list::fold_file(study, channel, mass_gev, path, progress),
+        EventSource::Generated(production) => {
+            let points = record.map(|record| record.final_points);
+            engine::fold_generated(study, detector, channel, mass_gev, production, points, progress)
+        }
+        EventSource::File(path) => {
+            let events = |record: &FoldRecord| record.events_used.unwrap_or(1).max(1) * engine::REPLICATES as u64;
+            let points = record.map(|record| (record.final_points / events(record)).max(1).next_power_of_two());
+            list::fold_file(study, detector, channel, mass_gev, path, points, progress)
+        }
     }
 }
