@@ -28,7 +28,7 @@ fn agrees(study: &Study, seed: u64) {
         study.precision /= 4.0;
         study.max_points = 1 << 26;
     } else {
-        study.precision = study.precision.max(4e-4);
+        study.precision = study.precision.max(2e-4);
     }
     let study = &study;
     let folded = fold(study);
@@ -46,6 +46,20 @@ fn agrees(study: &Study, seed: u64) {
         );
         assert!(comparison.agrees(), "{} {}: {comparison:?}", labelled.channel, labelled.category);
         assert!((lost - labelled.template.lost).abs() < 5.0 * lost_error, "lost {lost:e} {:e}", labelled.template.lost);
+    }
+}
+
+/// Every channel of the demo, at 190 GeV.
+#[test]
+fn the_demo_agrees_with_plain_smearing() {
+    let path = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("calib-demo/study.toml");
+    let demo = peakfold::files::load_study(&path).expect("the demo").study;
+    for (index, channel) in demo.channels.iter().enumerate() {
+        let mut study = demo.clone();
+        study.resonance.masses_gev = vec![190.0];
+        study.channels = vec![channel.clone()];
+        study.precision = 2e-4;
+        agrees(&study, 40 + index as u64);
     }
 }
 
