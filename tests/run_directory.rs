@@ -33,6 +33,7 @@ fn study() -> Study {
         seed: 7,
         precision: 1e-4,
         max_points: 1 << 20,
+        prune_shifts_below: 0.0,
         resonance: Resonance {
             masses_gev: vec![150.0, 180.5],
             width: Width::Gev(0.0),
@@ -94,6 +95,7 @@ fn contents() -> RunContents {
     RunContents {
         record: RunRecord::new(&study(), inputs(), &folds),
         templates: vec![template(150.0), template(180.5)],
+        responses: Vec::new(),
         further: vec![("figures/two-photon.svg".to_owned(), b"<svg/>".to_vec())],
     }
 }

@@ -94,6 +94,7 @@ fn expected_detector() -> Detector {
         ..bare.clone()
     };
     Detector {
+        covariances: Vec::new(),
         name: "Invented, for tests".into(),
         calorimeters: vec![plain, bare, electron],
         trackers: vec![

@@ -8,6 +8,7 @@ use super::source::{InputText, Sheet, Unreadable, read_text};
 use super::{FileDigest, LoadedDetector};
 use crate::detector::{Calorimeter, Detector, EtaRange, Object};
 use crate::problem::{Problem, Problems};
+use crate::shift::nuisances;
 
 /// How far from 1 the fractions of one region may add up.
 const FRACTION_TOLERANCE: f64 = 1e-9;
@@ -85,6 +86,9 @@ fn detector(mut root: Section<'_>) -> Option<Detector> {
         vertex,
         covariances: Vec::new(),
     };
+    if let Err(error) = nuisances(&detector) {
+        root.problem("share", error.to_string());
+    }
     warn_of_hidden_entries(sheet, &detector, &lines.0, &lines.1);
     root.finish();
     whole.then_some(detector)

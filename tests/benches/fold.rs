@@ -56,6 +56,7 @@ fn study(precision: f64, tails: bool) -> Study {
         seed: 1,
         precision,
         max_points: 1 << 30,
+        prune_shifts_below: 0.0,
         resonance: Resonance {
             masses_gev: vec![180.0],
             width: Width::Gev(0.0),

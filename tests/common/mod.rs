@@ -86,6 +86,7 @@ pub fn study(detector: Detector, mass_gev: f64, channel: Channel) -> Study {
         seed: 1,
         precision: 1e-4,
         max_points: 1 << 24,
+        prune_shifts_below: 0.0,
         resonance: Resonance {
             masses_gev: vec![mass_gev],
             width: Width::Gev(0.0),
