@@ -1,12 +1,14 @@
 //! The detector as it was calibrated or proposed: what each region resolves, and how well that is known.
 
 mod calorimeter;
+mod efficiency;
 mod geometry;
 mod object;
 mod regions;
 mod tracker;
 
 pub use calorimeter::{Calorimeter, Tail};
+pub use efficiency::{Efficiency, EfficiencyCell, EfficiencyCurve, EfficiencyRegion, LEAST_TURN_ON_WIDTH_GEV};
 pub use geometry::TrackerGeometry;
 pub use object::Object;
 pub use regions::{CalorimeterRegion, TrackerRegion};
@@ -86,4 +88,7 @@ pub struct Detector {
     pub directions: Vec<Direction>,
     /// The vertex; exact without.
     pub vertex: Option<Vertex>,
+    /// Efficiencies, in the order of the file: the first whose object and region match a leg wins; 1 for an object
+    /// without any.
+    pub efficiencies: Vec<Efficiency>,
 }

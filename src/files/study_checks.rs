@@ -87,7 +87,7 @@ fn overlap(a: EtaRange, b: EtaRange) -> bool {
 }
 
 /// What is left of some ranges when others are taken out.
-fn without(ranges: &[EtaRange], taken: &[EtaRange]) -> Vec<EtaRange> {
+pub(super) fn without(ranges: &[EtaRange], taken: &[EtaRange]) -> Vec<EtaRange> {
     let mut left = ranges.to_vec();
     for out in taken {
         left = left
@@ -103,7 +103,7 @@ fn without(ranges: &[EtaRange], taken: &[EtaRange]) -> Vec<EtaRange> {
     left
 }
 
-fn ranges(ranges: &[EtaRange]) -> String {
+pub(super) fn ranges(ranges: &[EtaRange]) -> String {
     let texts: Vec<String> = ranges.iter().map(|range| format!("{} to {}", range.low, range.high)).collect();
     if texts.is_empty() { "nowhere".to_owned() } else { texts.join(" and ") }
 }
