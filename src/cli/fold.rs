@@ -65,11 +65,19 @@ pub fn run(args: &FoldArgs, out: &mut impl Write) -> Outcome {
     };
     record.wall_seconds = started.elapsed().as_secs_f64();
     let not_reached = record.not_reached.clone();
-    let table = rows(&templates);
+    let mut table = rows(&templates);
+    let mut header = HEADER.to_vec();
+    if templates.iter().all(|labelled| labelled.template.efficiency == 1.0) {
+        let column = header.iter().position(|title| *title == EFFICIENCY);
+        column.into_iter().for_each(|column| {
+            header.remove(column);
+            table.iter_mut().for_each(|row| drop(row.remove(column)));
+        });
+    }
     let committed = RunContents { record, templates, further }.commit(target)?;
 
     // The run is written; a reader of the table who has gone away changes nothing.
-    let _ = report(out, &table, &records, &args.output);
+    let _ = report(out, &header, &table, &records, &args.output);
     if let Some(old) = committed.old_left_at {
         say(&format!("warning: the old result could not be deleted and lies in {}", old.display()));
     }
@@ -126,8 +134,11 @@ fn progress_bar(folds: u64, quiet: bool) -> ProgressBar {
     bar
 }
 
-const HEADER: [&str; 7] =
-    ["channel", "category", "mass [GeV]", "acceptance", "peak [GeV]", "sigma_eff [GeV]", "FWHM [GeV]"];
+const HEADER: [&str; 8] =
+    ["channel", "category", "mass [GeV]", "acceptance", EFFICIENCY, "peak [GeV]", "sigma_eff [GeV]", "FWHM [GeV]"];
+
+/// A column that is shown only where some efficiency is not 1.
+const EFFICIENCY: &str = "efficiency";
 
 fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
     let mut rows = Vec::new();
@@ -137,11 +148,13 @@ fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
         let cell = |measured: Measured| with_error(measured.value, measured.error);
         // Both errors of an acceptance count: that of the points and that of the event list.
         let error = libm::hypot(t.acceptance_error, t.acceptance_list_error);
+        let efficiency_error = libm::hypot(t.efficiency_error, t.efficiency_list_error);
         rows.push(vec![
             labelled.channel.clone(),
             labelled.category.clone(),
             labelled.mass_gev.to_string(),
             with_error(Some(t.acceptance), Some(error)),
+            with_error(Some(t.efficiency), Some(efficiency_error)),
             cell(widths.peak_gev),
             cell(widths.sigma_eff_gev),
             cell(widths.fwhm_gev),
@@ -150,10 +163,16 @@ fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
     rows
 }
 
-fn report(out: &mut impl Write, table: &[Vec<String>], records: &[FoldRecord], path: &Path) -> io::Result<()> {
-    write_table(out, &HEADER, table, 2)?;
+fn report(
+    out: &mut impl Write,
+    header: &[&str],
+    table: &[Vec<String>],
+    records: &[FoldRecord],
+    path: &Path,
+) -> io::Result<()> {
+    write_table(out, header, table, 2)?;
     let list = if records.iter().any(|record| record.events_used.is_some()) {
-        "; that of an acceptance includes\nthe statistics of the event list"
+        "; that of an acceptance or efficiency\nincludes the statistics of the event list"
     } else {
         ""
     };
@@ -169,7 +188,7 @@ fn report(out: &mut impl Write, table: &[Vec<String>], records: &[FoldRecord], p
             }
         }
         for note in &record.notes {
-            writeln!(out, "  note: {note}")?;
+            writeln!(out, "{} at {} GeV: {note}", record.channel, record.mass_gev)?;
         }
     }
     writeln!(out, "Written to {}", path.display())?;

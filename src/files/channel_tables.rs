@@ -63,10 +63,8 @@ fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> O
         min_pt_gev: per_leg(section.optional("min_pt_gev"), legs),
         min_pt_over_mass: per_leg(section.optional("min_pt_over_mass"), legs),
     };
-    let min_efficient_legs = section
-        .optional("min_efficient_legs")
-        .and_then(|item| item.whole(1, legs as u64))
-        .map(|count| count as usize);
+    let min_efficient_legs =
+        section.optional("min_efficient_legs").and_then(|item| item.whole(1, legs as u64)).map(|count| count as usize);
     let axis = axis(&mut section);
     let shape = section.optional("shape").and_then(|item| item.word(&SHAPES));
     let categories = categories(section.tables("category"));

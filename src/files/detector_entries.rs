@@ -6,7 +6,8 @@ use super::reader::Section;
 use super::resonance_table::{OtherFiles, file_name};
 use super::uncertainties;
 use crate::detector::{
-    Calorimeter, Direction, Efficiency, EfficiencyCurve, EtaRange, Object, Tail, Tracker, TrackerGeometry, TrackerResolution, Vertex,
+    Calorimeter, Direction, Efficiency, EfficiencyCurve, EtaRange, Object, Tail, Tracker, TrackerGeometry,
+    TrackerResolution, Vertex,
 };
 
 /// Most points of a tracker; more is a slip of the pen.

@@ -67,7 +67,8 @@ fn detector(mut root: Section<'_>, tables: &mut OtherFiles) -> Option<Detector> 
     let (trackers, trackers_whole) = placed(root.tables("tracker"), entries::tracker);
     let (directions, _) = placed(root.tables("direction"), entries::direction);
     let vertex = root.table("vertex").map(entries::vertex);
-    let (efficiencies, efficiencies_whole) = placed(root.tables("efficiency"), |section| entries::efficiency(section, tables));
+    let (efficiencies, efficiencies_whole) =
+        placed(root.tables("efficiency"), |section| entries::efficiency(section, tables));
     if root.optional("calorimeter").is_none() && root.optional("tracker").is_none() {
         root.problem("calorimeter", "neither [[calorimeter]] nor [[tracker]] is there; give at least one entry");
     }
@@ -83,7 +84,8 @@ fn detector(mut root: Section<'_>, tables: &mut OtherFiles) -> Option<Detector> 
     );
     one_direction_an_object(sheet, directions.iter().map(|placed| (placed.line, placed.entry.object)));
     fractions(sheet, &calorimeters);
-    let lines = Lines { calorimeters: lines(&calorimeters), trackers: lines(&trackers), efficiencies: lines(&efficiencies) };
+    let lines =
+        Lines { calorimeters: lines(&calorimeters), trackers: lines(&trackers), efficiencies: lines(&efficiencies) };
     let detector = Detector {
         name,
         calorimeters: calorimeters.into_iter().map(|placed| placed.entry).collect(),
@@ -206,8 +208,7 @@ fn efficiency_holes(sheet: &Sheet, detector: &Detector, lines: &[usize]) {
     for object in Object::ALL {
         let covered = detector.coverage(object);
         let regions = detector.efficiency_regions(object);
-        let Some((first, line)) =
-            detector.efficiencies.iter().zip(lines).find(|(entry, _)| entry.object == object)
+        let Some((first, line)) = detector.efficiencies.iter().zip(lines).find(|(entry, _)| entry.object == object)
         else {
             continue;
         };

@@ -57,11 +57,11 @@ fn overlaps(path: &Path, cells: &[(usize, EfficiencyCell)], problems: &mut Vec<P
     let apart = |a: (f64, f64), b: (f64, f64)| a.1 <= b.0 || b.1 <= a.0;
     for (index, (line, cell)) in cells.iter().enumerate() {
         let eta = |cell: &EfficiencyCell| (cell.eta.low, cell.eta.high);
-        let share = |(_, other): &&(usize, EfficiencyCell)| {
-            !apart(cell.pt_gev, other.pt_gev) && !apart(eta(cell), eta(other))
-        };
+        let share =
+            |(_, other): &&(usize, EfficiencyCell)| !apart(cell.pt_gev, other.pt_gev) && !apart(eta(cell), eta(other));
         if let Some((other, _)) = cells[..index].iter().find(share) {
-            let message = format!("the cell overlaps that of line {other}; every pT and |eta| may lie in one cell only");
+            let message =
+                format!("the cell overlaps that of line {other}; every pT and |eta| may lie in one cell only");
             problems.push(Problem::at_line(path, *line, message));
         }
     }

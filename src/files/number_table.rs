@@ -37,7 +37,8 @@ pub(super) fn read<const N: usize>(
     let places = columns.map(|(column, _)| header.iter().position(|title| title == column));
     let names = |count: usize| columns[..count].iter().map(|(column, _)| *column).collect::<Vec<_>>().join(",");
     let here = places.iter().flatten().count();
-    let fits = header.len() == here && (here == N || here == required && places[..required].iter().all(Option::is_some));
+    let fits =
+        header.len() == here && (here == N || here == required && places[..required].iter().all(Option::is_some));
     if !fits {
         let found = header.iter().collect::<Vec<_>>().join(",");
         let or = if required < N { format!(" or {}", names(required)) } else { String::new() };
