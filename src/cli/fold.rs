@@ -65,19 +65,11 @@ pub fn run(args: &FoldArgs, out: &mut impl Write) -> Outcome {
     };
     record.wall_seconds = started.elapsed().as_secs_f64();
     let not_reached = record.not_reached.clone();
-    let mut table = rows(&templates);
-    let mut header = HEADER.to_vec();
-    if templates.iter().all(|labelled| labelled.template.efficiency == 1.0) {
-        let column = header.iter().position(|title| *title == EFFICIENCY);
-        column.into_iter().for_each(|column| {
-            header.remove(column);
-            table.iter_mut().for_each(|row| drop(row.remove(column)));
-        });
-    }
+    let table = Table::new(&templates);
     let committed = RunContents { record, templates, further }.commit(target)?;
 
     // The run is written; a reader of the table who has gone away changes nothing.
-    let _ = report(out, &header, &table, &records, &args.output);
+    let _ = report(out, &table, &records, &args.output);
     if let Some(old) = committed.old_left_at {
         say(&format!("warning: the old result could not be deleted and lies in {}", old.display()));
     }
@@ -140,6 +132,27 @@ const HEADER: [&str; 8] =
 /// A column that is shown only where some efficiency is not 1.
 const EFFICIENCY: &str = "efficiency";
 
+/// What is shown of the templates.
+struct Table {
+    header: Vec<&'static str>,
+    rows: Vec<Vec<String>>,
+}
+
+impl Table {
+    fn new(templates: &[LabelledTemplate]) -> Self {
+        let mut table = Table { header: HEADER.to_vec(), rows: rows(templates) };
+        let place = HEADER.iter().position(|title| *title == EFFICIENCY);
+        let shown = templates.iter().any(|labelled| labelled.template.efficiency != 1.0);
+        if let Some(column) = place.filter(|_| !shown) {
+            table.header.remove(column);
+            for row in &mut table.rows {
+                row.remove(column);
+            }
+        }
+        table
+    }
+}
+
 fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
     let mut rows = Vec::new();
     for labelled in templates {
@@ -163,14 +176,8 @@ fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
     rows
 }
 
-fn report(
-    out: &mut impl Write,
-    header: &[&str],
-    table: &[Vec<String>],
-    records: &[FoldRecord],
-    path: &Path,
-) -> io::Result<()> {
-    write_table(out, header, table, 2)?;
+fn report(out: &mut impl Write, table: &Table, records: &[FoldRecord], path: &Path) -> io::Result<()> {
+    write_table(out, &table.header, &table.rows, 2)?;
     let list = if records.iter().any(|record| record.events_used.is_some()) {
         "; that of an acceptance or efficiency\nincludes the statistics of the event list"
     } else {

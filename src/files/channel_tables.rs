@@ -24,9 +24,10 @@ const LARGEST_ABS_ETA: Domain =
 #[derive(Debug)]
 pub(super) struct PlacedChannel {
     pub channel: Channel,
-    /// Where its decay and its axis stand.
+    /// Where its decay, its axis and `min_efficient_legs` stand.
     pub decay_line: usize,
     pub axis_line: usize,
+    pub efficient_legs_line: usize,
     /// Its name in keys, `channel.two-photon`, and the key of its decay.
     pub path: String,
     pub decay_key: &'static str,
@@ -72,6 +73,7 @@ fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> O
     let decay_key = if matches!(decay, Some(Decay::Cascade(_))) { "via" } else { "legs" };
     let decay_line = section.line_of(decay_key);
     let axis_line = section.line_of("mass_axis");
+    let efficient_legs_line = section.line_of("min_efficient_legs");
     section.finish();
     let channel = Channel {
         name,
@@ -82,7 +84,7 @@ fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> O
         shape: shape.unwrap_or(ShapeChoice::DoubleCrystalBall),
         categories,
     };
-    Some(PlacedChannel { channel, decay_line, axis_line, path, decay_key })
+    Some(PlacedChannel { channel, decay_line, axis_line, path, decay_key, efficient_legs_line })
 }
 
 fn decay(section: &mut Section<'_>, generated: Option<bool>) -> Option<Decay> {

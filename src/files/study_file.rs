@@ -82,6 +82,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
     }
     if let Some(detector) = &detector {
         study_checks::coverage(sheet, detector, &channels);
+        study_checks::efficient_legs(sheet, detector, &channels);
     }
     Some(Study {
         name,
