@@ -230,6 +230,7 @@ fn regions_are_disjoint_and_the_first_entry_wins() {
         directions: Vec::new(),
         vertex: None,
         efficiencies: Vec::new(),
+        covariances: Vec::new(),
     };
     let region =
         |low, high, entries: &[usize]| CalorimeterRegion { eta: EtaRange { low, high }, entries: entries.to_vec() };

@@ -29,6 +29,7 @@ fn study() -> Study {
             directions: Vec::new(),
             vertex: None,
             efficiencies: Vec::new(),
+            covariances: Vec::new(),
         },
         seed: 7,
         precision: 1e-4,

@@ -93,6 +93,7 @@ fn detector(mut root: Section<'_>, tables: &mut OtherFiles) -> Option<Detector> 
         directions: directions.into_iter().map(|placed| placed.entry).collect(),
         vertex,
         efficiencies: efficiencies.into_iter().map(|placed| placed.entry).collect(),
+        covariances: Vec::new(),
     };
     warn_of_hidden_entries(sheet, &detector, &lines);
     if whole && efficiencies_whole {

@@ -3,7 +3,7 @@
 use super::engine::Total;
 use super::last_leg::Sums;
 use crate::process::Channel;
-use crate::template::{LabelledTemplate, Replicate, Template};
+use crate::template::{LabelledTemplate, Replicate, Template, standard_error};
 
 /// What the statistics of an event list add.
 #[derive(Clone, Debug)]
@@ -80,16 +80,6 @@ impl ListSums {
     }
 }
 
-/// Standard error of the mean of values.
-fn standard_error(values: impl Iterator<Item = f64> + Clone) -> f64 {
-    let count = values.clone().count() as f64;
-    if count < 2.0 {
-        return 0.0;
-    }
-    let mean = values.clone().sum::<f64>() / count;
-    (values.map(|value| (value - mean) * (value - mean)).sum::<f64>() / (count * (count - 1.0))).sqrt()
-}
-
 /// The scramblings of one category, normalised.
 fn replicates(totals: &[Total], category: usize) -> Vec<Replicate> {
     totals.iter().map(|total| normalised(&total.sums[category], total.generated)).collect()
@@ -117,7 +107,7 @@ fn pooled(totals: &[Total], category: usize) -> (Replicate, Vec<f64>, Vec<Replic
     let mean = normalised(&sum.sums[category], sum.generated);
     let replicates = replicates(totals, category);
     let errors = (0..mean.probability.len())
-        .map(|bin| standard_error(replicates.iter().map(|replicate| replicate.probability[bin])))
+        .map(|bin| standard_error(replicates.iter().map(|replicate| replicate.probability[bin])).unwrap_or(0.0))
         .collect();
     (mean, errors, replicates)
 }
@@ -158,7 +148,8 @@ pub(super) fn templates(
             let efficiency = efficiency(weights.iter().map(|w| w.0).sum(), weights.iter().map(|w| w.1).sum());
             let template = Template {
                 edges_gev: channel.axis.edges_gev(mass_gev),
-                acceptance_error: standard_error(replicates.iter().map(|replicate| replicate.acceptance)),
+                acceptance_error: standard_error(replicates.iter().map(|replicate| replicate.acceptance))
+                    .unwrap_or(0.0),
                 probability: mean.probability,
                 error,
                 list_error,
@@ -167,7 +158,7 @@ pub(super) fn templates(
                 acceptance: mean.acceptance,
                 acceptance_list_error,
                 efficiency,
-                efficiency_error: standard_error(weights.iter().map(|w| self::efficiency(w.0, w.1))),
+                efficiency_error: standard_error(weights.iter().map(|w| self::efficiency(w.0, w.1))).unwrap_or(0.0),
                 efficiency_list_error: list.map_or(0.0, |list| efficiency_list_error(list, index, efficiency)),
                 lost: if generated == 0.0 { 0.0 } else { lost / generated },
                 replicates,

@@ -63,6 +63,7 @@ pub fn empty_detector() -> Detector {
         directions: Vec::new(),
         vertex: None,
         efficiencies: Vec::new(),
+        covariances: Vec::new(),
     }
 }
 
