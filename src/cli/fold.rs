@@ -69,7 +69,7 @@ pub fn run(args: &FoldArgs, out: &mut impl Write) -> Outcome {
     };
     record.wall_seconds = started.elapsed().as_secs_f64();
     let not_reached = record.not_reached.clone();
-    let table = rows(&templates);
+    let table = Table::new(&templates);
     let committed = RunContents { record, templates, responses: responses.clone(), further }.commit(target)?;
 
     // The run is written; a reader of the table who has gone away changes nothing.
@@ -163,8 +163,32 @@ fn progress_bar(folds: u64, quiet: bool) -> ProgressBar {
     bar
 }
 
-const HEADER: [&str; 7] =
-    ["channel", "category", "mass [GeV]", "acceptance", "peak [GeV]", "sigma_eff [GeV]", "FWHM [GeV]"];
+const HEADER: [&str; 8] =
+    ["channel", "category", "mass [GeV]", "acceptance", EFFICIENCY, "peak [GeV]", "sigma_eff [GeV]", "FWHM [GeV]"];
+
+/// A column that is shown only where some efficiency is not 1.
+const EFFICIENCY: &str = "efficiency";
+
+/// What is shown of the templates.
+struct Table {
+    header: Vec<&'static str>,
+    rows: Vec<Vec<String>>,
+}
+
+impl Table {
+    fn new(templates: &[LabelledTemplate]) -> Self {
+        let mut table = Table { header: HEADER.to_vec(), rows: rows(templates) };
+        let place = HEADER.iter().position(|title| *title == EFFICIENCY);
+        let shown = templates.iter().any(|labelled| labelled.template.efficiency != 1.0);
+        if let Some(column) = place.filter(|_| !shown) {
+            table.header.remove(column);
+            for row in &mut table.rows {
+                row.remove(column);
+            }
+        }
+        table
+    }
+}
 
 fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
     let mut rows = Vec::new();
@@ -174,11 +198,13 @@ fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
         let cell = |measured: Measured| with_error(measured.value, measured.error);
         // Both errors of an acceptance count: that of the points and that of the event list.
         let error = libm::hypot(t.acceptance_error, t.acceptance_list_error);
+        let efficiency_error = libm::hypot(t.efficiency_error, t.efficiency_list_error);
         rows.push(vec![
             labelled.channel.clone(),
             labelled.category.clone(),
             labelled.mass_gev.to_string(),
             with_error(Some(t.acceptance), Some(error)),
+            with_error(Some(t.efficiency), Some(efficiency_error)),
             cell(widths.peak_gev),
             cell(widths.sigma_eff_gev),
             cell(widths.fwhm_gev),
@@ -189,14 +215,14 @@ fn rows(templates: &[LabelledTemplate]) -> Vec<Vec<String>> {
 
 fn report(
     out: &mut impl Write,
-    table: &[Vec<String>],
+    table: &Table,
     records: &[FoldRecord],
     responses: &[LabelledResponse],
     path: &Path,
 ) -> io::Result<()> {
-    write_table(out, &HEADER, table, 2)?;
+    write_table(out, &table.header, &table.rows, 2)?;
     let list = if records.iter().any(|record| record.events_used.is_some()) {
-        "; that of an acceptance includes\nthe statistics of the event list"
+        "; that of an acceptance or efficiency\nincludes the statistics of the event list"
     } else {
         ""
     };
@@ -212,7 +238,7 @@ fn report(
             }
         }
         for note in &record.notes {
-            writeln!(out, "  note: {note}")?;
+            writeln!(out, "{} at {} GeV: {note}", record.channel, record.mass_gev)?;
         }
     }
     shift_lines(out, responses)?;

@@ -9,9 +9,11 @@ mod detector_entries;
 mod detector_file;
 mod digest;
 mod domain;
+mod efficiency_file;
 mod fit_data;
 mod interrupt;
 mod number;
+mod number_table;
 mod reader;
 mod resonance_table;
 mod response_table;
@@ -45,7 +47,8 @@ use crate::process::Study;
 pub struct LoadedStudy {
     /// The study.
     pub study: Study,
-    /// Every file that it depends on: the study, the detector, then a spectrum table or an event file.
+    /// Every file that it depends on: the study, the detector with its efficiency tables, then a spectrum
+    /// table or an event file.
     pub inputs: Vec<FileDigest>,
     /// What is allowed but likely not meant.
     pub warnings: Vec<Problem>,
@@ -56,8 +59,8 @@ pub struct LoadedStudy {
 pub struct LoadedDetector {
     /// The detector.
     pub detector: Detector,
-    /// Its file.
-    pub input: FileDigest,
+    /// Every file that it depends on: its own, then its efficiency tables.
+    pub inputs: Vec<FileDigest>,
     /// What is allowed but likely not meant.
     pub warnings: Vec<Problem>,
 }

@@ -67,7 +67,7 @@ pub struct FoldSummary {
     pub events_effective: Option<f64>,
     /// Events of the list that were skipped, by reason.
     pub events_skipped: Vec<Skipped>,
-    /// What else is worth knowing about the file of events.
+    /// What else is worth knowing: about the file of events, and about events where no efficiency is told.
     pub notes: Vec<String>,
 }
 

@@ -18,7 +18,7 @@ pub(super) const SUMMARY_FILE: &str = "summary.csv";
 pub(super) const TEMPLATE_COLUMNS: [&str; 10] =
     ["channel", "category", "mass_gev", "shift", "bin", "low_gev", "high_gev", "probability", "error", "list_error"];
 
-const SUMMARY_COLUMNS: [&str; 32] = [
+const SUMMARY_COLUMNS: [&str; 35] = [
     "channel",
     "category",
     "mass_gev",
@@ -26,6 +26,9 @@ const SUMMARY_COLUMNS: [&str; 32] = [
     "acceptance",
     "acceptance_error",
     "acceptance_list_error",
+    "efficiency",
+    "efficiency_error",
+    "efficiency_list_error",
     "below_axis",
     "below_axis_error",
     "above_axis",
@@ -141,9 +144,10 @@ fn write_summary(out: impl Write, templates: &[LabelledTemplate], folds: &[FoldS
     for labelled in templates {
         let t = &labelled.template;
         let w = t.widths().map_err(|error| refuse(labelled, &error.to_string()))?;
+        let efficiency = [t.efficiency, t.efficiency_error, t.efficiency_list_error];
         let plain = [t.acceptance, t.acceptance_error, t.acceptance_list_error, t.lost];
-        if plain.iter().any(|number| !number.is_finite()) {
-            return Err(refuse(labelled, "acceptance or loss is not a finite number"));
+        if plain.iter().chain(&efficiency).any(|number| !number.is_finite()) {
+            return Err(refuse(labelled, "acceptance, efficiency or loss is not a finite number"));
         }
         let mut row = vec![
             labelled.channel.clone(),
@@ -154,6 +158,7 @@ fn write_summary(out: impl Write, templates: &[LabelledTemplate], folds: &[FoldS
             shortest(t.acceptance_error),
             shortest(t.acceptance_list_error),
         ];
+        row.extend(efficiency.map(shortest));
         let pair = |measured: Measured| [shortest_or_empty(measured.value), shortest_or_empty(measured.error)];
         row.extend([w.below_axis, w.above_axis].into_iter().flat_map(pair));
         row.push(shortest(t.lost));

@@ -36,7 +36,7 @@ pub fn load_study(path: &Path) -> Result<LoadedStudy, Problems> {
     warnings.append(&mut files.detector.warnings);
     match study {
         Some(study) if problems.is_empty() => {
-            let inputs = [input].into_iter().chain(files.detector.input).chain(files.others.inputs).collect();
+            let inputs = [input].into_iter().chain(files.detector.inputs).chain(files.others.inputs).collect();
             Ok(LoadedStudy { study, inputs, warnings })
         }
         _ => Err(Problems(problems)),
@@ -51,7 +51,7 @@ struct Files {
 
 #[derive(Default)]
 struct FileOfStudy {
-    input: Option<FileDigest>,
+    inputs: Vec<FileDigest>,
     problems: Vec<Problem>,
     warnings: Vec<Problem>,
 }
@@ -84,6 +84,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
     }
     if let Some(detector) = &detector {
         study_checks::coverage(sheet, detector, &channels);
+        study_checks::efficient_legs(sheet, detector, &channels);
     }
     Some(Study {
         name,
@@ -101,7 +102,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
 fn detector(sheet: &Sheet, item: &Item<'_>, file: &mut FileOfStudy) -> Option<Detector> {
     match detector_file::read(&sheet.resolve(file_name(item)?)) {
         Ok(reading) => {
-            file.input = Some(reading.input);
+            file.inputs = reading.inputs;
             file.problems = reading.problems;
             file.warnings = reading.warnings;
             reading.detector

@@ -62,6 +62,7 @@ pub fn empty_detector() -> Detector {
         trackers: Vec::new(),
         directions: Vec::new(),
         vertex: None,
+        efficiencies: Vec::new(),
         covariances: Vec::new(),
     }
 }
@@ -72,6 +73,7 @@ pub fn channel(name: &str, decay: Decay) -> Channel {
         name: name.into(),
         decay,
         cuts: Cuts::default(),
+        min_efficient_legs: None,
         axis: MassAxis { low: 0.8, high: 1.2, bins: 200, relative: true },
         shape: ShapeChoice::DoubleCrystalBall,
         categories: vec![Category { name: "all".into(), max_abs_eta: None }],
