@@ -229,6 +229,7 @@ fn regions_are_disjoint_and_the_first_entry_wins() {
         trackers: vec![tracker(Object::Muon, (0.5, 2.4), muon), tracker(Object::Muon, (0.0, 1.0), muon)],
         directions: Vec::new(),
         vertex: None,
+        covariances: Vec::new(),
     };
     let region =
         |low, high, entries: &[usize]| CalorimeterRegion { eta: EtaRange { low, high }, entries: entries.to_vec() };

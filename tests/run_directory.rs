@@ -28,6 +28,7 @@ fn study() -> Study {
             trackers: Vec::new(),
             directions: Vec::new(),
             vertex: None,
+            covariances: Vec::new(),
         },
         seed: 7,
         precision: 1e-4,

@@ -1,15 +1,19 @@
 //! The detector as it was calibrated or proposed: what each region resolves, and how well that is known.
 
 mod calorimeter;
+mod covariance;
 mod geometry;
 mod object;
 mod regions;
+mod terms;
 mod tracker;
 
 pub use calorimeter::{Calorimeter, Tail};
+pub use covariance::TermCovariance;
 pub use geometry::TrackerGeometry;
 pub use object::Object;
 pub use regions::{CalorimeterRegion, TrackerRegion};
+pub use terms::{Allowed, Part, Term};
 pub use tracker::{Tracker, TrackerResolution};
 
 /// A half-open range of absolute pseudorapidity, `low <= |eta| < high`.
@@ -86,4 +90,6 @@ pub struct Detector {
     pub directions: Vec<Direction>,
     /// The vertex; exact without.
     pub vertex: Option<Vertex>,
+    /// Joint uncertainties of several numbers, as a calibration gives them.
+    pub covariances: Vec<TermCovariance>,
 }

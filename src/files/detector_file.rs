@@ -83,6 +83,7 @@ fn detector(mut root: Section<'_>) -> Option<Detector> {
         trackers: trackers.into_iter().map(|placed| placed.entry).collect(),
         directions: directions.into_iter().map(|placed| placed.entry).collect(),
         vertex,
+        covariances: Vec::new(),
     };
     warn_of_hidden_entries(sheet, &detector, &lines.0, &lines.1);
     root.finish();

@@ -3,7 +3,7 @@
 use super::engine::Total;
 use super::last_leg::Sums;
 use crate::process::Channel;
-use crate::template::{LabelledTemplate, Replicate, Template};
+use crate::template::{LabelledTemplate, Replicate, Template, standard_error};
 
 /// What the statistics of an event list add.
 #[derive(Clone, Debug)]
@@ -66,16 +66,6 @@ impl ListSums {
     }
 }
 
-/// Standard error of the mean of values.
-fn standard_error(values: impl Iterator<Item = f64> + Clone) -> f64 {
-    let count = values.clone().count() as f64;
-    if count < 2.0 {
-        return 0.0;
-    }
-    let mean = values.clone().sum::<f64>() / count;
-    (values.map(|value| (value - mean) * (value - mean)).sum::<f64>() / (count * (count - 1.0))).sqrt()
-}
-
 /// The scramblings of one category, normalised.
 fn replicates(totals: &[Total], category: usize) -> Vec<Replicate> {
     totals.iter().map(|total| normalised(&total.sums[category], total.generated)).collect()
@@ -103,7 +93,7 @@ fn pooled(totals: &[Total], category: usize) -> (Replicate, Vec<f64>, Vec<Replic
     let mean = normalised(&sum.sums[category], sum.generated);
     let replicates = replicates(totals, category);
     let errors = (0..mean.probability.len())
-        .map(|bin| standard_error(replicates.iter().map(|replicate| replicate.probability[bin])))
+        .map(|bin| standard_error(replicates.iter().map(|replicate| replicate.probability[bin])).unwrap_or(0.0))
         .collect();
     (mean, errors, replicates)
 }
@@ -141,7 +131,8 @@ pub(super) fn templates(
             };
             let template = Template {
                 edges_gev: channel.axis.edges_gev(mass_gev),
-                acceptance_error: standard_error(replicates.iter().map(|replicate| replicate.acceptance)),
+                acceptance_error: standard_error(replicates.iter().map(|replicate| replicate.acceptance))
+                    .unwrap_or(0.0),
                 probability: mean.probability,
                 error,
                 list_error,

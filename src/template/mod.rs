@@ -1,9 +1,11 @@
 //! Templates: bin probabilities with errors, and their widths.
 
 mod cumulative;
+mod error;
 mod widths;
 
 pub use cumulative::{Cumulative, CumulativeError};
+pub use error::standard_error;
 pub use widths::{Measured, SIGMA_EFF_FRACTION, Widths};
 
 /// What one independent scrambling of the points gave; the spread over scramblings is the numerical error.

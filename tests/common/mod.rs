@@ -62,6 +62,7 @@ pub fn empty_detector() -> Detector {
         trackers: Vec::new(),
         directions: Vec::new(),
         vertex: None,
+        covariances: Vec::new(),
     }
 }
 
