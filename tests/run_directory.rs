@@ -42,6 +42,7 @@ fn study() -> Study {
             falloff_power: 0.0,
             source: EventSource::Generated(Production::Spectrum { pt_mean_gev: 40.0, rapidity_sigma: 1.0 }),
             intermediate: Intermediate { mass_gev: 91.188, width_gev: 2.4955 },
+            radiation: None,
         },
         channels: Vec::new(),
     }

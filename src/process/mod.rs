@@ -5,8 +5,8 @@ mod channel;
 mod resonance;
 
 pub use axis::MassAxis;
-pub use channel::{Category, Channel, Cuts, Decay, ShapeChoice};
-pub use resonance::{EventSource, Intermediate, Natural, Production, Resonance, SpectrumCell, Width};
+pub use channel::{Ancestry, Category, Channel, Cuts, Decay, LegChoice, Pairing, Pick, ShapeChoice};
+pub use resonance::{EventSource, Intermediate, Natural, Production, Radiation, Resonance, SpectrumCell, Width};
 
 use crate::detector::Detector;
 
