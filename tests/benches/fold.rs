@@ -53,6 +53,7 @@ fn study(precision: f64, tails: bool) -> Study {
                 uncertainties: Vec::new(),
             }),
             efficiencies: Vec::new(),
+            covariances: Vec::new(),
         },
         seed: 1,
         precision,
