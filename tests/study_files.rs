@@ -10,8 +10,8 @@ use peakfold::detector::{
 use peakfold::files::{LoadedStudy, load_detector, load_study};
 use peakfold::problem::Problems;
 use peakfold::process::{
-    Category, Channel, Cuts, Decay, EventSource, Intermediate, MassAxis, Natural, Production, Resonance, ShapeChoice,
-    SpectrumCell, Width,
+    Category, Channel, Cuts, Decay, EventSource, Intermediate, LegChoice, MassAxis, Natural, Production, Resonance,
+    ShapeChoice, SpectrumCell, Width,
 };
 
 const DETECTOR: &str = include_str!("inputs/detector.toml");
@@ -96,6 +96,8 @@ fn expected_detector() -> Detector {
         ..bare.clone()
     };
     Detector {
+        covariances: Vec::new(),
+        efficiencies: Vec::new(),
         name: "Invented, for tests".into(),
         calorimeters: vec![plain, bare, electron],
         trackers: vec![
@@ -185,11 +187,14 @@ fn every_key_of_a_good_pair() {
         falloff_power: 4.0,
         source: EventSource::Generated(Production::Table(vec![cell((0.0, 20.0), 3.0), cell((20.0, 50.5), 0.5)])),
         intermediate: Intermediate { mass_gev: 80.0, width_gev: 2.0 },
+        radiation: None,
     };
     assert_eq!(study.resonance, resonance);
     let photons = Channel {
         name: "two-photon".into(),
         decay: Decay::Direct(vec![Object::Photon; 2]),
+        min_efficient_legs: None,
+        choice: LegChoice::default(),
         cuts: Cuts {
             max_abs_eta: Some(1.4),
             gap_abs_eta: Some(eta(0.4, 0.5)),
@@ -207,6 +212,8 @@ fn every_key_of_a_good_pair() {
     let mixed = Channel {
         name: "mixed".into(),
         decay: Decay::Cascade([[Object::Electron; 2], [Object::Muon; 2]]),
+        min_efficient_legs: None,
+        choice: LegChoice::default(),
         cuts: Cuts::default(),
         min_efficient_legs: Some(3),
         axis: MassAxis { low: 100.0, high: 300.0, bins: 100, relative: false },
@@ -247,6 +254,7 @@ mass_axis = { low_gev = 100.0, high_gev = 200.0, bins = 10 }
         falloff_power: 0.0,
         source: EventSource::File(pair.path("truth.lhe")),
         intermediate: Intermediate { mass_gev: 91.188, width_gev: 2.4955 },
+        radiation: None,
     };
     assert_eq!(study.resonance, resonance);
     // The digest of "abc": FIPS 180-2, appendix B.1.

@@ -90,7 +90,6 @@ pub(super) fn tracker(mut entry: Section<'_>) -> Option<Tracker> {
             "geometry.field_t",
             "geometry.inner_radius_m",
             "geometry.lever_arm_m",
-            "geometry.points",
             "geometry.point_resolution_um",
             "geometry.radiation_lengths",
         ],

@@ -10,6 +10,7 @@ use super::study_checks::{ranges, without};
 use super::{FileDigest, LoadedDetector};
 use crate::detector::{Calorimeter, Detector, EfficiencyCurve, EtaRange, Object};
 use crate::problem::{Problem, Problems};
+use crate::shift::nuisances;
 
 /// How far from 1 the fractions of one region may add up.
 const FRACTION_TOLERANCE: f64 = 1e-9;
@@ -95,6 +96,9 @@ fn detector(mut root: Section<'_>, tables: &mut OtherFiles) -> Option<Detector> 
         efficiencies: efficiencies.into_iter().map(|placed| placed.entry).collect(),
         covariances: Vec::new(),
     };
+    if let Err(error) = nuisances(&detector) {
+        root.problem("share", error.to_string());
+    }
     warn_of_hidden_entries(sheet, &detector, &lines);
     if whole && efficiencies_whole {
         efficiency_holes(sheet, &detector, &lines.efficiencies);

@@ -3,12 +3,12 @@
 use std::path::Path;
 
 use super::FileDigest;
-use super::domain::{ANY, MASS, NOT_NEGATIVE};
+use super::domain::{ANY, Domain, MASS, NOT_NEGATIVE};
 use super::reader::{Item, Section};
 use super::source::{Sheet, Unreadable, digest};
 use super::spectrum_file;
 use crate::problem::Problem;
-use crate::process::{EventSource, Intermediate, Natural, Production, Resonance, Width};
+use crate::process::{EventSource, Intermediate, Natural, Production, Radiation, Resonance, Width};
 
 const NATURAL_SHAPES: [(&str, Natural); 3] = [
     ("breit-wigner", Natural::BreitWigner),
@@ -18,6 +18,8 @@ const NATURAL_SHAPES: [(&str, Natural); 3] = [
 
 /// The V of X -> V V(*) when none is given: mass and width in GeV.
 const INTERMEDIATE: Intermediate = Intermediate { mass_gev: 91.188, width_gev: 2.4955 };
+
+const DELTA_R: Domain = Domain { contains: |x| x > 0.0 && x <= 2.0, text: "a number larger than 0, up to 2" };
 
 /// What other files of a study or a detector brought along.
 #[derive(Debug, Default)]
@@ -69,7 +71,21 @@ pub(super) fn read(mut section: Section<'_>, files: &mut OtherFiles) -> Option<R
         table.finish();
         intermediate
     });
-    section.not_yet("radiation");
+    let radiation = match source {
+        Some(EventSource::File(_)) => section.table("radiation").map(|mut table| {
+            let radiation = Radiation { recombination_delta_r: table.number("recombination_delta_r", &DELTA_R) };
+            table.finish();
+            radiation
+        }),
+        Some(EventSource::Generated(_)) => {
+            section.not_yet("radiation");
+            None
+        }
+        None => {
+            section.optional("radiation");
+            None
+        }
+    };
     section.finish();
     Some(Resonance {
         masses_gev,
@@ -78,6 +94,7 @@ pub(super) fn read(mut section: Section<'_>, files: &mut OtherFiles) -> Option<R
         falloff_power,
         source: source?,
         intermediate,
+        radiation,
     })
 }
 

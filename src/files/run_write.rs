@@ -1,8 +1,10 @@
-//! The files of a run directory: `templates.csv`, `shifts.csv`, `summary.csv`, `run.json`.
+//! The files of a run directory: `templates.csv`, `shifts.csv`, `responses.csv`, `summary.csv`, `run.json`.
 
 use super::number::{shortest, shortest_or_empty};
+use super::response_table::{self, RESPONSES_FILE};
 use super::run_record::{FoldSummary, RunRecord};
 use super::run_target::{Committed, RUN_FILE, Staging, Target, TargetError};
+use crate::shift::LabelledResponse;
 use crate::template::{LabelledTemplate, Measured, SIGMA_EFF_FRACTION};
 use std::io::{self, Write};
 
@@ -61,6 +63,8 @@ pub struct RunContents {
     pub record: RunRecord,
     /// All templates; those with another `shift` than [`NOMINAL`] go to `shifts.csv`.
     pub templates: Vec<LabelledTemplate>,
+    /// What the nuisances do to the templates.
+    pub responses: Vec<LabelledResponse>,
     /// Further files: path in the run (with `/`, e.g. `figures/two-photon.svg`) and contents.
     pub further: Vec<(String, Vec<u8>)>,
 }
@@ -81,6 +85,9 @@ impl RunContents {
         if self.templates.iter().any(|template| template.shift != NOMINAL) {
             let shifted = |template: &&LabelledTemplate| template.shift != NOMINAL;
             staging.write(SHIFTS_FILE, |out| write_templates(out, self.templates.iter().filter(shifted)))?;
+        }
+        if !self.responses.is_empty() {
+            staging.write(RESPONSES_FILE, |out| response_table::write(out, &self.responses))?;
         }
         staging.write(SUMMARY_FILE, |out| write_summary(out, &self.templates, &self.record.folds))?;
         for (name, bytes) in &self.further {

@@ -2,7 +2,7 @@
 
 use std::path::Path;
 
-use super::domain::INSIDE_UNIT;
+use super::domain::{INSIDE_UNIT, SHARE};
 use super::reader::{Item, Section};
 use super::resonance_table::{self, OtherFiles, file_name};
 use super::source::{InputText, Sheet, Unreadable, read_text};
@@ -65,6 +65,8 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
     let precision = root.number_or("precision", &INSIDE_UNIT, PRECISION);
     let max_points = root.whole_or("max_points", (FEWEST_POINTS, LARGEST_WHOLE), MAX_POINTS);
 
+    let prune_shifts_below = root.number_or("prune_shifts_below", &SHARE, 0.0);
+
     let resonance_section = root.required("resonance", "the table [resonance]").and_then(|item| item.section());
     let masses_line = resonance_section.as_ref().map_or(1, |section| section.line_of("masses_gev"));
     let resonance = resonance_section.and_then(|section| resonance_table::read(section, &mut files.others));
@@ -90,6 +92,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
         seed,
         precision,
         max_points,
+        prune_shifts_below,
         resonance: resonance?,
         channels: channels.into_iter().map(|placed| placed.channel).collect(),
     })

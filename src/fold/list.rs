@@ -90,7 +90,9 @@ pub(super) fn fold_file(
     let started = Instant::now();
     let channel = study.channels.get(channel_index).ok_or(FoldError::NoSuchChannel(channel_index))?;
     let selector = Selector::new(&channel.decay, study.resonance.intermediate.mass_gev)
-        .ok_or_else(|| FoldError::CannotPick { channel: channel.name.clone() })?;
+        .ok_or_else(|| FoldError::CannotPick { channel: channel.name.clone() })?
+        .with_choice(channel.choice, mass_gev)
+        .with_recombination(study.resonance.radiation.map(|radiation| radiation.recombination_delta_r));
     let plan = Plan::new(detector, channel, mass_gev, &TruthDimensions::default());
     let scramblings = scramblings(study.seed, &plan)?;
     let (categories, edges) = (channel.categories.len(), plan.axis.squares.len());
