@@ -96,8 +96,6 @@ fn expected_detector() -> Detector {
         ..bare.clone()
     };
     Detector {
-        covariances: Vec::new(),
-        efficiencies: Vec::new(),
         name: "Invented, for tests".into(),
         calorimeters: vec![plain, bare, electron],
         trackers: vec![
@@ -193,7 +191,6 @@ fn every_key_of_a_good_pair() {
     let photons = Channel {
         name: "two-photon".into(),
         decay: Decay::Direct(vec![Object::Photon; 2]),
-        min_efficient_legs: None,
         choice: LegChoice::default(),
         cuts: Cuts {
             max_abs_eta: Some(1.4),
@@ -212,7 +209,6 @@ fn every_key_of_a_good_pair() {
     let mixed = Channel {
         name: "mixed".into(),
         decay: Decay::Cascade([[Object::Electron; 2], [Object::Muon; 2]]),
-        min_efficient_legs: None,
         choice: LegChoice::default(),
         cuts: Cuts::default(),
         min_efficient_legs: Some(3),
