@@ -182,11 +182,9 @@ fn a_plateau_is_a_number_that_shifts() {
 /// Every category agrees with the plain path, which draws each leg: shape, acceptance, losses, efficiency.
 fn agrees(study: &Study, seed: u64) {
     const EVENTS: u64 = 600_000;
-    let mut study = study.clone();
-    study.precision = 5e-4;
-    let folded = fold(&study);
+    let folded = fold(study);
     assert!(folded.record.reached, "precision {:e}", folded.record.precision_reached);
-    let sample = plain::smear_generated(&study, 0, study.resonance.masses_gev[0], EVENTS, seed).expect("plain masses");
+    let sample = plain::smear_generated(study, 0, study.resonance.masses_gev[0], EVENTS, seed).expect("plain masses");
     for (category, labelled) in sample.categories.iter().zip(&folded.templates) {
         let template = &labelled.template;
         let index = folded.templates.iter().position(|other| other == labelled).unwrap();
@@ -198,7 +196,9 @@ fn agrees(study: &Study, seed: u64) {
         assert!(category.masses_gev.len() > 3000, "{}", category.masses_gev.len());
         assert!(efficiency < 0.97 && (efficiency - template.efficiency).abs() < 4.5 * error);
         let lost = category.lost_weight / sample.generated_weight;
-        assert!((lost - template.lost).abs() < 5.0 * (lost.max(1e-5) / EVENTS as f64).sqrt());
+        // The engine samples the losses of all legs but the last.
+        let lost_error = (lost.max(1e-6) * (1.0 / EVENTS as f64 + 3.0 / folded.record.points as f64)).sqrt();
+        assert!((lost - template.lost).abs() < 5.0 * lost_error, "lost {lost:e} {:e}", template.lost);
     }
 }
 
@@ -209,6 +209,7 @@ fn photons_near_their_threshold_agree_with_plain_drawing() {
     study.resonance.width = Width::Gev(8.0);
     study.resonance.natural = Natural::BreitWigner;
     study.detector.efficiencies = vec![entry(Object::Photon, turn_on(62.0, 2.0, 0.95))];
+    study.precision = 3e-3;
     agrees(&study, 1);
     let without = Study { detector: common::full_detector(), ..study.clone() };
     let half = |study: &Study| {
@@ -230,6 +231,7 @@ fn a_table_and_regions_agree_with_plain_drawing() {
     ]);
     let inner = Efficiency { eta: EtaRange { low: 0.0, high: 1.8 }, ..entry(Object::Photon, cells) };
     study.detector.efficiencies = vec![inner, entry(Object::Photon, turn_on(40.0, 5.0, 0.85))];
+    study.precision = 5e-4;
     agrees(&study, 2);
 }
 
@@ -238,6 +240,7 @@ fn one_of_two_electrons_agrees_with_plain_drawing() {
     let mut study = common::electron_study();
     study.detector.efficiencies = vec![entry(Object::Electron, turn_on(50.0, 6.0, 0.9))];
     study.channels[0].min_efficient_legs = Some(1);
+    study.precision = 5e-4;
     agrees(&study, 3);
 }
 
@@ -247,6 +250,7 @@ fn two_of_four_leptons_agree_with_plain_drawing() {
     let cells = table(&[(10.0, 40.0, 0.0, 9.0, 0.4), (40.0, 1e6, 0.0, 9.0, 0.8)]);
     study.detector.efficiencies = vec![entry(Object::Electron, turn_on(60.0, 5.0, 0.8)), entry(Object::Muon, cells)];
     study.channels[0].min_efficient_legs = Some(2);
+    study.precision = 5e-4;
     agrees(&study, 4);
 }
 
@@ -425,14 +429,14 @@ fn check_describes_efficiencies() {
     // Normal distribution function at -7.5, -5, 2.5 and 15 (published tables: 2.867e-7 at -5, 0.9937903 at 2.5).
     let expected = "\
   photon efficiency, in the middle of the region, in % at pT
-    |eta|         entry                 10 GeV    20 GeV    50 GeV   100 GeV
-    0 to 2.5      photon-efficiency      0.000     0.000    89.441    90.000
+    |eta|         entry                10 GeV    20 GeV    50 GeV   100 GeV
+    0 to 2.5      photon-efficiency     0.000     0.000    89.441    90.000
                   half of the plateau 0.9 at 40 GeV, turn-on width 4 GeV
                   known to: plateau 0.01
 ";
     assert!(report.contains(expected), "{report}");
     let expected = "\
-    0 to 2.5      jet-trigger            0.000     0.000    50.000    90.000
+    0 to 2.5      jet-trigger           0.000     0.000    50.000    90.000
                   a table of 2 cells, pT 30 to 1000000 GeV; 0 outside of its cells
 ";
     assert!(report.contains(expected), "{report}");

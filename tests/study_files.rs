@@ -184,20 +184,20 @@ fn every_key_of_a_good_pair() {
         natural: Natural::RunningWidth,
         falloff_power: 4.0,
         source: EventSource::Generated(Production::Table(vec![cell((0.0, 20.0), 3.0), cell((20.0, 50.5), 0.5)])),
-        radiation: None,
         intermediate: Intermediate { mass_gev: 80.0, width_gev: 2.0 },
+        radiation: None,
     };
     assert_eq!(study.resonance, resonance);
     let photons = Channel {
         name: "two-photon".into(),
         decay: Decay::Direct(vec![Object::Photon; 2]),
+        choice: LegChoice::default(),
         cuts: Cuts {
             max_abs_eta: Some(1.4),
             gap_abs_eta: Some(eta(0.4, 0.5)),
             min_pt_gev: vec![30.0],
             min_pt_over_mass: vec![0.35, 0.25],
         },
-        choice: LegChoice::default(),
         min_efficient_legs: None,
         axis: MassAxis { low: 0.8, high: 1.2, bins: 200, relative: true },
         shape: ShapeChoice::GaussExp,
@@ -209,8 +209,8 @@ fn every_key_of_a_good_pair() {
     let mixed = Channel {
         name: "mixed".into(),
         decay: Decay::Cascade([[Object::Electron; 2], [Object::Muon; 2]]),
-        cuts: Cuts::default(),
         choice: LegChoice::default(),
+        cuts: Cuts::default(),
         min_efficient_legs: Some(3),
         axis: MassAxis { low: 100.0, high: 300.0, bins: 100, relative: false },
         shape: ShapeChoice::DoubleCrystalBall,
@@ -249,8 +249,8 @@ mass_axis = { low_gev = 100.0, high_gev = 200.0, bins = 10 }
         natural: Natural::Relativistic,
         falloff_power: 0.0,
         source: EventSource::File(pair.path("truth.lhe")),
-        radiation: None,
         intermediate: Intermediate { mass_gev: 91.188, width_gev: 2.4955 },
+        radiation: None,
     };
     assert_eq!(study.resonance, resonance);
     // The digest of "abc": FIPS 180-2, appendix B.1.

@@ -59,7 +59,7 @@ pub(super) fn read<const N: usize>(
         let line = record.position().map_or(1, |position| position.line() as usize);
         if record.len() != here {
             let message = format!("found {} values, must be {here}", record.len());
-            problems.push(Problem::at_line(path, line, message).with_key(&names(here)));
+            problems.push(Problem::at_line(path, line, message).with_key(names(here)));
             continue;
         }
         let mut values = [f64::NAN; N];
