@@ -1,7 +1,7 @@
 //! Every number of a detector by its name: what an uncertainty moves, what a budget switches off, what a requirement
 //! solves for.
 
-use super::{Detector, Object, TrackerResolution, Uncertainty};
+use super::{Detector, EfficiencyCurve, Object, TrackerResolution, Uncertainty};
 
 /// The part of a detector that a number belongs to; indices are those of the detector's lists.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash, PartialOrd, Ord)]
@@ -14,6 +14,8 @@ pub enum Part {
     Direction(usize),
     /// The vertex.
     Vertex,
+    /// An efficiency entry.
+    Efficiency(usize),
 }
 
 /// One number of a detector.
@@ -82,6 +84,7 @@ const TRACKER_KEYS: [&str; 8] = [
 const DIRECTION_KEYS: [&str; 2] = ["sigma_theta_mrad", "sigma_phi_mrad"];
 const VERTEX_KEYS: [&str; 5] =
     ["calorimeter_radius_m", "calorimeter_half_length_m", "right_choice", "spread_right_mm", "spread_wrong_mm"];
+const EFFICIENCY_KEYS: [&str; 3] = ["threshold_gev", "width_gev", "plateau"];
 
 impl Term {
     /// The values that the number may take.
@@ -93,6 +96,7 @@ impl Term {
                 (0.0, true, f64::INFINITY)
             }
             "calorimeter_radius_m" | "calorimeter_half_length_m" => (0.0, true, f64::INFINITY),
+            "plateau" => (0.0, true, 1.0),
             "fraction" | "right_choice" => (0.0, false, 1.0),
             _ => (0.0, false, f64::INFINITY),
         };
@@ -127,6 +131,7 @@ impl Detector {
             Part::Tracker(i) => self.trackers.get(i).map(|entry| entry.name.clone()),
             Part::Direction(i) => self.directions.get(i).map(|entry| format!("direction-{}", entry.object)),
             Part::Vertex => Some("vertex".to_owned()),
+            Part::Efficiency(i) => self.efficiencies.get(i).map(|entry| entry.name.clone()),
         }
         .unwrap_or_default()
     }
@@ -137,6 +142,7 @@ impl Detector {
             Part::Calorimeter(i) => self.calorimeters.get(i).map(|entry| vec![entry.object]),
             Part::Tracker(i) => self.trackers.get(i).map(|entry| vec![entry.object]),
             Part::Direction(i) => self.directions.get(i).map(|entry| vec![entry.object]),
+            Part::Efficiency(i) => self.efficiencies.get(i).map(|entry| vec![entry.object]),
             // The vertex moves what has no track.
             Part::Vertex => Some(Object::ALL.into_iter().filter(|object| !object.has_track()).collect()),
         }
@@ -150,6 +156,7 @@ impl Detector {
             .chain((0..self.trackers.len()).map(Part::Tracker))
             .chain((0..self.directions.len()).map(Part::Direction))
             .chain(self.vertex.is_some().then_some(Part::Vertex))
+            .chain((0..self.efficiencies.len()).map(Part::Efficiency))
             .collect()
     }
 
@@ -160,6 +167,7 @@ impl Detector {
             Part::Tracker(i) => self.trackers.get(i).map(|entry| entry.uncertainties.as_slice()),
             Part::Direction(i) => self.directions.get(i).map(|entry| entry.uncertainties.as_slice()),
             Part::Vertex => self.vertex.as_ref().map(|vertex| vertex.uncertainties.as_slice()),
+            Part::Efficiency(i) => self.efficiencies.get(i).map(|entry| entry.uncertainties.as_slice()),
         }
         .unwrap_or_default()
     }
@@ -248,6 +256,12 @@ impl Detector {
                     _ => None,
                 }
             }
+            Part::Efficiency(index) => match (term.key, &mut self.efficiencies.get_mut(index)?.curve) {
+                ("threshold_gev", EfficiencyCurve::TurnOn { threshold_gev, .. }) => Some(threshold_gev),
+                ("width_gev", EfficiencyCurve::TurnOn { width_gev, .. }) => Some(width_gev),
+                ("plateau", EfficiencyCurve::TurnOn { plateau, .. }) => Some(plateau),
+                _ => None,
+            },
             Part::Vertex => {
                 let vertex = self.vertex.as_mut()?;
                 match term.key {
@@ -271,5 +285,6 @@ fn keys(part: Part) -> &'static [&'static str] {
         Part::Tracker(_) => &TRACKER_KEYS,
         Part::Direction(_) => &DIRECTION_KEYS,
         Part::Vertex => &VERTEX_KEYS,
+        Part::Efficiency(_) => &EFFICIENCY_KEYS,
     }
 }

@@ -29,9 +29,10 @@ const LARGEST_ABS_ETA: Domain =
 #[derive(Debug)]
 pub(super) struct PlacedChannel {
     pub channel: Channel,
-    /// Where its decay and its axis stand.
+    /// Where its decay, its axis and `min_efficient_legs` stand.
     pub decay_line: usize,
     pub axis_line: usize,
+    pub efficient_legs_line: usize,
     /// Its name in keys, `channel.two-photon`, and the key of its decay.
     pub path: String,
     pub decay_key: &'static str,
@@ -68,6 +69,8 @@ fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> O
         min_pt_gev: per_leg(section.optional("min_pt_gev"), legs),
         min_pt_over_mass: per_leg(section.optional("min_pt_over_mass"), legs),
     };
+    let min_efficient_legs =
+        section.optional("min_efficient_legs").and_then(|item| item.whole(1, legs as u64)).map(|count| count as usize);
     let choice = choice(&mut section, decay.as_ref(), generated);
     let axis = axis(&mut section);
     let shape = section.optional("shape").and_then(|item| item.word(&SHAPES));
@@ -76,17 +79,19 @@ fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> O
     let decay_key = if matches!(decay, Some(Decay::Cascade(_))) { "via" } else { "legs" };
     let decay_line = section.line_of(decay_key);
     let axis_line = section.line_of("mass_axis");
+    let efficient_legs_line = section.line_of("min_efficient_legs");
     section.finish();
     let channel = Channel {
         name,
         decay: decay?,
         choice,
         cuts,
+        min_efficient_legs,
         axis: axis?,
         shape: shape.unwrap_or(ShapeChoice::DoubleCrystalBall),
         categories,
     };
-    Some(PlacedChannel { channel, decay_line, axis_line, path, decay_key })
+    Some(PlacedChannel { channel, decay_line, axis_line, path, decay_key, efficient_legs_line })
 }
 
 fn decay(section: &mut Section<'_>, generated: Option<bool>) -> Option<Decay> {

@@ -112,6 +112,9 @@ pub struct Channel {
     pub choice: LegChoice,
     /// What events must satisfy.
     pub cuts: Cuts,
+    /// How many legs the efficiency of the detector must find, as when a trigger on one lepton of four suffices: at least
+    /// this many, any of them; all without. A leg of an object without efficiency counts as found.
+    pub min_efficient_legs: Option<usize>,
     /// The axis of reconstructed mass.
     pub axis: MassAxis,
     /// The shape that the model fits.

@@ -23,6 +23,8 @@ pub struct Study {
     pub precision: f64,
     /// Most points per channel and mass.
     pub max_points: u64,
+    /// Calibration shifts that change |CDF| and relative acceptance by less are left out; 0 keeps all.
+    pub prune_shifts_below: f64,
     /// The resonance.
     pub resonance: Resonance,
     /// The channels.

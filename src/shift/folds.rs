@@ -188,6 +188,7 @@ fn add_difference(nominal: &Template, from: &Template, to: &Template) -> Templat
         above_axis: nominal.above_axis + (to.above_axis - from.above_axis),
         acceptance: nominal.acceptance + (to.acceptance - from.acceptance),
         acceptance_error: standard_error(replicates.iter().map(|r| r.acceptance)).unwrap_or(0.0),
+        efficiency: nominal.efficiency + (to.efficiency - from.efficiency),
         lost: nominal.lost + (to.lost - from.lost),
         replicates,
         ..nominal.clone()

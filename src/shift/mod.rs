@@ -9,10 +9,12 @@
 //! * The response of a quantity to a nuisance z is relative: `q(z)/q(0) = 1 + linear z + quadratic z²`, through the values
 //!   at -1, 0 and +1.
 
+mod channel;
 mod folds;
 mod nuisance;
 mod response;
 
+pub use channel::{ChannelShifts, LabelledResponse, ShiftError, fold_shifts, nuisances_of};
 pub use folds::{DIFFERENCE_AIM, FoldedShift, Subsets, fold_shift};
 pub use nuisance::{Move, Nuisance, NuisanceError, Shifted, Sign, nuisances};
 pub use response::{Coefficients, Response, Size};

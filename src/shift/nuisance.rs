@@ -123,10 +123,11 @@ pub fn nuisances(detector: &Detector) -> Result<Vec<Nuisance>, NuisanceError> {
             }
         }
     }
-    for covariance in &detector.covariances {
+    for (number, covariance) in detector.covariances.iter().enumerate() {
+        let earlier = &detector.covariances[..number];
         let twice = covariance.terms.iter().find(|term| {
             detector.uncertainties_of(term.part).iter().any(|u| u.key == term.key && u.sigma != 0.0)
-                || detector.covariances.iter().any(|other| other != covariance && other.terms.contains(term))
+                || earlier.iter().any(|other| other.terms.contains(term))
         });
         if let Some(term) = twice {
             return Err(NuisanceError::Twice { term: detector.term_name(term), name: covariance.name.clone() });

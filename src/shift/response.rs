@@ -38,6 +38,9 @@ pub struct Response {
     pub acceptance: Option<Coefficients>,
     /// How large the shift is.
     pub size: Size,
+    /// Largest |ΔCDF| at the bin edges between a shifted template and the nominal one whose peak and width were moved by the
+    /// coefficients: what a fit that takes these alone leaves out. `None` without coefficients of both.
+    pub misfit: Option<f64>,
 }
 
 impl Response {
@@ -47,20 +50,28 @@ impl Response {
     /// When a template has no cumulative distribution.
     pub fn of(pair: &[FoldedShift; 2], category: usize) -> Result<Option<Self>, CumulativeError> {
         let [plus, minus] = pair;
-        let (Some((nominal, up)), Some((_, down))) =
-            (plus.counterparts.get(category), minus.counterparts.get(category))
+        let (Some((base, up)), Some((_, down))) = (plus.counterparts.get(category), minus.counterparts.get(category))
         else {
             return Ok(None);
         };
-        let (nominal, up, down) = (Values::of(nominal)?, Values::of(up)?, Values::of(down)?);
-        let coefficients = |k: usize| coefficients(&nominal.0[k], &up.0[k], &down.0[k]);
-        let size = size(pair, category);
+        let values = [Values::of(base)?, Values::of(up)?, Values::of(down)?];
+        let coefficients = |k: usize| coefficients(&values[0].0[k], &values[1].0[k], &values[2].0[k]);
+        let (peak, sigma_eff) = (coefficients(0), coefficients(1));
+        let misfit = match peak.zip(sigma_eff) {
+            None => None,
+            Some(moved) => {
+                let base = Cumulative::of(base)?;
+                let (up, down) = (misfit(&base, moved, up, 1.0), misfit(&base, moved, down, -1.0));
+                up.zip(down).map(|(up, down)| up.max(down))
+            }
+        };
         Ok(Some(Response {
             nuisance: plus.nuisance.clone(),
-            peak: coefficients(0),
-            sigma_eff: coefficients(1),
+            peak,
+            sigma_eff,
             acceptance: coefficients(2),
-            size,
+            size: size(pair, category),
+            misfit,
         }))
     }
 }
@@ -104,6 +115,27 @@ fn coefficients(
         quadratic,
         quadratic_error: standard_error(each.iter().map(|pair| pair.1)).unwrap_or(0.0),
     })
+}
+
+/// Largest |ΔCDF| of the nominal distribution, moved by the coefficients at z, from a shifted template. Edges that come from
+/// beyond the axis are left out.
+fn misfit(
+    nominal: &Cumulative,
+    (peak, width): (Coefficients, Coefficients),
+    shifted: &Template,
+    z: f64,
+) -> Option<f64> {
+    let at = |c: Coefficients| 1.0 + c.linear * z + c.quadratic * z * z;
+    let from = nominal.peak()?;
+    let mut sum = shifted.below_axis;
+    let mut largest = 0.0_f64;
+    for (edge, p) in shifted.edges_gev.iter().zip(shifted.probability.iter().chain([&0.0])) {
+        if let Some(expected) = nominal.at(from + (edge - from * at(peak)) / at(width)) {
+            largest = largest.max((sum - expected).abs());
+        }
+        sum += p;
+    }
+    Some(largest)
 }
 
 fn size(pair: &[FoldedShift; 2], category: usize) -> Size {

@@ -62,6 +62,7 @@ pub fn empty_detector() -> Detector {
         trackers: Vec::new(),
         directions: Vec::new(),
         vertex: None,
+        efficiencies: Vec::new(),
         covariances: Vec::new(),
     }
 }
@@ -73,6 +74,7 @@ pub fn channel(name: &str, decay: Decay) -> Channel {
         decay,
         choice: LegChoice::default(),
         cuts: Cuts::default(),
+        min_efficient_legs: None,
         axis: MassAxis { low: 0.8, high: 1.2, bins: 200, relative: true },
         shape: ShapeChoice::DoubleCrystalBall,
         categories: vec![Category { name: "all".into(), max_abs_eta: None }],
@@ -87,6 +89,7 @@ pub fn study(detector: Detector, mass_gev: f64, channel: Channel) -> Study {
         seed: 1,
         precision: 1e-4,
         max_points: 1 << 24,
+        prune_shifts_below: 0.0,
         resonance: Resonance {
             masses_gev: vec![mass_gev],
             width: Width::Gev(0.0),

@@ -2,9 +2,9 @@
 //! accepted to what the documentation promises of it.
 #![allow(dead_code, clippy::unwrap_used, clippy::expect_used, clippy::panic)]
 
-use std::path::Path;
+use std::path::{Path, PathBuf};
 
-use peakfold::detector::Object::{Electron, Muon, Photon};
+use peakfold::detector::Object::{self, Electron, Muon, Photon};
 use peakfold::events::lhe::{EventFile, Options};
 use peakfold::events::{EventBatch, Selector};
 use peakfold::files::{parse_detector, parse_study};
@@ -65,12 +65,21 @@ pub fn lhe(data: &[u8]) {
     }
 }
 
+/// The text and the path that it is read under: files that it names are looked for beside those of the tests, and no other
+/// file of the machine is opened.
+fn text_and_path(data: &[u8]) -> Option<(&str, PathBuf)> {
+    let text = std::str::from_utf8(data).ok().filter(|text| !text.contains("..") && !text.contains(['/', '\\']))?;
+    let root = Path::new(env!("CARGO_MANIFEST_DIR"));
+    let beside = if root.ends_with("fuzz") { "../inputs/fuzz.toml" } else { "tests/inputs/fuzz.toml" };
+    Some((text, root.join(beside)))
+}
+
 /// Reads a detector file.
 pub fn detector(data: &[u8]) {
-    let Ok(text) = std::str::from_utf8(data) else { return };
-    match parse_detector(Path::new("fuzz.toml"), text) {
+    let Some((text, path)) = text_and_path(data) else { return };
+    match parse_detector(&path, text) {
         Ok(loaded) => {
-            for object in peakfold::detector::Object::ALL {
+            for object in Object::ALL {
                 assert!(loaded.detector.coverage(object).iter().all(|range| range.low < range.high));
             }
         }
@@ -78,16 +87,10 @@ pub fn detector(data: &[u8]) {
     }
 }
 
-/// Reads a study file; the files that it names are looked for beside those of the tests.
+/// Reads a study file.
 pub fn study(data: &[u8]) {
-    let Ok(text) = std::str::from_utf8(data) else { return };
-    // No other file of the machine is opened.
-    if text.contains("..") || text.contains("/") {
-        return;
-    }
-    let inputs = Path::new(env!("CARGO_MANIFEST_DIR"));
-    let beside = if inputs.ends_with("fuzz") { "../inputs/fuzz.toml" } else { "tests/inputs/fuzz.toml" };
-    match parse_study(&inputs.join(beside), text) {
+    let Some((text, path)) = text_and_path(data) else { return };
+    match parse_study(&path, text) {
         Ok(loaded) => {
             for mass in &loaded.study.resonance.masses_gev {
                 for channel in &loaded.study.channels {
