@@ -5,6 +5,7 @@ use std::path::{Path, PathBuf};
 
 use peakfold::files::{LoadedStudy, load_study};
 use peakfold::problem::{Problem, Problems};
+use peakfold::process::{Ancestry, LegChoice, Pairing, Pick, Radiation};
 
 const DETECTOR: &str = include_str!("inputs/detector.toml");
 const STUDY: &str = include_str!("inputs/study.toml");
@@ -112,6 +113,10 @@ const BAD: &[Case] = &[
     // Not yet.
     (D, "stochastic = 0.12", "stochastic = 0.12\ncalibration = \"terms.toml\"", "calibration", "calorimeter.photon-converted.calibration", &["not available in this version yet"]),
     (S, "falloff_power = 4.0", "radiation = { recombination_delta_r = 0.1 }", "radiation", "resonance.radiation", &["not available in this version yet"]),
+    // Generated legs are known.
+    (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\"]\npick = \"nearest\"", "pick", "channel.two-photon.pick", &["only with `events`", "remove it"]),
+    (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\"]\nancestry = \"ignore\"", "ancestry", "channel.two-photon.ancestry", &["only with `events`", "remove it"]),
+    (S, "name = \"mixed\"", "name = \"mixed\"\npairing = \"nearest-sum\"", "pairing", "channel.mixed.pairing", &["only with `events`", "remove it"]),
     (S, "production = { table = \"spectrum.csv\" }", "events = \"t.csv.gz\"", "t.csv.gz", "resonance.events", &["not available in this version yet"]),
     // The study's own numbers.
     (S, "precision = 1e-3", "precision = 0.0", "precision", "precision", &["found 0.0", "larger than 0"]),
@@ -191,6 +196,59 @@ fn fault((file, from, to, line_text, key, parts): &Case) -> Option<String> {
 fn bad_inputs_name_line_key_and_what_to_do() {
     let faults: Vec<String> = BAD.iter().filter_map(fault).collect();
     assert!(faults.is_empty(), "{}", faults.join("\n"));
+}
+
+/// Keys of a study that reads events: what is typed, and what is refused.
+#[test]
+fn choice_of_legs_and_radiation() {
+    let source = "production = { table = \"spectrum.csv\" }";
+    let base = STUDY
+        .replace("[150, 180.0, 210.0]", "[150]")
+        .replace(source, "events = \"truth.lhe\"\nradiation = { recombination_delta_r = 0.1 }")
+        .replace("name = \"two-photon\"", "name = \"two-photon\"\npick = \"nearest\"\nancestry = \"ignore\"")
+        .replace("name = \"mixed\"", "name = \"mixed\"\npairing = \"nearest-sum\"\nancestry = \"require\"");
+    let study = Pair::new(&base, DETECTOR).load().unwrap().study;
+    assert_eq!(study.resonance.radiation, Some(Radiation { recombination_delta_r: 0.1 }));
+    let choice = |ancestry, pick, pairing| LegChoice { ancestry, pick, pairing };
+    assert_eq!(study.channels[0].choice, choice(Ancestry::Ignore, Pick::Nearest, Pairing::NearestPair));
+    assert_eq!(study.channels[1].choice, choice(Ancestry::Require, Pick::Hardest, Pairing::NearestSum));
+    let cases: [(&str, &str, &str, &[&str]); 9] = [
+        ("\"nearest\"", "\"neerest\"", "channel.two-photon.pick", &["did you mean `nearest`?", "`hardest`"]),
+        ("\"ignore\"", "\"no\"", "channel.two-photon.ancestry", &["`prefer`, `ignore`, `require`"]),
+        ("\"nearest-sum\"", "\"sum\"", "channel.mixed.pairing", &["`nearest-pair`", "`nearest-sum`"]),
+        ("pick = ", "pairing = \"nearest-pair\"\npick = ", "channel.two-photon.pairing", &["only with `via`"]),
+        (
+            "legs = [\"photon\", ",
+            "legs = [\"photon\", \"photon\", ",
+            "channel.two-photon.pick",
+            &["for 3 legs", "\"hardest\""],
+        ),
+        (
+            "delta_r = 0.1",
+            "delta_r = 0.0",
+            "resonance.radiation.recombination_delta_r",
+            &["found 0.0", "larger than 0, up to 2"],
+        ),
+        (
+            "delta_r = 0.1",
+            "delta_r = 10",
+            "resonance.radiation.recombination_delta_r",
+            &["found 10", "larger than 0, up to 2"],
+        ),
+        (
+            "recombination_delta_r",
+            "delta_r",
+            "resonance.radiation.delta_r",
+            &["unknown key", "`recombination_delta_r`"],
+        ),
+        ("{ recombination_delta_r = 0.1 }", "{}", "resonance.radiation.recombination_delta_r", &["missing"]),
+    ];
+    for (from, to, key, parts) in cases {
+        assert!(base.contains(from), "{from}");
+        let problems = Pair::new(&base.replacen(from, to, 1), DETECTOR).problems();
+        let found = problems.iter().find(|p| p.key.as_deref() == Some(key)).unwrap_or_else(|| panic!("{problems:?}"));
+        assert!(found.line.is_some() && parts.iter().all(|part| found.message.contains(part)), "{found}");
+    }
 }
 
 #[test]

@@ -20,7 +20,18 @@ const FRACTION_TOLERANCE: f64 = 1e-9;
 /// # Errors
 /// Every problem of the file, not only the first.
 pub fn load_detector(path: &Path) -> Result<LoadedDetector, Problems> {
-    let reading = read(path).map_err(|unreadable| unreadable.of_file(path))?;
+    loaded(read(path).map_err(|unreadable| unreadable.of_file(path))?)
+}
+
+/// Reads a detector from its text; `path` stands in messages.
+///
+/// # Errors
+/// As [`load_detector`].
+pub fn parse_detector(path: &Path, text: &str) -> Result<LoadedDetector, Problems> {
+    loaded(of_text(path, InputText::of_memory(path, text)))
+}
+
+fn loaded(reading: DetectorReading) -> Result<LoadedDetector, Problems> {
     match reading.detector {
         Some(detector) if reading.problems.is_empty() => {
             Ok(LoadedDetector { detector, inputs: reading.inputs, warnings: reading.warnings })
@@ -42,7 +53,10 @@ pub(super) struct DetectorReading {
 }
 
 pub(super) fn read(path: &Path) -> Result<DetectorReading, Unreadable> {
-    let InputText { text, input } = read_text(path)?;
+    Ok(of_text(path, read_text(path)?))
+}
+
+fn of_text(path: &Path, InputText { text, input }: InputText) -> DetectorReading {
     let sheet = Sheet::new(path, &text);
     let mut tables = OtherFiles::default();
     let detector = sheet.parse(&text).and_then(|table| {
@@ -52,7 +66,7 @@ pub(super) fn read(path: &Path) -> Result<DetectorReading, Unreadable> {
     let (mut problems, warnings) = sheet.into_findings();
     problems.append(&mut tables.problems);
     let inputs = std::iter::once(input).chain(tables.inputs).collect();
-    Ok(DetectorReading { detector, inputs, problems, warnings })
+    DetectorReading { detector, inputs, problems, warnings }
 }
 
 /// An entry as it was read, with its line for later messages.

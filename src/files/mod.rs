@@ -27,7 +27,7 @@ mod study_checks;
 mod study_file;
 mod uncertainties;
 
-pub use detector_file::load_detector;
+pub use detector_file::{load_detector, parse_detector};
 pub use digest::FileDigest;
 pub use fit_data::load_fit_data;
 pub use interrupt::remove_unfinished_on_interrupt;
@@ -36,7 +36,7 @@ pub use run_read::{Run, read_run};
 pub use run_record::{FoldSummary, MoveRecord, NuisanceRecord, RunRecord, Skipped};
 pub use run_target::{Committed, Staging, Target, TargetError};
 pub use run_write::{NOMINAL, RunContents, write_templates};
-pub use study_file::load_study;
+pub use study_file::{load_study, parse_study};
 
 use crate::detector::Detector;
 use crate::problem::Problem;

@@ -24,7 +24,18 @@ const LARGEST_WHOLE: u64 = i64::MAX as u64;
 /// Every problem of all files, not only the first: those of the study, then of the detector, then of other files, each
 /// in the order of the lines.
 pub fn load_study(path: &Path) -> Result<LoadedStudy, Problems> {
-    let InputText { text, input } = read_text(path).map_err(|unreadable| unreadable.of_file(path))?;
+    of_text(path, read_text(path).map_err(|unreadable| unreadable.of_file(path))?)
+}
+
+/// Reads a study from its text; `path` stands in messages, and the files that it names are relative to it.
+///
+/// # Errors
+/// As [`load_study`].
+pub fn parse_study(path: &Path, text: &str) -> Result<LoadedStudy, Problems> {
+    of_text(path, InputText::of_memory(path, text))
+}
+
+fn of_text(path: &Path, InputText { text, input }: InputText) -> Result<LoadedStudy, Problems> {
     let sheet = Sheet::new(path, &text);
     let mut files = Files { detector: FileOfStudy::default(), others: OtherFiles::default() };
     let study =
