@@ -6,7 +6,7 @@ mod resonance;
 
 pub use axis::MassAxis;
 pub use channel::{Category, Channel, Cuts, Decay, ShapeChoice};
-pub use resonance::{EventSource, Intermediate, Natural, Production, Resonance, SpectrumCell, Width};
+pub use resonance::{EventList, EventSource, Intermediate, Natural, Production, Resonance, SpectrumCell, Width};
 
 use crate::detector::Detector;
 

@@ -83,7 +83,10 @@ fn study_text(report: &mut String, path: &Path, study: &Study) {
     row(
         "events",
         &match &resonance.source {
-            EventSource::File(file) => format!("read from {}", file.display()),
+            EventSource::File(list) => match &list.weight {
+                None => format!("read from {}", list.path.display()),
+                Some(weight) => format!("read from {}, weight `{weight}`", list.path.display()),
+            },
             EventSource::Generated(Production::Spectrum { pt_mean_gev, rapidity_sigma }) => {
                 let pt = match *pt_mean_gev {
                     0.0 => "no pT".to_owned(),
