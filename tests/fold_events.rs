@@ -279,3 +279,21 @@ fn a_named_weight_is_taken() {
     assert!((named.record.events_effective.unwrap() - expected).abs() < 1e-12);
     assert!((plain.record.events_effective.unwrap() - 1.0 / 3.0).abs() < 1e-12);
 }
+
+/// One group alone has no spread: q = p a exactly. It goes over several batches of 512 events.
+#[test]
+fn a_group_may_be_of_any_length() {
+    let text = lhe_support::extract();
+    let start = text.find("  <event").unwrap();
+    let events = text[start..].strip_suffix("</LesHouchesEvents>\n").unwrap();
+    let whole = format!("{}<eventgroup>\n{}</eventgroup>\n</LesHouchesEvents>\n", &text[..start], events.repeat(20));
+    let file = tempfile::NamedTempFile::new().unwrap();
+    std::fs::write(file.path(), whole).unwrap();
+    let folded = fold(&study(Object::Muon, file.path()));
+    assert!(folded.record.events_used.unwrap() > 1024);
+    assert!((folded.record.events_effective.unwrap() - 1.0).abs() < 1e-12);
+    let template = &folded.templates[0].template;
+    // The root of what rounding leaves of a difference of numbers of order 1.
+    assert!(template.acceptance_list_error < 1e-7);
+    assert!(template.list_error.iter().all(|error| *error < 1e-7), "{:?}", template.list_error);
+}
