@@ -26,7 +26,7 @@ fn leg(code: i64, mother: u32, pt: f64, phi: f64) -> Particle {
 }
 
 fn event(particles: &[Particle], weight: f64, line: usize, group: u64) -> RawEvent<'_> {
-    RawEvent { particles, weight, line, group }
+    RawEvent { particles, weight, true_mass_gev: None, line, group }
 }
 
 fn pick(decay: &Decay, particles: &[Particle]) -> Result<TruthEvent, Skip> {

@@ -5,8 +5,8 @@ mod common;
 mod lhe_support;
 
 use peakfold::detector::{EtaRange, Object};
-use peakfold::events::lhe::{EventFile, Options};
 use peakfold::events::{EventBatch, Selector};
+use peakfold::events::{EventFile, Options};
 use peakfold::fold::{FoldError, Folded, fold_channel, plain};
 use peakfold::kinematics::TruthEvent;
 use peakfold::process::{Decay, EventList, EventSource, MassAxis, Study};

@@ -65,8 +65,7 @@ fn compare(path: &Path, count: u64, left_out: u64) {
         let mut selection = Selection::default();
         let (mut from_column, mut largest) = (0, 0.0_f64);
         for owned in &reading.events {
-            let event =
-                RawEvent { particles: &owned.particles, weight: owned.weight, line: owned.line, group: owned.group };
+            let event = owned.event();
             let outcome = selector.select(&event);
             selection.add(&event, &outcome);
             let Ok(truth) = outcome else { continue };

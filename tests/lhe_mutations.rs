@@ -11,7 +11,7 @@ use std::time::Instant;
 
 use lhe_support::*;
 use peakfold::detector::Object::{Electron, Muon, Photon};
-use peakfold::events::lhe::Options;
+use peakfold::events::Options;
 use peakfold::events::{RawEvent, Selector};
 use peakfold::process::Decay;
 
@@ -198,8 +198,7 @@ fn mutations_never_give_inconsistent_events() {
             if let Some(what) = contradiction(owned) {
                 panic!("mutation {number}, line {}: {what}\n{}", owned.line, String::from_utf8_lossy(&bytes));
             }
-            let event =
-                RawEvent { particles: &owned.particles, weight: owned.weight, line: owned.line, group: owned.group };
+            let event = owned.event();
             for selector in &selectors {
                 if let Ok(truth) = selector.select(&event) {
                     let legs = truth.legs.iter().take(truth.leg_count).map(|leg| leg.four_vector());

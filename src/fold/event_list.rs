@@ -1,8 +1,7 @@
 //! The truth events that a file holds for the channels of a study.
 
 use super::{FoldError, Progress};
-use crate::events::lhe::{EventFile, Options, Report};
-use crate::events::{Selection, Selector};
+use crate::events::{EventFile, Options, Report, Selection, Selector};
 use crate::kinematics::TruthEvent;
 use crate::process::{Channel, EventList, EventSource, Study};
 

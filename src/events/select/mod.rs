@@ -19,7 +19,7 @@
 //!
 //! # Truth mass
 //!
-//! The mass column of the first resonance row whose final descendants are exactly the legs, else the invariant mass of the
+//! That which the file gives for the event, else the mass column of the first resonance row whose final descendants are exactly the legs, else the invariant mass of the
 //! legs.
 
 mod legs;
@@ -32,6 +32,7 @@ use super::raw::{Particle, RawEvent};
 use crate::detector::Object;
 use crate::kinematics::{FourVector, MAX_LEGS, TruthEvent, TruthLeg};
 use crate::process::Decay;
+pub(super) use legs::object_of;
 use legs::{Candidate, choose, leg_of, neutral_pair};
 pub use tally::Selection;
 use tree::{Family, families};
@@ -107,7 +108,8 @@ impl Selector {
         }
         let whole = families.iter().find(|family| family.is_exactly(&chosen));
         let resonance_mass = whole.and_then(|family| particles.get(family.row)).map(|row| row.mass);
-        let mass_gev = resonance_mass.filter(|m| *m > 0.0).unwrap_or_else(|| invariant_mass(particles, &chosen));
+        let resonance_mass = resonance_mass.filter(|m| *m > 0.0);
+        let mass_gev = event.true_mass_gev.or(resonance_mass).unwrap_or_else(|| invariant_mass(particles, &chosen));
         if !(mass_gev > 0.0 && mass_gev.is_finite()) {
             return Err(Skip::NoMass);
         }
