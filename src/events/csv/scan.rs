@@ -5,9 +5,9 @@ use std::sync::Arc;
 
 use ::csv::{ByteRecord, ReaderBuilder, Trim};
 
-use super::Chunk;
 use super::header::Header;
 use super::parse::out_of_order;
+use super::{Chunk, MOST_ROWS};
 use crate::events::numbers::integer;
 use crate::events::report::Report;
 use crate::events::source::{BYTE_ORDER_MARK, Source};
@@ -59,6 +59,7 @@ impl<'a> Scanner<'a> {
         }
         // The event of the last row; known only beyond the target.
         let mut event = None;
+        let mut beyond = 0;
         loop {
             let begin = chunk.text.len();
             let full = begin >= target;
@@ -94,6 +95,11 @@ impl<'a> Scanner<'a> {
                     return Err(out_of_order(header, self.source.line, before, now));
                 }
                 return Ok(false);
+            }
+            beyond += 1;
+            if beyond > MOST_ROWS {
+                let message = format!("event {} has more than {MOST_ROWS} rows", now.unwrap_or(0));
+                return Err(self.source.problem(message));
             }
             if begin > target + LONGEST_EVENT {
                 let message = format!("the rows of event {} are longer than {LONGEST_EVENT} bytes", now.unwrap_or(0));
