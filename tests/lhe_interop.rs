@@ -14,7 +14,7 @@ use std::process::Command;
 
 use lhe_support::*;
 use peakfold::detector::Object::{Electron, Muon};
-use peakfold::events::{RawEvent, Selection, Selector};
+use peakfold::events::{Selection, Selector};
 use peakfold::process::Decay;
 
 const INVARIANT_MASS_TOLERANCE: f64 = 1e-11;
