@@ -9,11 +9,14 @@ mod detector_entries;
 mod detector_file;
 mod digest;
 mod domain;
+mod efficiency_file;
 mod fit_data;
 mod interrupt;
 mod number;
+mod number_table;
 mod reader;
 mod resonance_table;
+mod response_table;
 mod run_read;
 mod run_record;
 mod run_target;
@@ -30,7 +33,7 @@ pub use fit_data::load_fit_data;
 pub use interrupt::remove_unfinished_on_interrupt;
 pub use number::shortest;
 pub use run_read::{Run, read_run};
-pub use run_record::{FoldSummary, RunRecord, Skipped};
+pub use run_record::{FoldSummary, MoveRecord, NuisanceRecord, RunRecord, Skipped};
 pub use run_target::{Committed, Staging, Target, TargetError};
 pub use run_write::{NOMINAL, RunContents, write_templates};
 pub use study_file::load_study;
@@ -44,7 +47,8 @@ use crate::process::Study;
 pub struct LoadedStudy {
     /// The study.
     pub study: Study,
-    /// Every file that it depends on: the study, the detector, then a spectrum table or an event file.
+    /// Every file that it depends on: the study, the detector with its efficiency tables, then a spectrum
+    /// table or an event file.
     pub inputs: Vec<FileDigest>,
     /// What is allowed but likely not meant.
     pub warnings: Vec<Problem>,
@@ -55,8 +59,8 @@ pub struct LoadedStudy {
 pub struct LoadedDetector {
     /// The detector.
     pub detector: Detector,
-    /// Its file.
-    pub input: FileDigest,
+    /// Every file that it depends on: its own, then its efficiency tables.
+    pub inputs: Vec<FileDigest>,
     /// What is allowed but likely not meant.
     pub warnings: Vec<Problem>,
 }

@@ -2,7 +2,7 @@
 
 use std::path::Path;
 
-use super::domain::INSIDE_UNIT;
+use super::domain::{INSIDE_UNIT, SHARE};
 use super::reader::{Item, Section};
 use super::resonance_table::{self, OtherFiles, file_name};
 use super::source::{InputText, Sheet, Unreadable, read_text};
@@ -36,7 +36,7 @@ pub fn load_study(path: &Path) -> Result<LoadedStudy, Problems> {
     warnings.append(&mut files.detector.warnings);
     match study {
         Some(study) if problems.is_empty() => {
-            let inputs = [input].into_iter().chain(files.detector.input).chain(files.others.inputs).collect();
+            let inputs = [input].into_iter().chain(files.detector.inputs).chain(files.others.inputs).collect();
             Ok(LoadedStudy { study, inputs, warnings })
         }
         _ => Err(Problems(problems)),
@@ -51,7 +51,7 @@ struct Files {
 
 #[derive(Default)]
 struct FileOfStudy {
-    input: Option<FileDigest>,
+    inputs: Vec<FileDigest>,
     problems: Vec<Problem>,
     warnings: Vec<Problem>,
 }
@@ -64,6 +64,8 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
     let seed = root.whole_or("seed", (0, LARGEST_WHOLE), SEED);
     let precision = root.number_or("precision", &INSIDE_UNIT, PRECISION);
     let max_points = root.whole_or("max_points", (FEWEST_POINTS, LARGEST_WHOLE), MAX_POINTS);
+
+    let prune_shifts_below = root.number_or("prune_shifts_below", &SHARE, 0.0);
 
     let resonance_section = root.required("resonance", "the table [resonance]").and_then(|item| item.section());
     let masses_line = resonance_section.as_ref().map_or(1, |section| section.line_of("masses_gev"));
@@ -82,6 +84,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
     }
     if let Some(detector) = &detector {
         study_checks::coverage(sheet, detector, &channels);
+        study_checks::efficient_legs(sheet, detector, &channels);
     }
     Some(Study {
         name,
@@ -89,6 +92,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
         seed,
         precision,
         max_points,
+        prune_shifts_below,
         resonance: resonance?,
         channels: channels.into_iter().map(|placed| placed.channel).collect(),
     })
@@ -98,7 +102,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
 fn detector(sheet: &Sheet, item: &Item<'_>, file: &mut FileOfStudy) -> Option<Detector> {
     match detector_file::read(&sheet.resolve(file_name(item)?)) {
         Ok(reading) => {
-            file.input = Some(reading.input);
+            file.inputs = reading.inputs;
             file.problems = reading.problems;
             file.warnings = reading.warnings;
             reading.detector

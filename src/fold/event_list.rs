@@ -39,8 +39,10 @@ pub struct StudyEvents {
 /// The file is refused, or a channel has legs that cannot be picked.
 pub fn read_events(study: &Study, progress: &(dyn Fn(Progress) + Sync)) -> Result<Option<StudyEvents>, FoldError> {
     let EventSource::File(list) = &study.resonance.source else { return Ok(None) };
+    // With events there is one mass.
+    let mass_gev = study.resonance.masses_gev.first().copied().unwrap_or(f64::NAN);
     let selectors: Vec<Selector> =
-        study.channels.iter().map(|channel| selector(study, channel)).collect::<Result<_, _>>()?;
+        study.channels.iter().map(|channel| selector(study, channel, mass_gev)).collect::<Result<_, _>>()?;
     let mut kept: Vec<Vec<Listed>> = vec![Vec::new(); selectors.len()];
     let (selections, report) = read(list, &selectors, progress, |channel, events| {
         if let Some(kept) = kept.get_mut(channel) {
@@ -54,9 +56,12 @@ pub fn read_events(study: &Study, progress: &(dyn Fn(Progress) + Sync)) -> Resul
 }
 
 /// What picks the legs of a channel.
-pub(super) fn selector(study: &Study, channel: &Channel) -> Result<Selector, FoldError> {
-    Selector::new(&channel.decay, study.resonance.intermediate.mass_gev)
-        .ok_or_else(|| FoldError::CannotPick { channel: channel.name.clone() })
+pub(super) fn selector(study: &Study, channel: &Channel, mass_gev: f64) -> Result<Selector, FoldError> {
+    let resonance = &study.resonance;
+    Ok(Selector::new(&channel.decay, resonance.intermediate.mass_gev)
+        .ok_or_else(|| FoldError::CannotPick { channel: channel.name.clone() })?
+        .with_choice(channel.choice, mass_gev)
+        .with_recombination(resonance.radiation.map(|radiation| radiation.recombination_delta_r)))
 }
 
 /// Reads the file once and hands on the events of each selector, by its number, in the order of the file.

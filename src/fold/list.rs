@@ -89,7 +89,7 @@ pub(super) fn fold_file(
 ) -> Result<Folded, FoldError> {
     let started = Instant::now();
     let channel = study.channels.get(channel_index).ok_or(FoldError::NoSuchChannel(channel_index))?;
-    let selector = selector(study, channel)?;
+    let selector = selector(study, channel, mass_gev)?;
     let plan = Plan::new(detector, channel, mass_gev, &TruthDimensions::default());
     let scramblings = scramblings(study.seed, &plan)?;
     let (categories, edges) = (channel.categories.len(), plan.axis.squares.len());
@@ -155,6 +155,7 @@ pub(super) fn fold_file(
             record.final_points = pass.points;
             record.precision_reached = reached;
             record.reached = reached <= study.precision;
+            record.notes.extend(estimate::notes(&pass.totals));
             record.wall_seconds = started.elapsed().as_secs_f64();
             let templates = estimate::templates(channel, mass_gev, &pass.totals, Some(&pass.list.finish()));
             return Ok(Folded { templates, record });
@@ -217,6 +218,7 @@ fn fold_batch(
             for block in 0..blocks {
                 total.generated += workspace.truth.generated.iter().sum::<f64>();
                 workspace.measure(plan, scrambling, point + block * BLOCK as u64);
+                total.outside += workspace.outside;
                 for (last, lane) in workspace.last.iter().zip(&workspace.event) {
                     let slot = lane / lanes * categories + last.category;
                     touched[slot] = true;

@@ -10,26 +10,31 @@ use super::last_leg::Sums;
 struct Group {
     number: u64,
     weight: f64,
-    /// By category: accepted weight, and the weighted probability of each bin.
+    /// By category: accepted weight, with and without efficiencies, and the weighted probability of each bin.
     accepted: Vec<f64>,
+    unfiltered: Vec<f64>,
     bins: Vec<Vec<f64>>,
 }
 
 impl Group {
     fn new(number: u64, categories: usize, bins: usize) -> Self {
-        Group { number, weight: 0.0, accepted: vec![0.0; categories], bins: vec![vec![0.0; bins]; categories] }
+        let zeros = vec![0.0; categories];
+        let bins = vec![vec![0.0; bins]; categories];
+        Group { number, weight: 0.0, accepted: zeros.clone(), unfiltered: zeros, bins }
     }
 
     fn restart(&mut self, number: u64) {
         self.number = number;
         self.weight = 0.0;
         self.accepted.fill(0.0);
+        self.unfiltered.fill(0.0);
         self.bins.iter_mut().for_each(|bins| bins.fill(0.0));
     }
 
     fn add(&mut self, other: &Group) {
         self.weight += other.weight;
         add(&mut self.accepted, &other.accepted);
+        add(&mut self.unfiltered, &other.unfiltered);
         self.bins.iter_mut().zip(&other.bins).for_each(|(a, b)| add(a, b));
     }
 }
@@ -48,6 +53,10 @@ pub(super) struct ListSums {
     /// By category: sum of (accepted weight)², and of it times the group's weight.
     pub accepted_squares: Vec<f64>,
     pub accepted_products: Vec<f64>,
+    /// By category, with u the accepted weight at an efficiency of 1: the sums of u, u², and u times the accepted weight.
+    pub unfiltered: Vec<f64>,
+    pub unfiltered_squares: Vec<f64>,
+    pub unfiltered_products: Vec<f64>,
     /// Sum over groups of weight².
     pub weight_squares: f64,
     /// Sum of weights.
@@ -63,6 +72,9 @@ impl ListSums {
             products: vec![vec![0.0; bins]; categories],
             accepted_squares: vec![0.0; categories],
             accepted_products: vec![0.0; categories],
+            unfiltered: vec![0.0; categories],
+            unfiltered_squares: vec![0.0; categories],
+            unfiltered_products: vec![0.0; categories],
             weight_squares: 0.0,
             weights: 0.0,
             first: None,
@@ -78,6 +90,7 @@ impl ListSums {
         group.weight += weight;
         for (category, sums) in sums.iter().enumerate() {
             let accepted = sums.accepted * unit;
+            group.unfiltered[category] += sums.unfiltered * unit;
             if accepted == 0.0 {
                 continue;
             }
@@ -114,6 +127,10 @@ impl ListSums {
     fn close(&mut self, group: &Group) {
         self.weight_squares += group.weight * group.weight;
         for (category, (accepted, bins)) in group.accepted.iter().zip(&group.bins).enumerate() {
+            let unfiltered = group.unfiltered[category];
+            self.unfiltered[category] += unfiltered;
+            self.unfiltered_squares[category] += unfiltered * unfiltered;
+            self.unfiltered_products[category] += unfiltered * accepted;
             self.accepted_squares[category] += accepted * accepted;
             self.accepted_products[category] += accepted * group.weight;
             let sums = self.squares[category].iter_mut().zip(&mut self.products[category]);
@@ -132,6 +149,9 @@ impl ListSums {
         }
         add(&mut self.accepted_squares, &next.accepted_squares);
         add(&mut self.accepted_products, &next.accepted_products);
+        add(&mut self.unfiltered, &next.unfiltered);
+        add(&mut self.unfiltered_squares, &next.unfiltered_squares);
+        add(&mut self.unfiltered_products, &next.unfiltered_products);
         self.weight_squares += next.weight_squares;
         self.weights += next.weights;
         for group in next.first.iter().chain(&next.last) {

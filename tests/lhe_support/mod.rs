@@ -1,6 +1,7 @@
 //! What the tests of event files share.
 #![allow(dead_code, clippy::unwrap_used, clippy::expect_used, clippy::panic)]
 
+pub mod made;
 pub mod mutate;
 
 use std::io::Read;

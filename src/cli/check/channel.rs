@@ -1,7 +1,7 @@
 //! A channel in words: its decay, cuts, categories and mass axis.
 
 use super::text::{list, plural, wrapped};
-use crate::detector::Object;
+use crate::detector::{Detector, Object};
 use crate::process::{Category, Channel, Cuts, Decay, ShapeChoice};
 use std::fmt::Write as _;
 
@@ -9,11 +9,14 @@ use std::fmt::Write as _;
 const COLUMNS: usize = 8;
 
 /// Adds the description of a channel.
-pub fn describe(report: &mut String, channel: &Channel, masses_gev: &[f64]) {
+pub fn describe(report: &mut String, channel: &Channel, detector: &Detector, masses_gev: &[f64]) {
     report.push('\n');
     wrapped(report, "channel ", "  ", &format!("{}: {}", channel.name, decay(&channel.decay)));
     let mut row = |label: &str, text: &str| wrapped(report, &format!("  {label:<12}"), &" ".repeat(14), text);
     row("cuts", &cuts(&channel.cuts));
+    if let Some(text) = efficiency(channel, detector) {
+        row("efficiency", &text);
+    }
     row("categories", &channel.categories.iter().map(category).collect::<Vec<_>>().join("; "));
     let shape = match channel.shape {
         ShapeChoice::Gaussian => "Gaussian",
@@ -68,6 +71,23 @@ fn cuts(cuts: &Cuts) -> String {
         parts.push(format!("pT in falling order above {} of the mass", list(&cuts.min_pt_over_mass)));
     }
     parts.join("; ")
+}
+
+/// How many legs must be found; `None` where the detector tells no efficiency of them.
+fn efficiency(channel: &Channel, detector: &Detector) -> Option<String> {
+    let legs = channel.decay.legs();
+    let (told, always): (Vec<Object>, Vec<Object>) = legs.iter().partition(|object| detector.has_efficiency(**object));
+    if told.is_empty() {
+        return None;
+    }
+    let wanted = match channel.min_efficient_legs {
+        Some(count) if count < legs.len() => format!("at least {count} of the {} legs must be found", legs.len()),
+        _ => "every leg must be found".to_owned(),
+    };
+    let always: Vec<&str> =
+        Object::ALL.into_iter().filter(|object| always.contains(object)).map(Object::name).collect();
+    let without = if always.is_empty() { String::new() } else { format!("; always found: {}", always.join(", ")) };
+    Some(format!("{wanted}{without}"))
 }
 
 fn category(category: &Category) -> String {

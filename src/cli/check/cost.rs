@@ -116,6 +116,9 @@ pub fn describe(report: &mut String, study: &Study, costs: &[Cost]) {
             let text = format!("{}: no event of the coarse fold passed the cuts; check them", channel.name);
             wrapped(report, "  ", "    ", &text);
         }
+        for note in &cost.record.notes {
+            wrapped(report, "  ", "    ", &format!("{}: {note}", channel.name));
+        }
     }
 }
 

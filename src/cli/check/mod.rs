@@ -57,7 +57,7 @@ fn describe(
     study_text(&mut report, path, study);
     detector::describe(&mut report, &study.detector);
     for channel in &study.channels {
-        channel::describe(&mut report, channel, &study.resonance.masses_gev);
+        channel::describe(&mut report, channel, &study.detector, &study.resonance.masses_gev);
     }
     if let Some(events) = events {
         events::describe(&mut report, study, events);
