@@ -65,8 +65,8 @@ pub struct Closure {
 
 /// The uncertainty of interpolating, each number as one standard deviation of a nuisance parameter of its own: the RMS, or
 /// the largest, over the interior mass points of what [`ClosurePoint::interpolation`] and the acceptance are off by. It is
-/// the same at every mass, and cautious: each point was predicted across a gap of two steps of the mass points, and an
-/// error that shrinks with a power of the step shrinks at least fourfold when the gap is halved.
+/// the same at every mass, and cautious: each point was predicted across a gap of two steps of the mass points, a mass
+/// between them lies in a gap of one. It contains the numerical errors of the templates.
 #[derive(Clone, Copy, Debug, Default, PartialEq)]
 pub struct InterpolationError {
     /// Of the position of the peak, in units of sigma_eff.
@@ -146,7 +146,8 @@ pub fn closure(points: &[ModelPoint<'_>], model: &MassModel, residuals: bool) ->
             (total, total)
         } else {
             let (probability, below_axis, above_axis) = of_shape(&left.response.resolution, mass, edges);
-            let own = PredictedTemplate { probability, below_axis, above_axis, ..shape.clone() }.into_template(1.0, 0.0);
+            let own =
+                PredictedTemplate { probability, below_axis, above_axis, ..shape.clone() }.into_template(1.0, 0.0);
             (deviation(&shape, left.template).map_err(wrong)?, deviation(&shape, &own).map_err(wrong)?)
         };
         let acceptance_ratio = at.acceptance / left.template.acceptance;

@@ -52,7 +52,9 @@ pub enum ModelError {
     #[error(transparent)]
     Fit(#[from] FitError),
     /// A mass outside of the mass points.
-    #[error("{mass_gev} GeV lies outside the mass points of the model, {low_gev} to {high_gev} GeV; fold at further masses, or ask for extrapolation")]
+    #[error(
+        "{mass_gev} GeV lies outside the mass points of the model, {low_gev} to {high_gev} GeV; fold at further masses, or ask for extrapolation"
+    )]
     Outside {
         /// The mass.
         mass_gev: f64,
@@ -176,8 +178,8 @@ impl MassModel {
         let templates: Vec<&Template> = points.iter().map(|p| p.template).collect();
         let covariance = numerical_covariance(&fit, &found, &templates).ok_or(ModelError::Undetermined)?;
         let pairs: Vec<(f64, &Template)> = masses.iter().copied().zip(templates).collect();
-        let acceptance = Acceptance::fit(&pairs, &scale, like.map(|m| m.acceptance.curve.basis))
-            .ok_or(ModelError::Undetermined)?;
+        let acceptance =
+            Acceptance::fit(&pairs, &scale, like.map(|m| m.acceptance.curve.basis)).ok_or(ModelError::Undetermined)?;
         let mut rest = found.coefficients.as_slice();
         let curves = parameters
             .iter()
@@ -211,12 +213,15 @@ impl MassModel {
         if names.iter().zip(&self.curves).any(|(p, c)| c.link != parameter_link(&p.name)) {
             return wrong("a curve has another link than its parameter");
         }
-        let whole = |c: &SmoothCurve| c.coefficients.len() == c.basis.count() && c.coefficients.iter().all(|v| v.is_finite());
+        let whole =
+            |c: &SmoothCurve| c.coefficients.len() == c.basis.count() && c.coefficients.iter().all(|v| v.is_finite());
         if !self.curves.iter().chain([&self.acceptance.curve]).all(whole) {
             return wrong("a curve has too few coefficients, or one that is no finite number");
         }
         let count: usize = self.curves.iter().map(|c| c.basis.count()).sum();
-        for (matrix, count) in [(&self.covariance, count), (&self.acceptance.covariance, self.acceptance.curve.basis.count())] {
+        for (matrix, count) in
+            [(&self.covariance, count), (&self.acceptance.covariance, self.acceptance.curve.basis.count())]
+        {
             if matrix.nrows() != count || matrix.ncols() != count {
                 return wrong("a covariance has another size than its coefficients");
             }

@@ -26,7 +26,9 @@ mod smooth;
 
 pub use acceptance::Acceptance;
 pub use bias::{BiasError, MassBias, mass_bias};
-pub use closure::{Closure, ClosureError, ClosurePoint, Deviation, InterpolationError, closure, deviation, quantile_closure};
+pub use closure::{
+    Closure, ClosureError, ClosurePoint, Deviation, InterpolationError, closure, deviation, quantile_closure,
+};
 pub use mass_model::{MassModel, ModelError, ModelPoint, Predicted};
 pub use natural::{NaturalMass, WideError, WideTemplate, wide_template};
 pub use quantile::{QuantileError, QuantileInterpolation};

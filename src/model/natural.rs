@@ -81,7 +81,7 @@ pub struct WideTemplate {
 ///
 /// Beyond the mass points the curves of the model (bias and widths relative to the mass, tails, acceptance) keep the
 /// values that they have at the nearest one. The integral is a sum of 8-point Gauss-Legendre panels; its error is below
-/// 1e-8 per bin (tested against panels of half the length, `tests/model_natural.rs`).
+/// 1e-8 per bin (tested against panels of half the length and against the convolution of [`crate::lineshape::LineShape`]).
 ///
 /// # Errors
 /// See [`WideError`]; true masses beyond the mass points are an error without `extrapolate` when more than 0.1 % of the
@@ -277,4 +277,106 @@ fn panels(
         }
     }
     Ok(limits)
+}
+
+#[cfg(test)]
+mod tests {
+    #![allow(clippy::unwrap_used)]
+    use super::*;
+    use crate::fit::{Link, Stop};
+    use crate::lineshape::{BreitWigner, LineShape, Relativistic, Resolution, RunningWidth, Scaling};
+    use crate::model::{Acceptance, Basis, MassScale, SmoothCurve, parameter_link, prototype};
+    use crate::process::ShapeChoice;
+
+    /// A model whose parameters are constants relative to the mass, from 20 to 2000 GeV, and an acceptance of 0.5.
+    fn constant_model(values: [f64; 6]) -> MassModel {
+        let basis = Basis { order: 0, hinge: false };
+        let curves: Vec<SmoothCurve> = prototype(ShapeChoice::DoubleCrystalBall)
+            .unwrap()
+            .parameters()
+            .iter()
+            .zip(values)
+            .map(|(p, v)| {
+                let link = parameter_link(&p.name);
+                SmoothCurve { name: p.name.clone(), link, basis, coefficients: vec![link.eta(v, 1.0)] }
+            })
+            .collect();
+        let curve = SmoothCurve {
+            name: "acceptance".into(),
+            link: Link::Log { from: 0.0 },
+            basis,
+            coefficients: vec![libm::log(0.5)],
+        };
+        let model = MassModel {
+            shape: ShapeChoice::DoubleCrystalBall,
+            masses_gev: vec![20.0, 2000.0],
+            scale: MassScale { low_gev: 20.0, high_gev: 2000.0, knot_gev: None },
+            covariance: DMatrix::from_diagonal_element(6, 6, 1e-8),
+            acceptance: Acceptance { curve, covariance: DMatrix::zeros(1, 1) },
+            curves,
+            stop: Stop::Converged,
+        };
+        model.checked().unwrap()
+    }
+
+    fn edges() -> Vec<f64> {
+        (0..=200).map(|i| 140.0 + 0.6 * f64::from(i)).collect()
+    }
+
+    /// The judge is [`LineShape`] with a resolution that grows with the true mass: adaptive panels, no code in common but
+    /// the two factors of the integrand.
+    #[test]
+    fn a_model_of_constant_relative_shape_gives_the_convolution_of_a_proportional_resolution() {
+        let (bias, sigma, low, high) = (-0.001, 0.01, (1.4, 5.0), (1.7, 9.0));
+        let model = constant_model([bias, sigma, low.0, low.1, high.0, high.1]);
+        let edges = edges();
+        for width in [10.0, 2.0] {
+            let naturals = [
+                Natural::Relativistic(Relativistic::new(200.0, width).unwrap()),
+                Natural::RunningWidth(RunningWidth::new(200.0, width).unwrap()),
+            ];
+            for natural in naturals {
+                let power = 4.0;
+                let truth = NaturalMass { natural, falloff_power: power, threshold_gev: 0.0 };
+                let wide = wide_template(&model, &truth, &edges, false).unwrap();
+                let resolution = Resolution::double_crystal_ball(200.0 * bias, 200.0 * sigma, low, high).unwrap();
+                let judge =
+                    LineShape::with_options(natural, Some(resolution.into()), Scaling::Proportional, Some(power))
+                        .unwrap();
+                for (i, p) in wide.template.probability.iter().enumerate() {
+                    let told = judge.window_probability(edges[i], edges[i + 1]);
+                    assert!((p - told).abs() < 1e-8, "{natural:?} bin {i}: {p:e} {told:e}");
+                }
+                let whole: f64 = wide.template.probability.iter().sum();
+                assert!((whole + wide.template.below_axis + wide.template.above_axis - 1.0).abs() < 1e-12);
+                assert!((wide.acceptance - 0.5).abs() < 1e-12);
+                assert_eq!(wide.beyond, 0.0);
+            }
+        }
+    }
+
+    #[test]
+    fn half_the_panels_change_no_bin_by_1e_8() {
+        let mut model = constant_model([-0.001, 0.01, 1.4, 5.0, 1.7, 9.0]);
+        // Curves with a slope and a corner.
+        model.scale.knot_gev = Some(190.0);
+        model.acceptance.curve.basis = Basis { order: 1, hinge: true };
+        model.acceptance.curve.coefficients = vec![-1.0, 0.3, -0.5];
+        model.curves[1].basis = Basis { order: 1, hinge: true };
+        model.curves[1].coefficients = vec![-4.6, -0.3, 0.6];
+        for width in [10.0, 0.1] {
+            for natural in [
+                Natural::Relativistic(Relativistic::new(200.0, width).unwrap()),
+                Natural::BreitWigner(BreitWigner::new(200.0, width).unwrap()),
+            ] {
+                let truth = NaturalMass { natural, falloff_power: 0.0, threshold_gev: 0.0 };
+                let one = wide_with_panels(&model, &truth, &edges(), true, 1.0).unwrap();
+                let two = wide_with_panels(&model, &truth, &edges(), true, 2.0).unwrap();
+                for (a, b) in one.template.probability.iter().zip(&two.template.probability) {
+                    assert!((a - b).abs() < 1e-8, "{a:e} {b:e}");
+                }
+                assert!((one.acceptance / two.acceptance - 1.0).abs() < 1e-7);
+            }
+        }
+    }
 }

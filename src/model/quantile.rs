@@ -4,6 +4,8 @@
 //! two neighbours, `Q(y) = a Q1(y) + b Q2(y)` with a + b = 1, linear in the mass. This is exact for any family whose
 //! location and scale are linear in the mass.
 
+use std::cell::Cell;
+
 use super::shape::{PredictedTemplate, rising};
 use crate::numerics::root;
 use crate::template::{Cumulative, CumulativeError, Template};
@@ -21,7 +23,9 @@ pub enum QuantileError {
     #[error("the running sum of the template at {0} GeV is not monotone or not positive, so it has no quantiles")]
     NotMonotone(f64),
     /// A mass outside the mass points.
-    #[error("{mass_gev} GeV lies outside the templates, {low_gev} to {high_gev} GeV; fold at further masses, or ask for extrapolation")]
+    #[error(
+        "{mass_gev} GeV lies outside the templates, {low_gev} to {high_gev} GeV; fold at further masses, or ask for extrapolation"
+    )]
     Outside {
         /// The mass.
         mass_gev: f64,
@@ -149,20 +153,29 @@ impl QuantileInterpolation {
         }
         let (one, two, b, extrapolated) = self.neighbours(mass_gev, extrapolate)?;
         let a = 1.0 - b;
-        let place = |y: f64| a * one.quantile(y).0 + b * two.quantile(y).0;
-        let slope = |y: f64| {
-            let (f1, f2) = (one.quantile(y).1, two.quantile(y).1);
-            a / f1 + b / f2
+        // The root finder asks for value and slope at the same place: one search serves both.
+        let last = Cell::new((f64::NAN, 0.0, 0.0));
+        let at = |y: f64| {
+            let (known, place, slope) = last.get();
+            if known == y {
+                return (place, slope);
+            }
+            let ((m1, f1), (m2, f2)) = (one.quantile(y), two.quantile(y));
+            let found = (a * m1 + b * m2, a / f1 + b / f2);
+            last.set((y, found.0, found.1));
+            found
         };
+        let place = |y: f64| at(y).0;
+        let highest = place(1.0);
         let mut sums = Vec::with_capacity(edges_gev.len());
         let mut from = 0.0;
         for &edge in edges_gev {
             let y = if place(from) >= edge {
                 from
-            } else if place(1.0) <= edge {
+            } else if highest <= edge {
                 1.0
             } else {
-                root::find(from, 1.0, |y| place(y) - edge, slope)
+                root::find(from, 1.0, |y| place(y) - edge, |y| at(y).1)
             };
             // Where an extrapolation lets quantiles cross, the root is none.
             if extrapolated && y > from && y < 1.0 && (place(y) - edge).abs() > 1e-6 * (1.0 + edge.abs()) {

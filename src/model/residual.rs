@@ -111,10 +111,13 @@ impl Residuals {
         bare.above_axis -= corrections[bins];
         for i in 0..bins {
             let (from, to) = (t(edges_gev[i]), t(edges_gev[i + 1]));
-            let squares: f64 = weights.iter().map(|&(j, w)| {
-                let e = w * self.points[j].error(0.5 * (from + to)) * (to - from);
-                e * e
-            }).sum();
+            let squares: f64 = weights
+                .iter()
+                .map(|&(j, w)| {
+                    let e = w * self.points[j].error(0.5 * (from + to)) * (to - from);
+                    e * e
+                })
+                .sum();
             bare.error[i] = squares.sqrt();
         }
         Ok(bare)

@@ -2,7 +2,7 @@
 
 use nalgebra::{DMatrix, DVector};
 
-use super::shape::{largest_cdf_difference, of_shape, parameter_link, prior, prototype, rising};
+use super::shape::{KINDS, largest_cdf_difference, of_shape, parameter_link, prior, prototype, rising};
 use crate::fit::{Curve, CurveFit, CurvePoint, Curves, FitError, Link, Stop, positive_inverse};
 use crate::lineshape::widths::FWHM_PER_SIGMA;
 use crate::lineshape::{Parameter, Resolution, Shape, ShapeError};
@@ -21,7 +21,9 @@ pub enum ResponseError {
     #[error(transparent)]
     Cumulative(#[from] CumulativeError),
     /// Numbers of bins and errors differ, or edges do not rise.
-    #[error("the template is not whole: {edges} edges, {bins} bins, {errors} errors; edges must rise, one more than bins")]
+    #[error(
+        "the template is not whole: {edges} edges, {bins} bins, {errors} errors; edges must rise, one more than bins"
+    )]
     Incomplete {
         /// Edges.
         edges: usize,
@@ -191,9 +193,8 @@ pub fn fit_response(template: &Template, mass_gev: f64, choice: ShapeChoice) -> 
     let theta: Vec<f64> = links.iter().zip(&found.coefficients).map(|(l, &eta)| l.value(eta, mass_gev)).collect();
     let resolution = kind.with_parameters(&theta)?;
     let slopes = DVector::from_fn(links.len(), |k, _| links[k].slope(found.coefficients[k], mass_gev));
-    let covariance = numerical_covariance(&fit, &found, &[template]).map(|c| {
-        DMatrix::from_fn(c.nrows(), c.ncols(), |i, j| c[(i, j)] * slopes[i] * slopes[j])
-    });
+    let covariance = numerical_covariance(&fit, &found, &[template])
+        .map(|c| DMatrix::from_fn(c.nrows(), c.ncols(), |i, j| c[(i, j)] * slopes[i] * slopes[j]));
     let (q, _, _) = of_shape(&resolution, mass_gev, &template.edges_gev);
     Ok(Response {
         shape: choice,
@@ -210,9 +211,7 @@ pub fn fit_response(template: &Template, mass_gev: f64, choice: ShapeChoice) -> 
 
 /// The kind of shape with the smallest |ΔCDF| that fits better than `response` does, if there is one.
 pub fn better_shape(template: &Template, response: &Response) -> Option<Response> {
-    let kinds =
-        [ShapeChoice::Gaussian, ShapeChoice::CrystalBall, ShapeChoice::DoubleCrystalBall, ShapeChoice::GaussExp];
-    kinds
+    KINDS
         .into_iter()
         .filter(|kind| *kind != response.shape)
         .filter_map(|kind| fit_response(template, response.mass_gev, kind).ok())
@@ -240,7 +239,11 @@ fn peak_and_sigma(template: &Template, mass_gev: f64) -> Result<(f64, f64), Resp
 
 /// Covariance of the coefficients from the numerical errors of the templates: `δ = -H⁻¹ δg`, g the derivative of the
 /// criterion. Scramblings of different mass points are taken in step, for they may be the same.
-pub(super) fn numerical_covariance(fit: &Curves<'_>, found: &CurveFit, templates: &[&Template]) -> Option<DMatrix<f64>> {
+pub(super) fn numerical_covariance(
+    fit: &Curves<'_>,
+    found: &CurveFit,
+    templates: &[&Template],
+) -> Option<DMatrix<f64>> {
     let count = found.coefficients.len();
     let mut score = DMatrix::zeros(count, count);
     let all: Option<Vec<Vec<Vec<f64>>>> = templates.iter().map(|t| replicates(t)).collect();

@@ -5,6 +5,15 @@ use crate::lineshape::{Resolution, Shape, ShapeError};
 use crate::process::ShapeChoice;
 use crate::template::{Replicate, Template};
 
+/// Every kind of shape.
+pub(super) const KINDS: [ShapeChoice; 5] = [
+    ShapeChoice::Gaussian,
+    ShapeChoice::CrystalBall,
+    ShapeChoice::DoubleCrystalBall,
+    ShapeChoice::DoubleCrystalBallTwoSigmas,
+    ShapeChoice::GaussExp,
+];
+
 /// A shape of the kind that a channel asks for.
 ///
 /// # Errors
@@ -14,6 +23,9 @@ pub fn prototype(choice: ShapeChoice) -> Result<Resolution, ShapeError> {
         ShapeChoice::Gaussian => Resolution::gaussian(0.0, 1.0),
         ShapeChoice::CrystalBall => Resolution::crystal_ball(0.0, 1.0, 1.5, 5.0),
         ShapeChoice::DoubleCrystalBall => Resolution::double_crystal_ball(0.0, 1.0, (1.5, 5.0), (1.7, 8.0)),
+        ShapeChoice::DoubleCrystalBallTwoSigmas => {
+            Resolution::double_crystal_ball_two_sigmas(0.0, (1.0, 1.0), (1.5, 5.0), (1.7, 8.0))
+        }
         ShapeChoice::GaussExp => Resolution::double_gauss_exp(0.0, 1.0, 1.5, 1.7),
     }
 }

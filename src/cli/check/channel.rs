@@ -19,6 +19,7 @@ pub fn describe(report: &mut String, channel: &Channel, masses_gev: &[f64]) {
         ShapeChoice::Gaussian => "Gaussian",
         ShapeChoice::CrystalBall => "Crystal Ball",
         ShapeChoice::DoubleCrystalBall => "double-sided Crystal Ball",
+        ShapeChoice::DoubleCrystalBallTwoSigmas => "double-sided Crystal Ball with two core widths",
         ShapeChoice::GaussExp => "Gaussian with exponential tails",
     };
     row("shape", &format!("{shape}, for the fit of the templates"));
