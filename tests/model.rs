@@ -90,16 +90,17 @@ fn a_shape_is_found_again_in_its_own_template() {
 fn the_fit_agrees_with_scipy() {
     let template = three_gaussians();
     let response = fit_response(&template, 125.0, ShapeChoice::DoubleCrystalBall).unwrap();
-    for (name, told, tolerance) in [
-        ("bias", 124.87486898128554 - 125.0, 1e-5),
-        ("sigma", 1.7164754657648083, 1e-5),
-        ("alpha_low", 1.2202750530061222, 1e-5),
-        ("n_low", 2.8243269053863465, 1e-4),
-        ("alpha_high", 1.7998812224787264, 1e-5),
-        ("n_high", 5.035506842877634, 1e-3),
+    for (name, told) in [
+        ("bias", 124.87486898128554 - 125.0),
+        ("sigma", 1.7164754657648083),
+        ("alpha_low", 1.2202750530061222),
+        ("n_low", 2.8243269053863465),
+        ("alpha_high", 1.7998812224787264),
+        ("n_high", 5.035506842877634),
     ] {
-        // What the prior of weight 1e-6 moves.
-        assert!((value(&response, name) - told).abs() < tolerance * 3.0, "{name} {}", value(&response, name));
+        // What the prior of weight 1e-6 moves: the tails by up to 1e-3, the core by 3e-5.
+        let tolerance = if name.contains('_') { 1e-3 } else { 3e-5 };
+        assert!((value(&response, name) - told).abs() < tolerance, "{name} {}", value(&response, name));
     }
     assert!((response.divergence - 0.00010819760198915916).abs() < 1e-10, "{}", response.divergence);
     assert!((response.largest_cdf_difference - 0.0016100727348072243).abs() < 1e-6);
@@ -174,9 +175,10 @@ fn errors_from_scramblings_are_those_of_refits() {
 fn negative_bins_are_taken_up_to_a_bound() {
     let shape = Resolution::double_crystal_ball(-0.1, 1.3, (1.2, 3.0), (1.6, 6.0)).unwrap();
     let mut noisy = exact(&shape, 125.0, 125.0);
-    for i in (0..60).step_by(2) {
-        noisy.probability[i] -= 2e-5;
-        noisy.probability[i + 1] += 2e-5;
+    for i in (0..40).step_by(2) {
+        let moved = 1.2 * noisy.probability[i];
+        noisy.probability[i] -= moved;
+        noisy.probability[i + 1] += moved;
     }
     assert!(noisy.probability.iter().any(|p| *p < 0.0));
     let response = fit_response(&noisy, 125.0, ShapeChoice::DoubleCrystalBall).unwrap();

@@ -3,7 +3,7 @@
 use nalgebra::{DMatrix, DVector};
 
 use super::acceptance::Acceptance;
-use super::orders::{Single, choose, nearest};
+use super::orders::{HIGHEST, Single, choose, nearest};
 use super::response::{Response, ResponseError, curve_point, numerical_covariance};
 use super::shape::{PredictedTemplate, of_shape, parameter_link, prior, prototype, rising};
 use super::smooth::{Basis, MassScale, SmoothCurve};
@@ -215,6 +215,9 @@ impl MassModel {
         }
         let whole =
             |c: &SmoothCurve| c.coefficients.len() == c.basis.count() && c.coefficients.iter().all(|v| v.is_finite());
+        if self.curves.iter().chain([&self.acceptance.curve]).any(|c| c.basis.order > HIGHEST) {
+            return wrong("a curve is of higher order than any that is fitted");
+        }
         if !self.curves.iter().chain([&self.acceptance.curve]).all(whole) {
             return wrong("a curve has too few coefficients, or one that is no finite number");
         }
@@ -293,7 +296,10 @@ impl MassModel {
     pub fn at(&self, mass_gev: f64, extrapolate: bool) -> Result<Predicted, ModelError> {
         let extrapolated = self.check_mass(mass_gev, extrapolate)?;
         let resolution = self.resolution_at(mass_gev)?;
-        let count = self.covariance.nrows();
+        let count: usize = self.curves.iter().map(|c| c.basis.count()).sum();
+        if self.covariance.shape() != (count, count) {
+            return Err(ModelError::Inconsistent("its covariance has another size than its coefficients"));
+        }
         let mut jacobian = DMatrix::zeros(self.curves.len(), count);
         let mut place = 0;
         for (k, curve) in self.curves.iter().enumerate() {

@@ -10,6 +10,9 @@ use super::shape::{PredictedTemplate, rising};
 use crate::numerics::root;
 use crate::template::{Cumulative, CumulativeError, Template};
 
+/// Negative probabilities up to this are rounding.
+const ROUNDING: f64 = 1e-12;
+
 /// Why templates cannot be interpolated.
 #[derive(Clone, Debug, PartialEq, thiserror::Error)]
 pub enum QuantileError {
@@ -98,16 +101,20 @@ impl QuantileInterpolation {
         let points = templates
             .iter()
             .map(|&(mass_gev, template)| {
-                let cumulative = Cumulative::of(template)?;
-                let whole: f64 = template.probability.iter().sum();
+                // Differences of running sums can be negative by their rounding.
+                let clean = |p: f64| if p < 0.0 && p > -ROUNDING { 0.0 } else { p };
+                let probability: Vec<f64> = template.probability.iter().map(|&p| clean(p)).collect();
+                let (below, above) = (clean(template.below_axis), clean(template.above_axis));
+                let cumulative = Cumulative::new(&template.edges_gev, &probability, below, above)?;
+                let whole: f64 = probability.iter().sum();
                 if !cumulative.monotone() || !(whole > 0.0) {
                     return Err(QuantileError::NotMonotone(mass_gev));
                 }
                 Ok(Point {
                     mass_gev,
                     cumulative,
-                    below: template.below_axis,
-                    above: template.above_axis,
+                    below,
+                    above,
                     edges_gev: template.edges_gev.clone(),
                     error: template.error.clone(),
                 })

@@ -38,6 +38,12 @@ impl MassScale {
         if span > 0.0 { (2.0 * mass_gev - self.low_gev - self.high_gev) / span } else { 0.0 }
     }
 
+    /// The mass, or the end of the range that is nearer to it.
+    pub fn nearest(&self, mass_gev: f64) -> f64 {
+        // Not `clamp`, which would end the program where a model that was read has its ends the wrong way round.
+        mass_gev.max(self.low_gev).min(self.high_gev)
+    }
+
     /// Whether a mass lies outside.
     pub fn outside(&self, mass_gev: f64) -> bool {
         !(self.low_gev..=self.high_gev).contains(&mass_gev)
@@ -45,7 +51,7 @@ impl MassScale {
 
     /// The functions of a basis at a mass; outside of the range their tangents at its nearer end.
     pub fn row(&self, basis: Basis, mass_gev: f64) -> Vec<f64> {
-        let nearest = mass_gev.clamp(self.low_gev, self.high_gev);
+        let nearest = self.nearest(mass_gev);
         let mut row = self.inner_row(basis, nearest);
         if nearest != mass_gev {
             let slopes = self.inner_slopes(basis, nearest);
@@ -56,7 +62,7 @@ impl MassScale {
 
     /// Their derivatives in the mass, per GeV.
     pub fn slopes(&self, basis: Basis, mass_gev: f64) -> Vec<f64> {
-        self.inner_slopes(basis, mass_gev.clamp(self.low_gev, self.high_gev))
+        self.inner_slopes(basis, self.nearest(mass_gev))
     }
 
     fn inner_row(&self, basis: Basis, mass_gev: f64) -> Vec<f64> {
