@@ -5,8 +5,7 @@
 use std::path::{Path, PathBuf};
 
 use peakfold::detector::Object::{self, Electron, Muon, Photon};
-use peakfold::events::lhe::{EventFile, Options};
-use peakfold::events::{EventBatch, Selector};
+use peakfold::events::{EventBatch, EventFile, Options, Selector};
 use peakfold::files::{parse_detector, parse_study};
 use peakfold::problem::Problems;
 use peakfold::process::{Ancestry, Decay, LegChoice, Pairing, Pick};
