@@ -28,6 +28,9 @@ fn template(edges_gev: Vec<f64>, probability: Vec<f64>, below_axis: f64, above_a
         acceptance: 0.5,
         acceptance_error: 0.001,
         acceptance_list_error: 0.0,
+        efficiency: 1.0,
+        efficiency_error: 0.0,
+        efficiency_list_error: 0.0,
         lost: 0.0,
         replicates: Vec::new(),
     }
