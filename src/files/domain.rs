@@ -23,6 +23,8 @@ pub(super) const POSITIVE: Domain = Domain { contains: |x| x > 0.0, text: "a fin
 pub(super) const ABOVE_ONE: Domain = Domain { contains: |x| x > 1.0, text: "a finite number larger than 1" };
 pub(super) const ABOVE_MINUS_ONE: Domain = Domain { contains: |x| x > -1.0, text: "a finite number larger than -1" };
 pub(super) const SHARE: Domain = Domain { contains: |x| (0.0..=1.0).contains(&x), text: "a number from 0 to 1" };
+pub(super) const PLATEAU: Domain =
+    Domain { contains: |x| x > 0.0 && x <= 1.0, text: "a number larger than 0, up to 1" };
 pub(super) const INSIDE_UNIT: Domain =
     Domain { contains: |x| x > 0.0 && x < 1.0, text: "a number larger than 0 and smaller than 1" };
 pub(super) const ABS_ETA: Domain = Domain { contains: |x| (0.0..=20.0).contains(&x), text: "an |eta| from 0 to 20" };
@@ -39,26 +41,5 @@ pub(super) fn name_fault(name: &str) -> Option<&'static str> {
         Some("must not contain commas, quotes, slashes, colons or control characters")
     } else {
         None
-    }
-}
-
-/// The candidate that a misspelt word was most likely meant to be.
-pub(super) fn nearest<'c>(word: &str, candidates: impl IntoIterator<Item = &'c str>) -> Option<&'c str> {
-    let lower = word.to_lowercase();
-    let distance = |candidate: &str| strsim::osa_distance(&lower, candidate);
-    // Two letters of five may be wrong; a key that lacks its unit is near whatever its length.
-    let near = |candidate: &&str| {
-        let letters = lower.chars().count().max(candidate.chars().count());
-        5 * distance(candidate) <= 2 * letters || (lower.len() >= 3 && candidate.starts_with(&lower))
-    };
-    candidates.into_iter().filter(near).min_by_key(|candidate| distance(candidate))
-}
-
-/// The end of a message about an unknown word.
-pub(super) fn suggestion(word: &str, candidates: &[&str]) -> String {
-    let allowed = candidates.iter().map(|c| format!("`{c}`")).collect::<Vec<_>>().join(", ");
-    match nearest(word, candidates.iter().copied()) {
-        Some(meant) => format!("did you mean `{meant}`? (allowed: {allowed})"),
-        None => format!("allowed: {allowed}"),
     }
 }

@@ -2,79 +2,9 @@
 
 use super::engine::Total;
 use super::last_leg::Sums;
+use super::list_sums::ListSums;
 use crate::process::Channel;
-use crate::template::{LabelledTemplate, Replicate, Template};
-
-/// What the statistics of an event list add.
-#[derive(Clone, Debug)]
-pub(super) struct ListSums {
-    /// By category and bin: sum over events of (weighted probability)², and of it times the event's accepted weight.
-    pub squares: Vec<Vec<f64>>,
-    pub products: Vec<Vec<f64>>,
-    /// By category: sum of (accepted weight)², and of it times the event's weight.
-    pub accepted_squares: Vec<f64>,
-    pub accepted_products: Vec<f64>,
-    /// Sum of weight².
-    pub weight_squares: f64,
-    /// Sum of weights.
-    pub weights: f64,
-}
-
-impl ListSums {
-    pub fn new(categories: usize, bins: usize) -> Self {
-        ListSums {
-            squares: vec![vec![0.0; bins]; categories],
-            products: vec![vec![0.0; bins]; categories],
-            accepted_squares: vec![0.0; categories],
-            accepted_products: vec![0.0; categories],
-            weight_squares: 0.0,
-            weights: 0.0,
-        }
-    }
-
-    /// Adds one event of a weight; `sums` holds what its points gave in each category and `unit` is 1 over their number.
-    pub fn add_event(&mut self, weight: f64, sums: &[Sums], unit: f64) {
-        self.weights += weight;
-        self.weight_squares += weight * weight;
-        for (category, sums) in sums.iter().enumerate() {
-            let accepted = sums.accepted * unit;
-            if accepted == 0.0 {
-                continue;
-            }
-            self.accepted_squares[category] += accepted * accepted;
-            self.accepted_products[category] += accepted * weight;
-            let cumulative = sums.cumulative();
-            let bins = self.squares[category].iter_mut().zip(&mut self.products[category]);
-            for ((square, product), pair) in bins.zip(cumulative.windows(2)) {
-                let q = (pair[1] - pair[0]) * unit;
-                *square += q * q;
-                *product += q * accepted;
-            }
-        }
-    }
-
-    pub fn add(&mut self, other: &ListSums) {
-        let add = |a: &mut [f64], b: &[f64]| a.iter_mut().zip(b).for_each(|(a, b)| *a += b);
-        for category in 0..self.squares.len() {
-            add(&mut self.squares[category], &other.squares[category]);
-            add(&mut self.products[category], &other.products[category]);
-        }
-        add(&mut self.accepted_squares, &other.accepted_squares);
-        add(&mut self.accepted_products, &other.accepted_products);
-        self.weight_squares += other.weight_squares;
-        self.weights += other.weights;
-    }
-}
-
-/// Standard error of the mean of values.
-fn standard_error(values: impl Iterator<Item = f64> + Clone) -> f64 {
-    let count = values.clone().count() as f64;
-    if count < 2.0 {
-        return 0.0;
-    }
-    let mean = values.clone().sum::<f64>() / count;
-    (values.map(|value| (value - mean) * (value - mean)).sum::<f64>() / (count * (count - 1.0))).sqrt()
-}
+use crate::template::{LabelledTemplate, Replicate, Template, standard_error};
 
 /// The scramblings of one category, normalised.
 fn replicates(totals: &[Total], category: usize) -> Vec<Replicate> {
@@ -103,7 +33,7 @@ fn pooled(totals: &[Total], category: usize) -> (Replicate, Vec<f64>, Vec<Replic
     let mean = normalised(&sum.sums[category], sum.generated);
     let replicates = replicates(totals, category);
     let errors = (0..mean.probability.len())
-        .map(|bin| standard_error(replicates.iter().map(|replicate| replicate.probability[bin])))
+        .map(|bin| standard_error(replicates.iter().map(|replicate| replicate.probability[bin])).unwrap_or(0.0))
         .collect();
     (mean, errors, replicates)
 }
@@ -139,9 +69,13 @@ pub(super) fn templates(
                 None => (vec![0.0; error.len()], 0.0),
                 Some(list) => list_errors(list, index, &mean),
             };
+            let weights: Vec<(f64, f64)> =
+                totals.iter().map(|total| (total.sums[index].accepted, total.sums[index].unfiltered)).collect();
+            let efficiency = efficiency(weights.iter().map(|w| w.0).sum(), weights.iter().map(|w| w.1).sum());
             let template = Template {
                 edges_gev: channel.axis.edges_gev(mass_gev),
-                acceptance_error: standard_error(replicates.iter().map(|replicate| replicate.acceptance)),
+                acceptance_error: standard_error(replicates.iter().map(|replicate| replicate.acceptance))
+                    .unwrap_or(0.0),
                 probability: mean.probability,
                 error,
                 list_error,
@@ -149,6 +83,9 @@ pub(super) fn templates(
                 above_axis: mean.above_axis,
                 acceptance: mean.acceptance,
                 acceptance_list_error,
+                efficiency,
+                efficiency_error: standard_error(weights.iter().map(|w| self::efficiency(w.0, w.1))).unwrap_or(0.0),
+                efficiency_list_error: list.map_or(0.0, |list| efficiency_list_error(list, index, efficiency)),
                 lost: if generated == 0.0 { 0.0 } else { lost / generated },
                 replicates,
             };
@@ -163,8 +100,8 @@ pub(super) fn templates(
         .collect()
 }
 
-/// Errors of ratios of sums over events, to first order: with q_i the weighted probability of event i in the bin and
-/// a_i its accepted weight, p = sum q/sum a has the variance sum (q_i - p a_i)²/(sum a)²; likewise the acceptance.
+/// Errors of ratios of sums over groups of events, to first order: with q_i the weighted probability of group i in the bin
+/// and a_i its accepted weight, p = sum q/sum a has the variance sum (q_i - p a_i)²/(sum a)²; likewise the acceptance.
 fn list_errors(list: &ListSums, category: usize, mean: &Replicate) -> (Vec<f64>, f64) {
     let accepted = mean.acceptance * list.weights;
     let unit = if accepted == 0.0 { 0.0 } else { 1.0 / accepted.abs() };
@@ -183,4 +120,31 @@ fn list_errors(list: &ListSums, category: usize, mean: &Replicate) -> (Vec<f64>,
         list.accepted_squares[category] - 2.0 * a * list.accepted_products[category] + a * a * list.weight_squares;
     let acceptance = if list.weights == 0.0 { 0.0 } else { variance.max(0.0).sqrt() / list.weights.abs() };
     (bins, acceptance)
+}
+
+/// Accepted weight over what it would be at an efficiency of 1; 1 where nothing is accepted even then.
+fn efficiency(accepted: f64, unfiltered: f64) -> f64 {
+    if unfiltered == 0.0 { 1.0 } else { accepted / unfiltered }
+}
+
+/// As [`list_errors`]: the variance of sum a/sum u is sum (a_i - e u_i)²/(sum u)².
+fn efficiency_list_error(list: &ListSums, category: usize, efficiency: f64) -> f64 {
+    let variance = list.accepted_squares[category] - 2.0 * efficiency * list.unfiltered_products[category]
+        + efficiency * efficiency * list.unfiltered_squares[category];
+    let unfiltered = list.unfiltered[category];
+    if unfiltered == 0.0 { 0.0 } else { variance.max(0.0).sqrt() / unfiltered.abs() }
+}
+
+/// What the user should hear of: events whose efficiency nothing tells.
+pub(super) fn notes(totals: &[Total]) -> Vec<String> {
+    let generated: f64 = totals.iter().map(|total| total.generated).sum();
+    let outside: f64 = totals.iter().map(|total| total.outside).sum();
+    if outside == 0.0 || generated == 0.0 {
+        return Vec::new();
+    }
+    let percent = 100.0 * outside / generated;
+    vec![format!(
+        "{percent:.3} % of the generated weight has a leg outside of every cell of its efficiency table, where the \
+         efficiency is 0"
+    )]
 }

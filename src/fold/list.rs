@@ -1,19 +1,19 @@
 //! Folds of events read from a file: the points are those of the smearing only, several for every event.
 
 use super::engine::{REPLICATES, Total, scramblings};
-use super::estimate::{self, ListSums};
+use super::estimate;
+use super::event_list::{ChannelEvents, KEPT, Listed, read, selector};
 use super::last_leg::{Sums, add};
+use super::list_sums::ListSums;
 use super::measure::Workspace;
 use super::plan::Plan;
 use super::{FoldError, FoldRecord, Folded, Progress};
 use crate::detector::Detector;
-use crate::events::lhe::{EventFile, Options};
-use crate::events::{Selection, Selector, TruthDimensions};
-use crate::kinematics::TruthEvent;
+use crate::events::{Selection, TruthDimensions};
 use crate::numerics::sobol::{BLOCK, MAX_POINTS, Scrambling};
-use crate::process::Study;
+use crate::process::{EventList, Study};
 use rayon::prelude::*;
-use std::path::Path;
+use std::borrow::Cow;
 use std::time::Instant;
 
 /// Events that add up on their own before they join the total: a multiple of [`BLOCK`].
@@ -21,9 +21,6 @@ const BATCH: usize = 512;
 
 /// Batches at work at once; the number must not depend on the number of threads.
 const WAVE: usize = 16;
-
-/// A list of up to this many events stays in memory between the passes; a longer one is read again.
-const KEPT: usize = 1 << 16;
 
 /// What a pass over the list gave.
 struct Pass {
@@ -39,14 +36,14 @@ struct Folder<'a> {
     scramblings: &'a [Scrambling],
     categories: usize,
     per_event: u64,
-    queue: Vec<TruthEvent>,
+    queue: Vec<Listed>,
     folded: u64,
     pass: Pass,
 }
 
 impl Folder<'_> {
     /// Takes events; folds when enough for a wave have come, or all when `last`.
-    fn take(&mut self, events: impl IntoIterator<Item = TruthEvent>, last: bool) {
+    fn take(&mut self, events: impl IntoIterator<Item = Listed>, last: bool) {
         self.queue.extend(events);
         while self.queue.len() >= BATCH * WAVE || (last && !self.queue.is_empty()) {
             let count = self.queue.len().min(BATCH * WAVE);
@@ -77,25 +74,32 @@ impl Folder<'_> {
     }
 }
 
-/// Folds the events of a file for one channel, in one pass with `exactly` so many points an event if that is given.
+/// Folds the events of a file for one channel, in one pass with `exactly` so many points an event if that is given; or those
+/// that are known already.
+#[allow(clippy::too_many_arguments)]
 pub(super) fn fold_file(
     study: &Study,
     detector: &Detector,
     channel_index: usize,
     mass_gev: f64,
-    path: &Path,
+    file: &EventList,
+    known: Option<&ChannelEvents>,
     exactly: Option<u64>,
     progress: &(dyn Fn(Progress) + Sync),
 ) -> Result<Folded, FoldError> {
     let started = Instant::now();
     let channel = study.channels.get(channel_index).ok_or(FoldError::NoSuchChannel(channel_index))?;
-    let selector = Selector::new(&channel.decay, study.resonance.intermediate.mass_gev)
-        .ok_or_else(|| FoldError::CannotPick { channel: channel.name.clone() })?;
+    let selector = selector(study, channel, mass_gev)?;
     let plan = Plan::new(detector, channel, mass_gev, &TruthDimensions::default());
     let scramblings = scramblings(study.seed, &plan)?;
     let (categories, edges) = (channel.categories.len(), plan.axis.squares.len());
-    let mut kept: Option<Vec<TruthEvent>> = None;
+    let mut kept: Option<Cow<'_, [Listed]>> = known.map(|known| Cow::Borrowed(known.events.as_slice()));
     let mut record = FoldRecord { channel: channel.name.clone(), mass_gev, ..FoldRecord::default() };
+    if let Some(known) = known {
+        known.selection.verdict(&file.path, &channel.name)?;
+        record.events_used = Some(known.events.len() as u64);
+        record.events_effective = Some(known.selection.effective_events());
+    }
     let mut per_event = exactly.unwrap_or(1);
     loop {
         let mut folder = Folder {
@@ -116,7 +120,8 @@ pub(super) fn fold_file(
             Some(events) => folder.take(events.iter().copied(), true),
             None => {
                 let mut all = Some(Vec::new());
-                let (selection, warnings) = read(path, &selector, progress, |events: Vec<TruthEvent>| {
+                let selectors = std::slice::from_ref(&selector);
+                let (selections, report) = read(file, selectors, progress, |_, events| {
                     if let Some(list) = &mut all {
                         list.extend_from_slice(&events);
                     }
@@ -126,11 +131,13 @@ pub(super) fn fold_file(
                     folder.take(events, false);
                 })?;
                 folder.take([], true);
-                selection.verdict(path, &channel.name)?;
-                kept = all;
+                let selection = selections.into_iter().next().unwrap_or_default();
+                selection.verdict(&file.path, &channel.name)?;
+                kept = all.map(Cow::Owned);
                 record.events_used = Some(selection.used);
+                record.events_effective = Some(selection.effective_events());
                 record.events_skipped = skips(&selection);
-                record.notes = warnings;
+                record.notes = report.warnings();
             }
         }
         let used = record.events_used.unwrap_or(0);
@@ -148,9 +155,9 @@ pub(super) fn fold_file(
             record.final_points = pass.points;
             record.precision_reached = reached;
             record.reached = reached <= study.precision;
+            record.notes.extend(estimate::notes(&pass.totals));
             record.wall_seconds = started.elapsed().as_secs_f64();
-            record.events_effective = Some(pass.list.weights * pass.list.weights / pass.list.weight_squares);
-            let templates = estimate::templates(channel, mass_gev, &pass.totals, Some(&pass.list));
+            let templates = estimate::templates(channel, mass_gev, &pass.totals, Some(&pass.list.finish()));
             return Ok(Folded { templates, record });
         }
         per_event = next;
@@ -169,33 +176,6 @@ fn next_per_event(per_event: u64, excess: f64, events: u64, left: u64) -> u64 {
     if most == 0 { 0 } else { wanted.min(1 << most.ilog2()) }
 }
 
-/// Reads the file once and hands on the events of the channel, in the order of the file.
-fn read(
-    path: &Path,
-    selector: &Selector,
-    progress: &(dyn Fn(Progress) + Sync),
-    mut consume: impl FnMut(Vec<TruthEvent>),
-) -> Result<(Selection, Vec<String>), FoldError> {
-    let mut file = EventFile::open(path, &Options::default())?;
-    let mut selection = Selection::default();
-    let position = file.progress().clone();
-    file.for_each_batch(|batch| -> Result<(), FoldError> {
-        let mut events = Vec::with_capacity(batch.len());
-        for event in batch.events() {
-            let outcome = selector.select(&event);
-            selection.add(&event, &outcome);
-            events.extend(outcome.ok());
-        }
-        consume(events);
-        let total = position.total_bytes.unwrap_or(0) as f64;
-        let fraction = if total > 0.0 { position.bytes_read() as f64 / total } else { 0.0 };
-        progress(Progress { fraction: fraction.min(1.0) });
-        Ok(())
-    })?;
-    selection.add_left_out(file.report());
-    Ok((selection, file.report().warnings()))
-}
-
 fn skips(selection: &Selection) -> Vec<(String, u64)> {
     selection
         .reasons()
@@ -209,7 +189,7 @@ fn fold_batch(
     plan: &Plan,
     scramblings: &[Scrambling],
     categories: usize,
-    events: &[TruthEvent],
+    events: &[Listed],
     per_event: u64,
     first_point: u64,
     workspace: &mut Workspace,
@@ -227,10 +207,10 @@ fn fold_batch(
     let mut all = one.clone();
     let mut touched = vec![false; together * categories];
     let mut point = first_point;
-    for group in events.chunks(together) {
+    for some in events.chunks(together) {
         for i in 0..BLOCK {
-            match group.get(i / lanes) {
-                Some(event) => workspace.truth.set(i, event),
+            match some.get(i / lanes) {
+                Some(listed) => workspace.truth.set(i, &listed.event),
                 None => workspace.truth.clear(i),
             }
         }
@@ -238,6 +218,7 @@ fn fold_batch(
             for block in 0..blocks {
                 total.generated += workspace.truth.generated.iter().sum::<f64>();
                 workspace.measure(plan, scrambling, point + block * BLOCK as u64);
+                total.outside += workspace.outside;
                 for (last, lane) in workspace.last.iter().zip(&workspace.event) {
                     let slot = lane / lanes * categories + last.category;
                     touched[slot] = true;
@@ -258,8 +239,8 @@ fn fold_batch(
             }
         }
         let unit = 1.0 / (per_event * REPLICATES as u64) as f64;
-        for (event, sums) in group.iter().zip(all.chunks_mut(categories)) {
-            list.add_event(event.weight, sums, unit);
+        for (listed, sums) in some.iter().zip(all.chunks_mut(categories)) {
+            list.add_event(listed.group, listed.event.weight, sums, unit);
             sums.iter_mut().for_each(Sums::clear);
         }
         point += blocks * BLOCK as u64;

@@ -88,6 +88,9 @@ impl PredictedTemplate {
             acceptance,
             acceptance_error,
             acceptance_list_error: 0.0,
+            efficiency: 1.0,
+            efficiency_error: 0.0,
+            efficiency_list_error: 0.0,
             lost: 0.0,
             replicates: Vec::<Replicate>::new(),
         }

@@ -1,7 +1,7 @@
 //! What a study costs: points at most, and an estimate of points and time from coarse folds.
 
 use super::text::{grouped, plural, wrapped};
-use crate::fold::{FoldRecord, Folded, fold_channel};
+use crate::fold::{FoldRecord, Folded, StudyEvents, fold_channel, fold_known};
 use crate::process::Study;
 use std::fmt::Write as _;
 
@@ -26,11 +26,13 @@ pub struct Cost {
 }
 
 impl Cost {
-    fn new(study: &Study, folded: Folded) -> Self {
+    /// From a coarse fold, of which the list of events is so many times as long as the one that was folded.
+    fn new(study: &Study, folded: Folded, length: f64) -> Self {
         let passes = folded.templates.iter().any(|labelled| labelled.template.acceptance != 0.0);
         let record = folded.record;
-        let ratio = (record.precision_reached / study.precision).max(1.0);
-        let needed = record.points as f64 * libm::pow(ratio, 1.0 / ERROR_POWER);
+        // The error of the same points per event falls with the number of events.
+        let ratio = (record.precision_reached / study.precision / length.sqrt()).max(1.0);
+        let needed = record.points as f64 * length * libm::pow(ratio, 1.0 / ERROR_POWER);
         let short = needed > study.max_points as f64;
         let points = if short { study.max_points.max(record.points) } else { needed.ceil() as u64 };
         Cost { record, mass_points: study.resonance.masses_gev.len() as u64, points, short, passes }
@@ -43,19 +45,28 @@ impl Cost {
     }
 }
 
-/// Folds each channel coarsely at its middle mass.
+/// Folds each channel coarsely at its middle mass, with the events that were read.
 ///
 /// # Errors
 /// What is wrong with each channel that cannot be folded.
-pub fn measure(study: &Study) -> Result<Vec<Cost>, Vec<String>> {
+pub fn measure(study: &Study, events: Option<&StudyEvents>) -> Result<Vec<Cost>, Vec<String>> {
     let masses = &study.resonance.masses_gev;
     let Some(middle) = masses.get(masses.len() / 2) else { return Ok(Vec::new()) };
     let mut coarse = study.clone();
     coarse.precision = study.precision.max(COARSE);
     let (mut costs, mut messages) = (Vec::new(), Vec::new());
     for (index, channel) in study.channels.iter().enumerate() {
-        match fold_channel(&coarse, index, *middle, &|_| ()) {
-            Ok(folded) => costs.push(Cost::new(study, folded)),
+        let known = events.and_then(|events| events.channels.get(index));
+        let folded = match known {
+            Some(known) => fold_known(&coarse, index, *middle, known, &|_| ()),
+            None => fold_channel(&coarse, index, *middle, &|_| ()),
+        };
+        match folded {
+            Ok(folded) => {
+                let kept = folded.record.events_used.unwrap_or(1).max(1);
+                let length = known.map_or(1.0, |known| known.selection.used as f64 / kept as f64);
+                costs.push(Cost::new(study, folded, length));
+            }
             Err(error) => messages.push(format!("channel {}: {error}", channel.name)),
         }
     }
@@ -105,22 +116,9 @@ pub fn describe(report: &mut String, study: &Study, costs: &[Cost]) {
             let text = format!("{}: no event of the coarse fold passed the cuts; check them", channel.name);
             wrapped(report, "  ", "    ", &text);
         }
-        events(report, &cost.record);
-    }
-}
-
-/// Adds what a file of events holds for a channel.
-fn events(report: &mut String, record: &FoldRecord) {
-    if let Some(used) = record.events_used {
-        let skipped: Vec<String> =
-            record.events_skipped.iter().map(|(reason, count)| format!("{} {reason}", grouped(*count))).collect();
-        let skipped =
-            if skipped.is_empty() { "none skipped".to_owned() } else { format!("skipped: {}", skipped.join("; ")) };
-        let text = format!("{}: {} events used, {skipped}", record.channel, grouped(used));
-        wrapped(report, "  ", "    ", &text);
-    }
-    for note in &record.notes {
-        wrapped(report, "  ", "    ", &format!("{}: {note}", record.channel));
+        for note in &cost.record.notes {
+            wrapped(report, "  ", "    ", &format!("{}: {note}", channel.name));
+        }
     }
 }
 

@@ -3,8 +3,8 @@
 use std::path::Path;
 
 use super::Skip;
-use crate::events::lhe::{Report, Tally};
 use crate::events::raw::RawEvent;
+use crate::events::report::{Report, Tally};
 use crate::kinematics::TruthEvent;
 use crate::problem::Problem;
 
@@ -14,7 +14,7 @@ pub struct Selection {
     /// Events used.
     pub used: u64,
     /// Events skipped, by the reasons of [`Skip::ALL`], with the first line of each.
-    pub skipped: [Tally; 6],
+    pub skipped: [Tally; 7],
     /// Used events of negative weight.
     pub negative_weights: u64,
     /// Sum of the weights of the used events.
