@@ -12,11 +12,11 @@ const BEYOND: f64 = 1e-3;
 /// Panels are at most so many core widths long where the resolution matters, and elsewhere this part of the distance from
 /// the peak (or of half the width).
 const PANEL_SIGMAS: f64 = 2.0;
-const PANEL_DISTANCE: f64 = 1.0;
+const PANEL_DISTANCE: f64 = 0.5;
 /// The resolution is followed closely within so many core widths of the axis.
 const REACH: f64 = 4.0;
 /// Longer panels and a shorter reach for the errors.
-const ERROR_PANELS: f64 = 3.0;
+const ERROR_PANELS: f64 = 4.0;
 const ERROR_REACH: f64 = 6.0;
 /// Without a falloff, true masses are followed to this many nominal masses; less than 1e-7 of any shape lies beyond.
 const FARTHEST: f64 = 1e4;
@@ -81,7 +81,7 @@ pub struct WideTemplate {
 ///
 /// Beyond the mass points the curves of the model (bias and widths relative to the mass, tails, acceptance) keep the
 /// values that they have at the nearest one. The integral is a sum of 8-point Gauss-Legendre panels; its error is below
-/// 3e-5 of the highest bin (tested against panels of half the length and against the convolution of [`crate::lineshape::LineShape`]).
+/// 1e-5 of the highest bin (tested against panels of half the length and against the convolution of [`crate::lineshape::LineShape`]).
 ///
 /// # Errors
 /// See [`WideError`]; true masses beyond the mass points are an error without `extrapolate` when more than 0.1 % of the
@@ -349,7 +349,7 @@ mod tests {
                 let highest = wide.template.probability.iter().fold(0.0_f64, |a, b| a.max(*b));
                 for (i, p) in wide.template.probability.iter().enumerate() {
                     let told = judge.window_probability(edges[i], edges[i + 1]);
-                    assert!((p - told).abs() < 3e-5 * highest, "{natural:?} bin {i}: {p:e} {told:e}");
+                    assert!((p - told).abs() < 1e-5 * highest, "{natural:?} bin {i}: {p:e} {told:e}");
                 }
                 let whole: f64 = wide.template.probability.iter().sum();
                 assert!((whole + wide.template.below_axis + wide.template.above_axis - 1.0).abs() < 1e-12);
@@ -379,7 +379,7 @@ mod tests {
                 let two = wide_with_panels(&model, &truth, &edges(), true, 2.0).unwrap();
                 let highest = one.template.probability.iter().fold(0.0_f64, |a, b| a.max(*b));
                 for (a, b) in one.template.probability.iter().zip(&two.template.probability) {
-                    assert!((a - b).abs() < 3e-5 * highest, "{a:e} {b:e}");
+                    assert!((a - b).abs() < 1e-5 * highest, "{a:e} {b:e}");
                 }
                 assert!((one.acceptance / two.acceptance - 1.0).abs() < 1e-7);
             }
