@@ -1,14 +1,18 @@
 //! What the statistics of an event list add to the errors of a template.
 //!
 //! The units are groups: correlated events, such as an event and its counter-events, are added up before anything is squared. An
-//! event by itself is a group of one.
+//! event by itself is a group of one. Several groups may be taken as one unit: the variance of a sum of independent groups can
+//! be had from sums over any of them, with fewer degrees of freedom.
 
+use super::event_list::Listed;
 use super::last_leg::Sums;
 
-/// Sums over a group of consecutive events.
+/// Sums over a group of consecutive events, or over several groups.
 #[derive(Clone, Debug)]
 struct Group {
-    number: u64,
+    /// Numbers of the first and the last group in it.
+    first: u64,
+    last: u64,
     weight: f64,
     /// By category: accepted weight, with and without efficiencies, and the weighted probability of each bin.
     accepted: Vec<f64>,
@@ -17,14 +21,15 @@ struct Group {
 }
 
 impl Group {
-    fn new(number: u64, categories: usize, bins: usize) -> Self {
+    fn new((first, last): (u64, u64), categories: usize, bins: usize) -> Self {
         let zeros = vec![0.0; categories];
         let bins = vec![vec![0.0; bins]; categories];
-        Group { number, weight: 0.0, accepted: zeros.clone(), unfiltered: zeros, bins }
+        Group { first, last, weight: 0.0, accepted: zeros.clone(), unfiltered: zeros, bins }
     }
 
-    fn restart(&mut self, number: u64) {
-        self.number = number;
+    fn restart(&mut self, (first, last): (u64, u64)) {
+        self.first = first;
+        self.last = last;
         self.weight = 0.0;
         self.accepted.fill(0.0);
         self.unfiltered.fill(0.0);
@@ -82,11 +87,14 @@ impl ListSums {
         }
     }
 
-    /// Adds one event of a group and a weight; `sums` holds what its points gave in each category and `unit` is 1 over their
-    /// number. Events come in the order of the list.
-    pub fn add_event(&mut self, group: u64, weight: f64, sums: &[Sums], unit: f64) {
+    /// Adds consecutive events that are taken as one unit; `sums` holds what their points gave in each category and `unit` is
+    /// 1 over the points of an event. Events come in the order of the list.
+    pub fn add_unit(&mut self, events: &[Listed], sums: &[Sums], unit: f64) {
+        let [first, ..] = events else { return };
+        let last = events.last().unwrap_or(first);
+        let weight: f64 = events.iter().map(|listed| listed.event.weight).sum();
         self.weights += weight;
-        let group = self.open(group);
+        let group = self.open((first.group, last.group));
         group.weight += weight;
         for (category, sums) in sums.iter().enumerate() {
             let accepted = sums.accepted * unit;
@@ -102,24 +110,26 @@ impl ListSums {
         }
     }
 
-    /// The group of this number, which is the current one or begins.
-    fn open(&mut self, number: u64) -> &mut Group {
-        let current = self.last.as_ref().or(self.first.as_ref()).map(|group| group.number);
-        if current != Some(number) {
+    /// The unit from one group number to another: the current one if that ends with the first of these, else a new one.
+    fn open(&mut self, numbers: (u64, u64)) -> &mut Group {
+        let current = self.last.as_mut().or(self.first.as_mut()).filter(|group| group.last == numbers.0);
+        if let Some(group) = current {
+            group.last = numbers.1;
+        } else {
             let next = match self.last.take() {
                 Some(mut closed) => {
                     self.close(&closed);
-                    closed.restart(number);
+                    closed.restart(numbers);
                     closed
                 }
-                None => Group::new(number, self.squares.len(), self.squares.first().map_or(0, Vec::len)),
+                None => Group::new(numbers, self.squares.len(), self.squares.first().map_or(0, Vec::len)),
             };
             let place = if self.first.is_none() { &mut self.first } else { &mut self.last };
             *place = Some(next);
         }
         match (&mut self.first, &mut self.last) {
             (_, Some(group)) => group,
-            (first, None) => first.get_or_insert_with(|| Group::new(number, 0, 0)),
+            (first, None) => first.get_or_insert_with(|| Group::new(numbers, 0, 0)),
         }
     }
 
@@ -155,7 +165,7 @@ impl ListSums {
         self.weight_squares += next.weight_squares;
         self.weights += next.weights;
         for group in next.first.iter().chain(&next.last) {
-            self.open(group.number).add(group);
+            self.open((group.first, group.last)).add(group);
         }
     }
 

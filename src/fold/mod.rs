@@ -10,6 +10,7 @@ mod limits;
 mod list;
 mod list_sums;
 mod measure;
+mod paired;
 pub mod plain;
 mod plan;
 mod resolve;
@@ -41,6 +42,8 @@ pub struct FoldRecord {
     pub cpu_seconds: f64,
     /// Elapsed time in seconds.
     pub wall_seconds: f64,
+    /// Points of each scrambling for each event of the list; `None` for generated events.
+    pub points_per_event: Option<u64>,
     /// Events of the list that were used; `None` for generated events.
     pub events_used: Option<u64>,
     /// Effective number of events of the list, (sum w)²/sum w² over groups of correlated events.
@@ -49,6 +52,16 @@ pub struct FoldRecord {
     pub events_skipped: Vec<(String, u64)>,
     /// What else is worth knowing: about the file of events, and about events where no efficiency is told.
     pub notes: Vec<String>,
+}
+
+impl FoldRecord {
+    /// The record of a fold of about so many points, the first of the same ones, for [`fold_shifted`]. Of a list these are the
+    /// first points of every event.
+    pub fn leading(&self, points: u64) -> Self {
+        let part = |all: u64| (all as f64 * points as f64 / self.final_points.max(1) as f64) as u64;
+        let per_event = self.points_per_event.map(|all| 1 << part(all).max(1).ilog2());
+        FoldRecord { final_points: points.min(self.final_points), points_per_event: per_event, ..self.clone() }
+    }
 }
 
 /// What a fold of one channel at one mass point gives.
@@ -161,10 +174,6 @@ fn fold_with(
             let points = record.map(|record| record.final_points);
             engine::fold_generated(study, detector, channel, mass_gev, production, points, progress)
         }
-        EventSource::File(file) => {
-            let events = |record: &FoldRecord| record.events_used.unwrap_or(1).max(1) * engine::REPLICATES as u64;
-            let points = record.map(|record| (record.final_points / events(record)).max(1).next_power_of_two());
-            list::fold_file(study, detector, channel, mass_gev, file, None, points, progress)
-        }
+        EventSource::File(file) => list::fold_file(study, detector, channel, mass_gev, file, None, record, progress),
     }
 }
