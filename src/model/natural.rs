@@ -288,7 +288,7 @@ mod tests {
     use super::*;
     use crate::fit::{Link, Stop};
     use crate::lineshape::{BreitWigner, LineShape, Relativistic, Resolution, RunningWidth, Scaling};
-    use crate::model::{Acceptance, Basis, MassScale, SmoothCurve, parameter_link, prototype};
+    use crate::model::{Basis, MassScale, SmoothCurve, YieldFactor, parameter_link, prototype};
     use crate::process::ShapeChoice;
 
     /// A model whose parameters are constants relative to the mass, from 20 to 2000 GeV, and an acceptance of 0.5.
@@ -315,7 +315,8 @@ mod tests {
             masses_gev: vec![20.0, 2000.0],
             scale: MassScale { low_gev: 20.0, high_gev: 2000.0, knot_gev: None },
             covariance: DMatrix::from_diagonal_element(6, 6, 1e-8),
-            acceptance: Acceptance { curve, covariance: DMatrix::zeros(1, 1) },
+            acceptance: YieldFactor { curve: curve.clone(), covariance: DMatrix::zeros(1, 1) },
+            efficiency: YieldFactor { curve, covariance: DMatrix::zeros(1, 1) },
             curves,
             stop: Stop::Converged,
         };
