@@ -28,8 +28,8 @@ fn template(edges_gev: Vec<f64>, probability: Vec<f64>, below_axis: f64, above_a
         acceptance: 0.5,
         acceptance_error: 0.001,
         acceptance_list_error: 0.0,
-        efficiency: 1.0,
-        efficiency_error: 0.0,
+        efficiency: 0.9,
+        efficiency_error: 0.001,
         efficiency_list_error: 0.0,
         lost: 0.0,
         replicates: Vec::new(),
@@ -243,6 +243,7 @@ fn a_smooth_family_is_found_again_between_its_masses() {
             assert!((a.value - b.value).abs() < tolerance * scale, "{mass} {a:?} {b:?}");
         }
         assert!((found.acceptance - 0.5).abs() < 1e-9 && found.acceptance_error > 0.0);
+        assert!((found.efficiency - 0.9).abs() < 1e-9 && found.efficiency_error > 0.0);
         let truth = exact(&told, mass, mass);
         let template = found.template(&truth.edges_gev).unwrap();
         let worst = template.probability.iter().zip(&truth.probability).map(|(a, b)| (a - b).abs()).fold(0.0, f64::max);

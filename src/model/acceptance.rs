@@ -1,4 +1,4 @@
-//! The acceptance as a smooth function of the mass.
+//! Acceptance and efficiency as smooth functions of the mass.
 
 use nalgebra::{DMatrix, DVector};
 
@@ -12,24 +12,55 @@ const NOTICEABLE: f64 = 0.1;
 /// Relative deviation below which nothing is left to gain.
 const NEGLIGIBLE: f64 = 1e-5;
 
-/// Its logarithm as a smooth function of the mass, by least squares with equal weights; functions chosen as those of the
-/// shape.
+/// A positive factor of the yield, by its logarithm: a smooth function of the mass by least squares with equal weights,
+/// its functions chosen as those of the shape.
 #[derive(Clone, Debug, PartialEq)]
-pub struct Acceptance {
-    /// The curve of the acceptance.
+pub struct YieldFactor {
+    /// The curve of the factor.
     pub curve: SmoothCurve,
     /// Numerical covariance of its coefficients.
     pub covariance: DMatrix<f64>,
 }
 
-impl Acceptance {
-    /// From mass points; `None` where an acceptance is not positive. `bases` fixes the functions.
-    pub(super) fn fit(points: &[(f64, &Template)], scale: &MassScale, fixed: Option<Basis>) -> Option<Self> {
-        let masses: Vec<f64> = points.iter().map(|p| p.0).collect();
-        if points.iter().any(|p| !(p.1.acceptance > 0.0 && p.1.acceptance.is_finite())) {
+/// What one mass point tells.
+#[derive(Clone, Debug)]
+pub(super) struct FactorPoint {
+    mass_gev: f64,
+    value: f64,
+    error: f64,
+    replicates: Vec<f64>,
+}
+
+/// The acceptances of templates at their masses.
+pub(super) fn acceptances(templates: &[(f64, &Template)]) -> Vec<FactorPoint> {
+    let point = |&(mass_gev, template): &(f64, &Template)| FactorPoint {
+        mass_gev,
+        value: template.acceptance,
+        error: template.acceptance_error,
+        replicates: template.replicates.iter().map(|r| r.acceptance).collect(),
+    };
+    templates.iter().map(point).collect()
+}
+
+/// Their efficiencies.
+pub(super) fn efficiencies(templates: &[(f64, &Template)]) -> Vec<FactorPoint> {
+    let point = |&(mass_gev, template): &(f64, &Template)| FactorPoint {
+        mass_gev,
+        value: template.efficiency,
+        error: template.efficiency_error,
+        replicates: Vec::new(),
+    };
+    templates.iter().map(point).collect()
+}
+
+impl YieldFactor {
+    /// From mass points; `None` where a value is not positive. `fixed` gives the functions.
+    pub(super) fn fit(name: &str, points: &[FactorPoint], scale: &MassScale, fixed: Option<Basis>) -> Option<Self> {
+        let masses: Vec<f64> = points.iter().map(|p| p.mass_gev).collect();
+        if points.iter().any(|p| !(p.value > 0.0 && p.value.is_finite())) {
             return None;
         }
-        let logs: Vec<f64> = points.iter().map(|p| libm::log(p.1.acceptance)).collect();
+        let logs: Vec<f64> = points.iter().map(|p| libm::log(p.value)).collect();
         let basis = fixed.unwrap_or_else(|| choose(&masses, &logs, scale));
         let design = design(&masses, scale, basis);
         let normal = design.transpose() * &design;
@@ -37,15 +68,15 @@ impl Acceptance {
         let gain = positive_inverse(&normal)? * design.transpose();
         let covariance = &gain * variance(points) * gain.transpose();
         let curve = SmoothCurve {
-            name: "acceptance".to_owned(),
+            name: name.to_owned(),
             link: Link::Log { from: 0.0 },
             basis,
             coefficients: coefficients.as_slice().to_vec(),
         };
-        Some(Acceptance { curve, covariance })
+        Some(YieldFactor { curve, covariance })
     }
 
-    /// Acceptance at a mass, at most 1, and its numerical error.
+    /// The factor at a mass, at most 1, and its numerical error.
     pub fn at(&self, scale: &MassScale, mass_gev: f64) -> (f64, f64) {
         let value = libm::exp(self.curve.eta(scale, mass_gev)).min(1.0);
         let row = DVector::from_vec(scale.row(self.curve.basis, mass_gev));
@@ -61,11 +92,11 @@ fn design(masses: &[f64], scale: &MassScale, basis: Basis) -> DMatrix<f64> {
 
 /// Covariance of the logarithms: scramblings taken in step where all mass points have equally many, for they may be the
 /// same.
-fn variance(points: &[(f64, &Template)]) -> DMatrix<f64> {
+fn variance(points: &[FactorPoint]) -> DMatrix<f64> {
     let n = points.len();
-    let number = points.first().map_or(0, |p| p.1.replicates.len());
-    if number > 1 && points.iter().all(|p| p.1.replicates.len() == number) {
-        let deviation = |j: usize, r: usize| points[j].1.replicates[r].acceptance / points[j].1.acceptance;
+    let number = points.first().map_or(0, |p| p.replicates.len());
+    if number > 1 && points.iter().all(|p| p.replicates.len() == number) {
+        let deviation = |j: usize, r: usize| points[j].replicates[r] / points[j].value;
         let mean: Vec<f64> =
             (0..n).map(|j| (0..number).map(|r| deviation(j, r)).sum::<f64>() / number as f64).collect();
         return DMatrix::from_fn(n, n, |i, j| {
@@ -74,7 +105,7 @@ fn variance(points: &[(f64, &Template)]) -> DMatrix<f64> {
         });
     }
     DMatrix::from_diagonal(&DVector::from_fn(n, |j, _| {
-        let relative = points[j].1.acceptance_error / points[j].1.acceptance;
+        let relative = points[j].error / points[j].value;
         relative * relative
     }))
 }

@@ -1,6 +1,6 @@
 //! Closure: what a mass model predicts for a mass point that it has not seen.
 
-use super::acceptance::Acceptance;
+use super::acceptance::{YieldFactor, acceptances};
 use super::mass_model::{MassModel, ModelError, ModelPoint};
 use super::quantile::{QuantileError, QuantileInterpolation};
 use super::residual::{ResidualError, Residuals};
@@ -180,7 +180,8 @@ pub fn quantile_closure(templates: &[(f64, &Template)], knot_gev: Option<f64>) -
         let predicted = interpolation.template(mass, &left.edges_gev, false).map_err(failed)?;
         let total = deviation(&predicted, left).map_err(|e| ClosureError::Cumulative(mass, e))?;
         let scale = MassScale { low_gev: templates[0].0, high_gev: templates[templates.len() - 1].0, knot_gev };
-        let acceptance = Acceptance::fit(&others, &scale, None).ok_or(ClosureError::Acceptance(mass))?;
+        let acceptance = YieldFactor::fit("acceptance", &acceptances(&others), &scale, None)
+            .ok_or(ClosureError::Acceptance(mass))?;
         let acceptance_ratio = acceptance.at(&scale, mass).0 / left.acceptance;
         rows.push(ClosurePoint { mass_gev: mass, total, interpolation: total, acceptance_ratio });
     }

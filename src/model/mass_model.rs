@@ -2,7 +2,7 @@
 
 use nalgebra::{DMatrix, DVector};
 
-use super::acceptance::Acceptance;
+use super::acceptance::{YieldFactor, acceptances, efficiencies};
 use super::orders::{HIGHEST, Single, choose, nearest};
 use super::response::{Response, ResponseError, curve_point, numerical_covariance};
 use super::shape::{PredictedTemplate, of_shape, parameter_link, prior, prototype, rising};
@@ -88,8 +88,10 @@ pub struct MassModel {
     /// Numerical covariance of all coefficients, curve after curve: what the numerical errors of the templates make of
     /// them.
     pub covariance: DMatrix<f64>,
-    /// The acceptance.
-    pub acceptance: Acceptance,
+    /// The acceptance, which includes the efficiency of the detector.
+    pub acceptance: YieldFactor,
+    /// The efficiency of the detector.
+    pub efficiency: YieldFactor,
     /// How the simultaneous fit ended.
     pub stop: Stop,
 }
@@ -107,6 +109,10 @@ pub struct Predicted {
     pub acceptance: f64,
     /// Its numerical error.
     pub acceptance_error: f64,
+    /// Efficiency of the detector, which the acceptance includes.
+    pub efficiency: f64,
+    /// Its numerical error.
+    pub efficiency_error: f64,
     /// Whether the mass lies outside the mass points.
     pub extrapolated: bool,
 }
@@ -178,8 +184,11 @@ impl MassModel {
         let templates: Vec<&Template> = points.iter().map(|p| p.template).collect();
         let covariance = numerical_covariance(&fit, &found, &templates).ok_or(ModelError::Undetermined)?;
         let pairs: Vec<(f64, &Template)> = masses.iter().copied().zip(templates).collect();
-        let acceptance =
-            Acceptance::fit(&pairs, &scale, like.map(|m| m.acceptance.curve.basis)).ok_or(ModelError::Undetermined)?;
+        let basis = like.map(|m| m.acceptance.curve.basis);
+        let acceptance = YieldFactor::fit("acceptance", &acceptances(&pairs), &scale, basis);
+        let basis = like.map(|m| m.efficiency.curve.basis);
+        let efficiency = YieldFactor::fit("efficiency", &efficiencies(&pairs), &scale, basis);
+        let (acceptance, efficiency) = acceptance.zip(efficiency).ok_or(ModelError::Undetermined)?;
         let mut rest = found.coefficients.as_slice();
         let curves = parameters
             .iter()
@@ -190,7 +199,7 @@ impl MassModel {
                 SmoothCurve { name: p.name.clone(), link: parameter_link(&p.name), basis, coefficients: own.to_vec() }
             })
             .collect();
-        Ok(MassModel { shape, masses_gev: masses, scale, curves, covariance, acceptance, stop: found.stop })
+        Ok(MassModel { shape, masses_gev: masses, scale, curves, covariance, acceptance, efficiency, stop: found.stop })
     }
 
     /// Checks a model that was read: numbers of curves and coefficients, finite values, rising masses, a symmetric
@@ -215,16 +224,18 @@ impl MassModel {
         }
         let whole =
             |c: &SmoothCurve| c.coefficients.len() == c.basis.count() && c.coefficients.iter().all(|v| v.is_finite());
-        if self.curves.iter().chain([&self.acceptance.curve]).any(|c| c.basis.order > HIGHEST) {
+        if self.curves.iter().chain([&self.acceptance.curve, &self.efficiency.curve]).any(|c| c.basis.order > HIGHEST) {
             return wrong("a curve is of higher order than any that is fitted");
         }
-        if !self.curves.iter().chain([&self.acceptance.curve]).all(whole) {
+        if !self.curves.iter().chain([&self.acceptance.curve, &self.efficiency.curve]).all(whole) {
             return wrong("a curve has too few coefficients, or one that is no finite number");
         }
         let count: usize = self.curves.iter().map(|c| c.basis.count()).sum();
-        for (matrix, count) in
-            [(&self.covariance, count), (&self.acceptance.covariance, self.acceptance.curve.basis.count())]
-        {
+        for (matrix, count) in [
+            (&self.covariance, count),
+            (&self.acceptance.covariance, self.acceptance.curve.basis.count()),
+            (&self.efficiency.covariance, self.efficiency.curve.basis.count()),
+        ] {
             if matrix.nrows() != count || matrix.ncols() != count {
                 return wrong("a covariance has another size than its coefficients");
             }
@@ -310,12 +321,15 @@ impl MassModel {
             }
         }
         let (acceptance, acceptance_error) = self.acceptance.at(&self.scale, mass_gev);
+        let (efficiency, efficiency_error) = self.efficiency.at(&self.scale, mass_gev);
         Ok(Predicted {
             mass_gev,
             resolution,
             covariance: &jacobian * &self.covariance * jacobian.transpose(),
             acceptance,
             acceptance_error,
+            efficiency,
+            efficiency_error,
             extrapolated,
         })
     }

@@ -1,7 +1,7 @@
 //! The mass model: the resolution shape of a channel as a smooth function of the resonance mass.
 //!
 //! * [`Response`]: the shape fitted to one template, with its misfit.
-//! * [`MassModel`]: all parameters of the shape, and the acceptance, as smooth functions of the mass, from one fit to the
+//! * [`MassModel`]: all parameters of the shape, acceptance and efficiency, as smooth functions of the mass, from one fit to the
 //!   templates of all mass points.
 //! * [`Residuals`]: what the shapes leave of the templates, interpolated, for templates more exact than any shape.
 //! * [`QuantileInterpolation`]: templates at new masses without a shape.
@@ -24,7 +24,7 @@ mod response;
 mod shape;
 mod smooth;
 
-pub use acceptance::Acceptance;
+pub use acceptance::YieldFactor;
 pub use bias::{BiasError, MassBias, mass_bias};
 pub use closure::{
     Closure, ClosureError, ClosurePoint, Deviation, InterpolationError, closure, deviation, quantile_closure,
