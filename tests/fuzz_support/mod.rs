@@ -34,11 +34,21 @@ fn selectors() -> Vec<Selector> {
     decays.iter().flat_map(of).collect()
 }
 
-/// Reads an event file, for the event weight and for a named one, and picks legs.
+/// Reads an event file; what begins with `<` is LHE.
 pub fn lhe(data: &[u8]) {
+    events(data);
+}
+
+/// Reads an event file; what does not begin with `<` is CSV.
+pub fn csv(data: &[u8]) {
+    events(data);
+}
+
+/// Reads an event file, for the event weight and for a named one, and picks legs.
+fn events(data: &[u8]) {
     let selectors = selectors();
     for weight in [None, Some("1002".to_owned())] {
-        let Ok(mut file) = EventFile::from_reader(Path::new("fuzz.lhe"), data, &Options { weight }) else { continue };
+        let Ok(mut file) = EventFile::from_reader(Path::new("fuzz"), data, &Options { weight }) else { continue };
         let mut batch = EventBatch::default();
         loop {
             let more = file.next_batch(&mut batch);
