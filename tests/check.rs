@@ -154,10 +154,10 @@ channel four-lepton: X -> V V(*), V -> electron electron, V -> muon muon
     to                 290       290
     bin width          2.5       2.5
 
-cost, with points for one mass and time for all; points and time are estimates
-  channel      templates   points at most        points    CPU time
-  two-photon 4 1,048,576 ~
-  four-lepton 2 1,048,576 ~
+cost, with the points of one nominal template and the time of all masses and shifts; points and time are estimates
+  channel      templates  shifts   points at most        points    CPU time
+  two-photon 4 2 1,048,576 ~
+  four-lepton 2 0 1,048,576 ~
   estimated time: ~ with 2 threads, from coarse folds and error ~ points^-0.6
 
 no problems
