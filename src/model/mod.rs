@@ -7,6 +7,7 @@
 //! * [`QuantileInterpolation`]: templates at new masses without a shape.
 //! * [`closure`]: what each of these predicts for a mass point that it has not seen.
 //! * [`MassBias`]: the misfit as a bias of a fitted mass.
+//! * [`CategoryModel`]: all of it for one channel and category, made by [`model_category`].
 //! * [`wide_template`]: templates of a resonance with a natural width.
 //!
 //! A resolution shape here is the distribution of the reconstructed mass less the mass point, for a resonance of no width;
@@ -14,6 +15,7 @@
 
 mod acceptance;
 mod bias;
+mod category;
 mod closure;
 mod mass_model;
 mod natural;
@@ -26,6 +28,7 @@ mod smooth;
 
 pub use acceptance::YieldFactor;
 pub use bias::{BiasError, MassBias, mass_bias};
+pub use category::{CategoryModel, Fitted, Method, Modelled, PredictError, Prediction, model_category};
 pub use closure::{
     Closure, ClosureError, ClosurePoint, Deviation, InterpolationError, closure, deviation, quantile_closure,
 };
