@@ -231,8 +231,8 @@ impl LineShape {
             .map(|((component, &fraction), nodes)| {
                 fraction
                     * match nodes {
-                        Some(nodes) => nodes.pdf(truth, x),
-                        None => self.component_pdf(truth, component, x),
+                        Some(nodes) if nodes.serve(x) => nodes.pdf(x),
+                        _ => self.component_pdf(truth, component, x),
                     }
             })
             .sum()
@@ -245,7 +245,7 @@ impl LineShape {
         };
         let mut shared = shared.iter();
         self.lay_out(gradient, |component| match shared.next() {
-            Some(Some(nodes)) => nodes.gradient(&self.convolution(truth, component), x),
+            Some(Some(nodes)) if nodes.serve(x) => nodes.gradient(&self.convolution(truth, component), x),
             _ => self.component_gradient(truth, component, x),
         })
     }

@@ -24,6 +24,7 @@ mod half;
 mod line_shape;
 mod mixture;
 mod natural;
+mod panels;
 mod pole_pair;
 mod relativistic;
 mod resolution;
