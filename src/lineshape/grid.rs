@@ -196,6 +196,53 @@ impl Grid {
         });
     }
 
+    /// The lowest point.
+    pub(super) fn low(&self) -> f64 {
+        self.edges[0]
+    }
+
+    /// The highest point.
+    pub(super) fn high(&self) -> f64 {
+        self.edges[self.edges.len() - 1]
+    }
+
+    /// Probabilities below each point, or above it, from the probability `beyond` the first end of the grid: the density
+    /// integrated from there, so that every term is positive.
+    pub(super) fn probability(&self, beyond: f64, m: &[f64], out: &mut [f64], above: bool) {
+        let m = &m[..m.len().min(out.len())];
+        let panels = self.edges.len() - 1;
+        let mut integrals = vec![[0.0; ORDER]; panels];
+        let mut reached = beyond;
+        for i in 0..panels {
+            let panel = if above { panels - 1 - i } else { i };
+            let half = 0.5 * (self.edges[panel + 1] - self.edges[panel]);
+            let (density, integral) = (self.series(panel, 0), &mut integrals[panel]);
+            // The integral of T_k is T_(k+1)/(2k + 2) - T_(k-1)/(2k - 2); the coefficient that has no place is below the
+            // tolerance.
+            for k in 1..ORDER {
+                let before = if k == 1 { 2.0 * density[0] } else { density[k - 1] };
+                let after = density.get(k + 1).copied().unwrap_or(0.0);
+                integral[k] = half * (before - after) / (2 * k) as f64;
+            }
+            let low_end: f64 = integral.iter().enumerate().map(|(k, c)| if k % 2 == 0 { *c } else { -c }).sum();
+            let high_end: f64 = integral.iter().sum();
+            if above {
+                integral.iter_mut().for_each(|c| *c = -*c);
+                integral[0] = reached + high_end;
+            } else {
+                integral[0] = reached - low_end;
+            }
+            reached += high_end - low_end;
+        }
+        let mut buffer = [0.0; BLOCK];
+        self.for_each_panel(m, |panel, place, local| {
+            clenshaw(&integrals[panel], local, &mut buffer);
+            for (&place, value) in place.iter().zip(&buffer) {
+                out[place as usize] = value.clamp(0.0, 1.0);
+            }
+        });
+    }
+
     /// Logarithms of densities and their gradient, parameter-major.
     pub(super) fn ln_value_and_gradient(&self, m: &[f64], ln_pdf: &mut [f64], gradient: &mut [f64]) {
         let points = m.len();

@@ -26,6 +26,7 @@ mod mixture;
 mod natural;
 mod panels;
 mod pole_pair;
+mod pole_shape;
 mod relativistic;
 mod resolution;
 mod resolution_slices;
