@@ -51,10 +51,11 @@ fn points(centre: f64, scale: f64, reach: f64, lowest: f64) -> Vec<f64> {
     list
 }
 
-/// The largest of the errors of a slice, relative, where more than the floor (1e-15 of the peak) is wrong.
-fn worst(found: &[f64], exact: &[f64], floor: f64) -> f64 {
-    let error = |(f, e): (&f64, &f64)| if (f - e).abs() <= floor { 0.0 } else { (f / e - 1.0).abs() };
-    found.iter().zip(exact).map(error).fold(0.0, |a, b| if b > a || b.is_nan() { b } else { a })
+/// The largest relative error of a slice, and where, among the points where more than the floor is wrong.
+fn worst(m: &[f64], found: &[f64], exact: &[f64], floor: f64) -> (f64, f64) {
+    let error = |i: usize| if (found[i] - exact[i]).abs() <= floor { 0.0 } else { (found[i] / exact[i] - 1.0).abs() };
+    let place = (0..m.len()).max_by(|&i, &j| error(i).total_cmp(&error(j))).unwrap();
+    (error(place), m[place])
 }
 
 fn check_slices(shape: &LineShape, m: &[f64]) {
@@ -66,8 +67,8 @@ fn check_slices(shape: &LineShape, m: &[f64]) {
     let each = |f: &dyn Fn(f64) -> f64| m.iter().map(|&x| f(x)).collect::<Vec<f64>>();
     let exact = each(&|x| shape.pdf(x));
     let peak = exact.iter().copied().fold(0.0, f64::max);
-    let error = worst(&slice(&|m, out| shape.pdf_slice(m, out)), &exact, 1e-15 * peak);
-    assert!(error < LineShape::GRID_ERROR, "{shape:?}: pdf {error:e}");
+    let (error, x) = worst(m, &slice(&|m, out| shape.pdf_slice(m, out)), &exact, 1e-15 * peak);
+    assert!(error < LineShape::GRID_ERROR, "pdf at {x}: {error:e}, {:e} of the peak: {shape:?}", shape.pdf(x) / peak);
     for (above, what) in [(false, "cdf"), (true, "sf")] {
         let some = &m[..m.len().min(400)];
         let mut found = vec![0.0; some.len()];
@@ -161,8 +162,8 @@ fn extremes() {
                     shape.sf_slice(&m, &mut rows[3]);
                     let exact: Vec<f64> = m.iter().map(|&x| shape.pdf(x)).collect();
                     let peak = exact.iter().copied().fold(0.0, f64::max);
-                    let error = worst(&rows[0], &exact, 1e-15 * peak);
-                    assert!(error < LineShape::GRID_ERROR, "{shape:?}: pdf {error:e}");
+                    let (error, x) = worst(&m, &rows[0], &exact, 1e-15 * peak);
+                    assert!(error < LineShape::GRID_ERROR, "pdf at {x}: {error:e}: {shape:?}");
                     assert!(rows[1].iter().all(|l| l.is_finite()), "{shape:?}: {:?}", rows[1]);
                     assert!(rows[2].windows(2).all(|p| p[0] <= p[1]), "{shape:?}: cdf {:?}", rows[2]);
                     assert!(rows[3].windows(2).all(|p| p[0] >= p[1]), "{shape:?}: sf {:?}", rows[3]);

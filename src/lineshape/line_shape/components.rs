@@ -79,7 +79,7 @@ impl LineShape {
     /// Points at which the density bends most: where the grid begins with a panel's end. `None` for closed forms that
     /// need no grid.
     pub(in crate::lineshape) fn grid_breaks(&self) -> Option<Vec<f64>> {
-        let (Path::Convolved(_), Some(mixture)) = (&self.path, &self.resolution) else { return None };
+        let (Path::Convolved(truth), Some(mixture)) = (&self.path, &self.resolution) else { return None };
         let centre = self.natural.shape()?.peak_guess();
         let mut list = vec![];
         for component in mixture.components() {
@@ -88,6 +88,13 @@ impl LineShape {
             for (join, step) in [(component.low.join(), -low), (component.high.join(), high)] {
                 if join < 39.0 {
                     list.push(centre + component.bias() + step * join);
+                }
+            }
+            // Where the true mass ends the density may fall as steeply as the core, between nodes that see nothing of it.
+            for end in [truth.lowest(), truth.highest()].into_iter().filter(|end| end.is_finite()) {
+                let scale = if self.proportional() { end / self.natural.mass() } else { 1.0 };
+                for t in [0.0, 3.0, 8.0, 20.0, 39.0] {
+                    list.extend([-low * t, high * t].map(|d| end + scale * (component.bias() + d)));
                 }
             }
         }
