@@ -14,7 +14,7 @@
 //! # Rooms
 //!
 //! A module imports only from modules that stand before it in this list: [`problem`], [`numerics`], [`kinematics`], [`lineshape`],
-//! [`fit`], [`detector`], [`process`], [`events`], [`template`], [`fold`], [`files`], [`draw`], [`cli`].
+//! [`fit`], [`detector`], [`process`], [`events`], [`template`], [`fold`], [`shift`], [`files`], [`draw`], [`cli`].
 
 pub mod problem;
 
@@ -35,6 +35,8 @@ pub mod events;
 pub mod template;
 
 pub mod fold;
+
+pub mod shift;
 
 pub mod files;
 

@@ -261,6 +261,27 @@ fn warns_when_no_event_passes() {
     assert_eq!(notes, ["  two-photon: no event of the coarse fold passed the cuts; check them"]);
 }
 
+/// How legs are chosen is said for events of a file only.
+#[test]
+fn says_how_legs_are_chosen() {
+    let directory = tempfile::tempdir().unwrap();
+    let events = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/lhe/x_radiating.lhe.gz");
+    std::fs::copy(events, directory.path().join("truth.lhe.gz")).unwrap();
+    let detector =
+        "name = \"d\"\n[[calorimeter]]\nname = \"e\"\nobject = \"electron\"\neta = [0, 4]\nstochastic = 0.1\n";
+    let study = "name = \"s\"\ndetector = \"detector.toml\"\nprecision = 0.1\n[resonance]\nmasses_gev = [91.188]\n\
+                 events = \"truth.lhe.gz\"\nradiation = { recombination_delta_r = 0.2 }\n\
+                 [[channel]]\nname = \"ee\"\nlegs = [\"electron\", \"electron\"]\npick = \"nearest\"\n\
+                 mass_axis = { low_gev = 20.0, high_gev = 200.0, bins = 60 }\n";
+    write_study(directory.path(), detector, study);
+    let output = peakfold(directory.path(), &["check", "study.toml"]);
+    assert_eq!(output.status.code(), Some(0), "{}", stderr(&output));
+    let words: Vec<String> = stdout(&output).split_whitespace().map(str::to_owned).collect();
+    let said = "legs those that a resonance row decays to, else those nearest to the mass point; leptons with the photons \
+                within a distance of 0.2";
+    assert!(words.join(" ").contains(said), "{}", stdout(&output));
+}
+
 #[test]
 fn names_all_problems_of_both_files_at_once() {
     let directory = tempfile::tempdir().unwrap();

@@ -3,8 +3,8 @@
 
 use nalgebra::{Matrix2, Matrix3, Vector2, Vector3};
 use peakfold::detector::{
-    Calorimeter, CalorimeterRegion, Detector, EtaRange, Object, Tracker, TrackerGeometry, TrackerRegion,
-    TrackerResolution,
+    Calorimeter, CalorimeterRegion, Detector, Efficiency, EfficiencyCell, EfficiencyCurve, EfficiencyRegion, EtaRange,
+    Object, Tracker, TrackerGeometry, TrackerRegion, TrackerResolution,
 };
 
 fn close(found: f64, expected: f64, relative: f64, what: &str) {
@@ -229,6 +229,8 @@ fn regions_are_disjoint_and_the_first_entry_wins() {
         trackers: vec![tracker(Object::Muon, (0.5, 2.4), muon), tracker(Object::Muon, (0.0, 1.0), muon)],
         directions: Vec::new(),
         vertex: None,
+        efficiencies: Vec::new(),
+        covariances: Vec::new(),
     };
     let region =
         |low, high, entries: &[usize]| CalorimeterRegion { eta: EtaRange { low, high }, entries: entries.to_vec() };
@@ -250,4 +252,56 @@ fn regions_are_disjoint_and_the_first_entry_wins() {
     assert_eq!(detector.coverage(Object::Photon), ranges(&[(0.0, 1.4), (1.6, 2.5)]));
     assert_eq!(detector.coverage(Object::Muon), ranges(&[(0.0, 2.4)]));
     assert!(detector.coverage(Object::Electron).is_empty());
+}
+
+#[test]
+fn efficiencies_by_region_and_curve() {
+    let turn_on = |threshold_gev, width_gev, plateau| EfficiencyCurve::TurnOn { threshold_gev, width_gev, plateau };
+    let entry = |object, eta: (f64, f64), curve| Efficiency {
+        name: "entry".into(),
+        object,
+        eta: EtaRange { low: eta.0, high: eta.1 },
+        curve,
+        uncertainties: Vec::new(),
+    };
+    let cell = |pt_gev, eta: (f64, f64), efficiency| EfficiencyCell {
+        pt_gev,
+        eta: EtaRange { low: eta.0, high: eta.1 },
+        efficiency,
+    };
+    let cells = vec![cell((20.0, 40.0), (0.0, 2.0), 0.5), cell((40.0, 1e6), (0.5, 2.0), 0.9)];
+    let detector = Detector {
+        name: "test".into(),
+        calorimeters: Vec::new(),
+        trackers: Vec::new(),
+        directions: Vec::new(),
+        vertex: None,
+        efficiencies: vec![
+            entry(Object::Photon, (1.0, 1.5), turn_on(40.0, 0.0, 0.8)),
+            entry(Object::Photon, (0.0, 2.5), turn_on(30.0, 3.0, 0.96)),
+            entry(Object::Electron, (0.0, f64::INFINITY), EfficiencyCurve::Table(cells)),
+        ],
+        covariances: Vec::new(),
+    };
+    let photon = |pt, eta| detector.efficiency(Object::Photon, pt, eta);
+    // Standard normal distribution function at 0, 1 and -2 (published tables: 0.5, 0.841344746, 0.022750132).
+    close(photon(30.0, 0.0), 0.96 * 0.5, 1e-15, "half of the plateau");
+    close(photon(33.0, 2.0), 0.96 * 0.841344746, 1e-9, "one width above");
+    close(photon(24.0, 0.5), 0.96 * 0.022750132, 1e-7, "two widths below");
+    // A step; the first entry wins; nothing beyond the last.
+    assert_eq!([39.9, 40.1].map(|pt| photon(pt, 1.2)), [0.0, 0.8]);
+    assert_eq!(photon(100.0, 2.5), 0.0);
+    // A leg without entries is found.
+    assert_eq!(detector.efficiency(Object::Muon, 1.0, 0.0), 1.0);
+    // Cells hold their lower ends; 0 outside.
+    let electron = |pt, eta| detector.efficiency(Object::Electron, pt, eta);
+    assert_eq!([19.9, 20.0, 39.9, 40.0].map(|pt| electron(pt, 0.5)), [0.0, 0.5, 0.5, 0.9]);
+    assert_eq!([0.4, 1.9, 2.0].map(|eta| electron(50.0, eta)), [0.0, 0.9, 0.0]);
+    let region = |low, high, entry| EfficiencyRegion { eta: EtaRange { low, high }, entry };
+    assert_eq!(
+        detector.efficiency_regions(Object::Photon),
+        [region(0.0, 1.0, 1), region(1.0, 1.5, 0), region(1.5, 2.5, 1)]
+    );
+    let names: Vec<_> = detector.terms().iter().map(|term| term.key).collect();
+    assert_eq!(names, ["threshold_gev", "width_gev", "plateau", "threshold_gev", "width_gev", "plateau"]);
 }

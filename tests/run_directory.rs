@@ -28,10 +28,13 @@ fn study() -> Study {
             trackers: Vec::new(),
             directions: Vec::new(),
             vertex: None,
+            efficiencies: Vec::new(),
+            covariances: Vec::new(),
         },
         seed: 7,
         precision: 1e-4,
         max_points: 1 << 20,
+        prune_shifts_below: 0.0,
         resonance: Resonance {
             masses_gev: vec![150.0, 180.5],
             width: Width::Gev(0.0),
@@ -39,6 +42,7 @@ fn study() -> Study {
             falloff_power: 0.0,
             source: EventSource::Generated(Production::Spectrum { pt_mean_gev: 40.0, rapidity_sigma: 1.0 }),
             intermediate: Intermediate { mass_gev: 91.188, width_gev: 2.4955 },
+            radiation: None,
         },
         channels: Vec::new(),
     }
@@ -66,6 +70,9 @@ fn template(mass_gev: f64) -> LabelledTemplate {
             acceptance: 0.4,
             acceptance_error: 1.25e-5,
             acceptance_list_error: 0.0,
+            efficiency: 0.8,
+            efficiency_error: 2.5e-6,
+            efficiency_list_error: 0.0,
             lost: 3e-21,
             replicates: vec![replicate(-1e-4), replicate(1e-4)],
             probability,
@@ -93,6 +100,7 @@ fn contents() -> RunContents {
     RunContents {
         record: RunRecord::new(&study(), inputs(), &folds),
         templates: vec![template(150.0), template(180.5)],
+        responses: Vec::new(),
         further: vec![("figures/two-photon.svg".to_owned(), b"<svg/>".to_vec())],
     }
 }

@@ -4,14 +4,14 @@
 use std::path::PathBuf;
 
 use peakfold::detector::{
-    Calorimeter, Detector, Direction, EtaRange, Object, Tail, Tracker, TrackerGeometry, TrackerResolution, Uncertainty,
-    Vertex,
+    Calorimeter, Detector, Direction, Efficiency, EfficiencyCell, EfficiencyCurve, EtaRange, Object, Tail, Tracker,
+    TrackerGeometry, TrackerResolution, Uncertainty, Vertex,
 };
 use peakfold::files::{LoadedStudy, load_detector, load_study};
 use peakfold::problem::Problems;
 use peakfold::process::{
-    Category, Channel, Cuts, Decay, EventSource, Intermediate, MassAxis, Natural, Production, Resonance, ShapeChoice,
-    SpectrumCell, Width,
+    Category, Channel, Cuts, Decay, EventSource, Intermediate, LegChoice, MassAxis, Natural, Production, Resonance,
+    ShapeChoice, SpectrumCell, Width,
 };
 
 const DETECTOR: &str = include_str!("inputs/detector.toml");
@@ -19,6 +19,7 @@ const DETECTOR: &str = include_str!("inputs/detector.toml");
 const STUDY: &str = include_str!("inputs/study.toml");
 
 const SPECTRUM: &str = include_str!("inputs/spectrum.csv");
+const EFFICIENCY: &str = include_str!("inputs/efficiency.csv");
 
 /// A directory with the three files, each as given.
 struct Pair {
@@ -32,6 +33,7 @@ impl Pair {
         write("study.toml", study);
         write("detector.toml", detector);
         write("spectrum.csv", SPECTRUM);
+        write("efficiency.csv", EFFICIENCY);
         // Read as bytes only here.
         write("truth.lhe", "abc");
         Pair { directory }
@@ -140,6 +142,30 @@ fn expected_detector() -> Detector {
             spread_wrong_mm: 45.0,
             uncertainties: vec![uncertainty("right_choice", 0.02, Some("vertex"))],
         }),
+        efficiencies: vec![
+            Efficiency {
+                name: "photon-efficiency".into(),
+                object: Object::Photon,
+                eta: eta(0.0, f64::INFINITY),
+                curve: EfficiencyCurve::TurnOn { threshold_gev: 30.0, width_gev: 3.0, plateau: 0.97 },
+                uncertainties: vec![
+                    uncertainty("threshold_gev", 0.5, None),
+                    uncertainty("plateau", 0.01, Some("photon-quality")),
+                ],
+            },
+            Efficiency {
+                name: "electron-trigger".into(),
+                object: Object::Electron,
+                eta: eta(0.0, 1.4),
+                curve: EfficiencyCurve::Table(vec![
+                    EfficiencyCell { pt_gev: (20.0, 40.0), eta: eta(0.0, 1.4), efficiency: 0.8 },
+                    EfficiencyCell { pt_gev: (40.0, 1e6), eta: eta(0.0, 0.8), efficiency: 0.95 },
+                    EfficiencyCell { pt_gev: (40.0, 1e6), eta: eta(0.8, 1.4), efficiency: 0.9 },
+                ]),
+                uncertainties: Vec::new(),
+            },
+        ],
+        covariances: Vec::new(),
     }
 }
 
@@ -159,17 +185,20 @@ fn every_key_of_a_good_pair() {
         falloff_power: 4.0,
         source: EventSource::Generated(Production::Table(vec![cell((0.0, 20.0), 3.0), cell((20.0, 50.5), 0.5)])),
         intermediate: Intermediate { mass_gev: 80.0, width_gev: 2.0 },
+        radiation: None,
     };
     assert_eq!(study.resonance, resonance);
     let photons = Channel {
         name: "two-photon".into(),
         decay: Decay::Direct(vec![Object::Photon; 2]),
+        choice: LegChoice::default(),
         cuts: Cuts {
             max_abs_eta: Some(1.4),
             gap_abs_eta: Some(eta(0.4, 0.5)),
             min_pt_gev: vec![30.0],
             min_pt_over_mass: vec![0.35, 0.25],
         },
+        min_efficient_legs: None,
         axis: MassAxis { low: 0.8, high: 1.2, bins: 200, relative: true },
         shape: ShapeChoice::GaussExp,
         categories: vec![
@@ -180,7 +209,9 @@ fn every_key_of_a_good_pair() {
     let mixed = Channel {
         name: "mixed".into(),
         decay: Decay::Cascade([[Object::Electron; 2], [Object::Muon; 2]]),
+        choice: LegChoice::default(),
         cuts: Cuts::default(),
+        min_efficient_legs: Some(3),
         axis: MassAxis { low: 100.0, high: 300.0, bins: 100, relative: false },
         shape: ShapeChoice::DoubleCrystalBall,
         categories: vec![Category { name: "all".into(), max_abs_eta: None }],
@@ -189,7 +220,8 @@ fn every_key_of_a_good_pair() {
     let names: Vec<_> = inputs.iter().map(|input| input.path.clone()).collect();
     assert_eq!(
         names,
-        ["study.toml", "detector.toml", "spectrum.csv"].map(|name| pair.path(name).display().to_string())
+        ["study.toml", "detector.toml", "efficiency.csv", "spectrum.csv"]
+            .map(|name| pair.path(name).display().to_string())
     );
 }
 
@@ -218,6 +250,7 @@ mass_axis = { low_gev = 100.0, high_gev = 200.0, bins = 10 }
         falloff_power: 0.0,
         source: EventSource::File(pair.path("truth.lhe")),
         intermediate: Intermediate { mass_gev: 91.188, width_gev: 2.4955 },
+        radiation: None,
     };
     assert_eq!(study.resonance, resonance);
     // The digest of "abc": FIPS 180-2, appendix B.1.

@@ -5,10 +5,12 @@ use std::path::{Path, PathBuf};
 
 use peakfold::files::{LoadedStudy, load_study};
 use peakfold::problem::{Problem, Problems};
+use peakfold::process::{Ancestry, LegChoice, Pairing, Pick, Radiation};
 
 const DETECTOR: &str = include_str!("inputs/detector.toml");
 const STUDY: &str = include_str!("inputs/study.toml");
 const SPECTRUM: &str = include_str!("inputs/spectrum.csv");
+const EFFICIENCY: &str = include_str!("inputs/efficiency.csv");
 
 /// A directory with the three files, each as given.
 struct Pair {
@@ -22,6 +24,7 @@ impl Pair {
         write("study.toml", study);
         write("detector.toml", detector);
         write("spectrum.csv", SPECTRUM);
+        write("efficiency.csv", EFFICIENCY);
         // Read as bytes only here.
         write("truth.lhe", "abc");
         Pair { directory }
@@ -92,10 +95,28 @@ const BAD: &[Case] = &[
     (D, "{ right_choice = \"vertex\" }", "{ spread_right_mm = \"vertex\" }", "share = { spread", "vertex.share.spread_right_mm", &["nothing to share", "no uncertainty"]),
     (D, "share.scale = \"em-scale\"", "share.scale = \"a:b\"", "a:b", "calorimeter.electron-barrel.share.scale", &["colons"]),
     (D, "{ geometry = { radiation_lengths = 0.02 } }", "{ scattering = 0.1 }", "scattering = 0.1", "tracker.electron-track.uncertainty.scattering", &["no such number"]),
+    // Efficiencies.
+    (D, "threshold_gev = 30.0", "threshold_gev = -1", "threshold_gev = -1", "efficiency[1].threshold_gev", &["found -1", "0 or more"]),
+    (D, "width_gev = 3.0", "width_gev = -3", "width_gev", "efficiency[1].width_gev", &["found -3", "0 or more"]),
+    (D, "plateau = 0.97", "plateau = 1.01", "plateau = 1.01", "efficiency[1].plateau", &["found 1.01", "larger than 0, up to 1"]),
+    (D, "plateau = 0.97", "plateau = 0", "plateau = 0\n", "efficiency[1].plateau", &["found 0", "larger than 0"]),
+    (D, "plateau = 0.97\n", "", "[[efficiency]]", "efficiency[1].plateau", &["missing"]),
+    (D, "plateau = 0.97", "plateau = 0.97\nplatau = 1", "platau", "efficiency[1].platau", &["did you mean `plateau`?"]),
+    (D, "{ threshold_gev = 0.5", "{ threshold = 0.5", "uncertainty = { threshold", "efficiency[1].uncertainty.threshold", &["did you mean `threshold_gev`?"]),
+    (D, "name = \"electron-trigger\"", "name = \"photon-efficiency\"", "[[efficiency]]\nname = ", "efficiency.photon-efficiency.name", &["names another entry", "its own `name`"]),
+    (D, "table = \"efficiency.csv\"", "table = \"efficiency.csv\"\nplateau = 1.0", "plateau = 1.0", "efficiency.electron-trigger.plateau", &["not both"]),
+    (D, "table = \"efficiency.csv\"", "table = \"efficiency.csv\"\nuncertainty = { plateau = 0.1 }", "uncertainty = { plateau = 0.1 }", "efficiency.electron-trigger.uncertainty", &["no number that could move"]),
+    (D, "table = \"efficiency.csv\"", "table = \"gone.csv\"", "gone", "efficiency.electron-trigger.table", &["there is no file"]),
+    (D, "eta = [0.0, 1.4]\ntable", "eta = [0.0, 1.2]\ntable", "[[efficiency]]\nname = ", "efficiency.electron-trigger.eta", &["the electron at |eta| 1.2 to 1.4", "add an entry"]),
+    (S, "min_efficient_legs = 3", "min_efficient_legs = 5", "min_efficient_legs", "channel.mixed.min_efficient_legs", &["found 5", "from 1 to 4"]),
+    (S, "min_efficient_legs = 3", "min_efficient_legs = 0", "min_efficient_legs", "channel.mixed.min_efficient_legs", &["found 0", "from 1 to 4"]),
     // Not yet.
     (D, "stochastic = 0.12", "stochastic = 0.12\ncalibration = \"terms.toml\"", "calibration", "calorimeter.photon-converted.calibration", &["not available in this version yet"]),
-    (D, "[vertex]", "[[efficiency]]\nobject = \"photon\"\n[vertex]", "[[efficiency]]", "efficiency", &["not available in this version yet"]),
     (S, "falloff_power = 4.0", "radiation = { recombination_delta_r = 0.1 }", "radiation", "resonance.radiation", &["not available in this version yet"]),
+    // Generated legs are known.
+    (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\"]\npick = \"nearest\"", "pick", "channel.two-photon.pick", &["only with `events`", "remove it"]),
+    (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\"]\nancestry = \"ignore\"", "ancestry", "channel.two-photon.ancestry", &["only with `events`", "remove it"]),
+    (S, "name = \"mixed\"", "name = \"mixed\"\npairing = \"nearest-sum\"", "pairing", "channel.mixed.pairing", &["only with `events`", "remove it"]),
     (S, "production = { table = \"spectrum.csv\" }", "events = \"t.csv.gz\"", "t.csv.gz", "resonance.events", &["not available in this version yet"]),
     // The study's own numbers.
     (S, "precision = 1e-3", "precision = 0.0", "precision", "precision", &["found 0.0", "larger than 0"]),
@@ -177,6 +198,59 @@ fn bad_inputs_name_line_key_and_what_to_do() {
     assert!(faults.is_empty(), "{}", faults.join("\n"));
 }
 
+/// Keys of a study that reads events: what is typed, and what is refused.
+#[test]
+fn choice_of_legs_and_radiation() {
+    let source = "production = { table = \"spectrum.csv\" }";
+    let base = STUDY
+        .replace("[150, 180.0, 210.0]", "[150]")
+        .replace(source, "events = \"truth.lhe\"\nradiation = { recombination_delta_r = 0.1 }")
+        .replace("name = \"two-photon\"", "name = \"two-photon\"\npick = \"nearest\"\nancestry = \"ignore\"")
+        .replace("name = \"mixed\"", "name = \"mixed\"\npairing = \"nearest-sum\"\nancestry = \"require\"");
+    let study = Pair::new(&base, DETECTOR).load().unwrap().study;
+    assert_eq!(study.resonance.radiation, Some(Radiation { recombination_delta_r: 0.1 }));
+    let choice = |ancestry, pick, pairing| LegChoice { ancestry, pick, pairing };
+    assert_eq!(study.channels[0].choice, choice(Ancestry::Ignore, Pick::Nearest, Pairing::NearestPair));
+    assert_eq!(study.channels[1].choice, choice(Ancestry::Require, Pick::Hardest, Pairing::NearestSum));
+    let cases: [(&str, &str, &str, &[&str]); 9] = [
+        ("\"nearest\"", "\"neerest\"", "channel.two-photon.pick", &["did you mean `nearest`?", "`hardest`"]),
+        ("\"ignore\"", "\"no\"", "channel.two-photon.ancestry", &["`prefer`, `ignore`, `require`"]),
+        ("\"nearest-sum\"", "\"sum\"", "channel.mixed.pairing", &["`nearest-pair`", "`nearest-sum`"]),
+        ("pick = ", "pairing = \"nearest-pair\"\npick = ", "channel.two-photon.pairing", &["only with `via`"]),
+        (
+            "legs = [\"photon\", ",
+            "legs = [\"photon\", \"photon\", ",
+            "channel.two-photon.pick",
+            &["for 3 legs", "\"hardest\""],
+        ),
+        (
+            "delta_r = 0.1",
+            "delta_r = 0.0",
+            "resonance.radiation.recombination_delta_r",
+            &["found 0.0", "larger than 0, up to 2"],
+        ),
+        (
+            "delta_r = 0.1",
+            "delta_r = 10",
+            "resonance.radiation.recombination_delta_r",
+            &["found 10", "larger than 0, up to 2"],
+        ),
+        (
+            "recombination_delta_r",
+            "delta_r",
+            "resonance.radiation.delta_r",
+            &["unknown key", "`recombination_delta_r`"],
+        ),
+        ("{ recombination_delta_r = 0.1 }", "{}", "resonance.radiation.recombination_delta_r", &["missing"]),
+    ];
+    for (from, to, key, parts) in cases {
+        assert!(base.contains(from), "{from}");
+        let problems = Pair::new(&base.replacen(from, to, 1), DETECTOR).problems();
+        let found = problems.iter().find(|p| p.key.as_deref() == Some(key)).unwrap_or_else(|| panic!("{problems:?}"));
+        assert!(found.line.is_some() && parts.iter().all(|part| found.message.contains(part)), "{found}");
+    }
+}
+
 #[test]
 fn problems_of_all_files_are_reported_together() {
     let study = STUDY.replace("seed = 20261", "sed = 20261").replace("bins = 100 ", "bins = 0 ");
@@ -221,6 +295,75 @@ fn spectrum_without_weight_or_with_other_columns() {
 }
 
 #[test]
+fn efficiency_tables() {
+    let pair = Pair::new(STUDY, DETECTOR);
+    let found = |text: &str| -> Vec<(Option<usize>, String, String)> {
+        std::fs::write(pair.path("efficiency.csv"), text).unwrap();
+        let problems = pair.problems();
+        assert!(problems.iter().all(|problem| problem.file == pair.path("efficiency.csv")), "{problems:?}");
+        problems.into_iter().map(|p| (p.line, p.key.unwrap_or_default(), p.message)).collect()
+    };
+    // Cells that touch do not overlap; those of lines 6 and 8 reach into others.
+    let lines = found(&format!("{EFFICIENCY}30,50,0.9,1.0,0.5\n0,20,0,1.4,0.1\n25,1e7,1.3,1.5,0\n"));
+    let (places, messages): (Vec<_>, Vec<_>) = lines.into_iter().map(|(line, key, m)| ((line, key), m)).unzip();
+    assert_eq!(places, [(Some(6), String::new()), (Some(8), String::new())]);
+    assert!(messages[0].contains("overlaps that of line 3") && messages[1].contains("line 3"), "{messages:?}");
+    // Without the columns of |eta| all cells are everywhere.
+    let lines = found("pt_low_gev,pt_high_gev,efficiency\n0,20,0.5\n19,30,0.5\n");
+    assert!(lines.len() == 1 && lines[0].0 == Some(3), "{lines:?}");
+
+    let header = "pt_low_gev,pt_high_gev,abs_eta_low,abs_eta_high,efficiency\n";
+    let rows = "-1,20,0,1,1.5\n30,20,1,1,0.5\n0,10,0,21,x\n0,10,0.5\n";
+    let places: Vec<_> =
+        found(&format!("{header}{rows}")).into_iter().map(|(line, key, _)| (line.unwrap(), key)).collect();
+    let all = "pt_low_gev,pt_high_gev,efficiency,abs_eta_low,abs_eta_high";
+    let expected = [(2, "pt_low_gev"), (2, "efficiency"), (3, "pt_low_gev"), (3, "abs_eta_low")];
+    let expected = expected.into_iter().chain([(4, "efficiency"), (4, "abs_eta_high"), (5, all)]);
+    assert_eq!(places, expected.map(|(line, key)| (line, key.to_owned())).collect::<Vec<_>>());
+
+    for (text, part) in [
+        (
+            "pt_low_gev,pt_high_gev\n0,1\n",
+            "must be pt_low_gev,pt_high_gev,efficiency,abs_eta_low,abs_eta_high or pt_low_gev,pt_high_gev,efficiency",
+        ),
+        ("pt_low_gev,pt_high_gev,efficiency,abs_eta_low\n0,1,1,0\n", "found the columns"),
+        ("pt_low_gev,pt_high_gev,abs_eta_low\n0,1,1\n", "found the columns"),
+        ("pt_low_gev,pt_high_gev,efficiency,efficiency\n0,1,1,1\n", "found the columns"),
+        ("pt_low_gev,pt_high_gev,efficiency\n", "no cell has an efficiency larger than 0"),
+        ("pt_low_gev,pt_high_gev,efficiency\n0,1e6,0\n", "no cell has an efficiency larger than 0"),
+        ("", "found the columns"),
+    ] {
+        let problems = found(text);
+        assert!(problems.len() == 1 && problems[0].2.contains(part), "{text:?}: {problems:?}");
+    }
+    let mut many = String::from("pt_low_gev,pt_high_gev,efficiency\n");
+    (0..4001).for_each(|i| many.push_str(&format!("{i},{},1\n", i + 1)));
+    assert!(found(&many)[0].2.contains("at most 4000"));
+}
+
+#[test]
+fn efficiencies_that_are_likely_not_meant() {
+    let warnings = |study: &str, detector: &str, table: &str| -> Vec<String> {
+        let pair = Pair::new(study, detector);
+        std::fs::write(pair.path("efficiency.csv"), table).unwrap();
+        let warnings = pair.load().unwrap().warnings;
+        warnings.iter().map(|w| format!("{}: {}", w.key.as_deref().unwrap_or(""), w.message)).collect()
+    };
+    assert_eq!(warnings(STUDY, DETECTOR, EFFICIENCY), [""; 0]);
+    let one = |found: Vec<String>, key: &str, part: &str| {
+        assert!(found.len() == 1 && found[0].starts_with(key) && found[0].contains(part), "{found:?}");
+    };
+    // The two muons have no efficiency.
+    let study = STUDY.replace("min_efficient_legs = 3", "min_efficient_legs = 2");
+    one(warnings(&study, DETECTOR, EFFICIENCY), "channel.mixed.min_efficient_legs: ", "for 2 of the legs");
+    let table = EFFICIENCY.replace("0.8, 1.4, 0.9", "0.8, 1.3, 0.9").replace("0,1.4,0.8", "0,1.3,0.8");
+    one(warnings(STUDY, DETECTOR, &table), "efficiency.electron-trigger.table: ", "no cell at |eta| 1.3 to 1.4");
+    let hidden =
+        "[[efficiency]]\nname = \"late\"\nobject = \"photon\"\nthreshold_gev = 1\nwidth_gev = 0\nplateau = 1\n";
+    one(warnings(STUDY, &format!("{DETECTOR}\n{hidden}"), EFFICIENCY), "efficiency.late: ", "never used");
+}
+
+#[test]
 fn files_that_cannot_be_read() {
     let pair = Pair::new(STUDY, DETECTOR);
     let of = |path: &Path| load_study(path).expect_err("refused").0.remove(0);
@@ -244,7 +387,9 @@ fn files_that_cannot_be_read() {
 fn a_file_cut_anywhere_is_no_panic() {
     let pair = Pair::new(STUDY, DETECTOR);
     let mut refused = 0;
-    for (name, text) in [("study.toml", STUDY), ("detector.toml", DETECTOR), ("spectrum.csv", SPECTRUM)] {
+    for (name, text) in
+        [("study.toml", STUDY), ("detector.toml", DETECTOR), ("spectrum.csv", SPECTRUM), ("efficiency.csv", EFFICIENCY)]
+    {
         for end in (0..text.len()).step_by(3) {
             std::fs::write(pair.path(name), &text[..end]).unwrap();
             if let Err(problems) = pair.load() {

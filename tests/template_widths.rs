@@ -19,6 +19,9 @@ fn template(edges: Vec<f64>, cdf: &dyn Fn(f64) -> f64) -> Template {
         acceptance: 1.0,
         acceptance_error: 0.0,
         acceptance_list_error: 0.0,
+        efficiency: 1.0,
+        efficiency_error: 0.0,
+        efficiency_list_error: 0.0,
         lost: 0.0,
         replicates: Vec::new(),
     }

@@ -1,15 +1,21 @@
 //! The detector as it was calibrated or proposed: what each region resolves, and how well that is known.
 
 mod calorimeter;
+mod covariance;
+mod efficiency;
 mod geometry;
 mod object;
 mod regions;
+mod terms;
 mod tracker;
 
 pub use calorimeter::{Calorimeter, Tail};
+pub use covariance::TermCovariance;
+pub use efficiency::{Efficiency, EfficiencyCell, EfficiencyCurve, EfficiencyRegion, LEAST_TURN_ON_WIDTH_GEV};
 pub use geometry::TrackerGeometry;
 pub use object::Object;
 pub use regions::{CalorimeterRegion, TrackerRegion};
+pub use terms::{Allowed, Part, Term};
 pub use tracker::{Tracker, TrackerResolution};
 
 /// A half-open range of absolute pseudorapidity, `low <= |eta| < high`.
@@ -86,4 +92,9 @@ pub struct Detector {
     pub directions: Vec<Direction>,
     /// The vertex; exact without.
     pub vertex: Option<Vertex>,
+    /// Efficiencies, in the order of the file: the first whose object and region match a leg wins; 1 for an object
+    /// without any.
+    pub efficiencies: Vec<Efficiency>,
+    /// Joint uncertainties of several numbers, as a calibration gives them.
+    pub covariances: Vec<TermCovariance>,
 }

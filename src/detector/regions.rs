@@ -69,7 +69,7 @@ impl Detector {
 
 /// Cuts the ranges at all their bounds and gives each piece to the first entry that contains it; neighbouring pieces of
 /// one entry become one again.
-fn winners(entries: &[(usize, EtaRange)]) -> Vec<(EtaRange, usize)> {
+pub(super) fn winners(entries: &[(usize, EtaRange)]) -> Vec<(EtaRange, usize)> {
     let mut bounds: Vec<f64> = entries.iter().flat_map(|(_, eta)| [eta.low, eta.high]).collect();
     bounds.sort_by(f64::total_cmp);
     bounds.dedup();

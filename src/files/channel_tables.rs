@@ -4,7 +4,7 @@ use super::domain::{ABS_ETA, Domain, NOT_NEGATIVE};
 use super::reader::{Item, Section};
 use crate::detector::{EtaRange, Object};
 use crate::kinematics::MAX_LEGS;
-use crate::process::{Category, Channel, Cuts, Decay, MassAxis, ShapeChoice};
+use crate::process::{Ancestry, Category, Channel, Cuts, Decay, LegChoice, MassAxis, Pairing, Pick, ShapeChoice};
 
 const SHAPES: [(&str, ShapeChoice); 4] = [
     ("gaussian", ShapeChoice::Gaussian),
@@ -12,6 +12,11 @@ const SHAPES: [(&str, ShapeChoice); 4] = [
     ("double-crystal-ball", ShapeChoice::DoubleCrystalBall),
     ("gauss-exp", ShapeChoice::GaussExp),
 ];
+
+const ANCESTRY: [(&str, Ancestry); 3] =
+    [("prefer", Ancestry::Prefer), ("ignore", Ancestry::Ignore), ("require", Ancestry::Require)];
+const PICKS: [(&str, Pick); 2] = [("hardest", Pick::Hardest), ("nearest", Pick::Nearest)];
+const PAIRINGS: [(&str, Pairing); 2] = [("nearest-pair", Pairing::NearestPair), ("nearest-sum", Pairing::NearestSum)];
 
 /// Most bins of an axis.
 const MOST_BINS: u64 = 100_000;
@@ -24,9 +29,10 @@ const LARGEST_ABS_ETA: Domain =
 #[derive(Debug)]
 pub(super) struct PlacedChannel {
     pub channel: Channel,
-    /// Where its decay and its axis stand.
+    /// Where its decay, its axis and `min_efficient_legs` stand.
     pub decay_line: usize,
     pub axis_line: usize,
+    pub efficient_legs_line: usize,
     /// Its name in keys, `channel.two-photon`, and the key of its decay.
     pub path: String,
     pub decay_key: &'static str,
@@ -63,6 +69,9 @@ fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> O
         min_pt_gev: per_leg(section.optional("min_pt_gev"), legs),
         min_pt_over_mass: per_leg(section.optional("min_pt_over_mass"), legs),
     };
+    let min_efficient_legs =
+        section.optional("min_efficient_legs").and_then(|item| item.whole(1, legs as u64)).map(|count| count as usize);
+    let choice = choice(&mut section, decay.as_ref(), generated);
     let axis = axis(&mut section);
     let shape = section.optional("shape").and_then(|item| item.word(&SHAPES));
     let categories = categories(section.tables("category"));
@@ -70,16 +79,19 @@ fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> O
     let decay_key = if matches!(decay, Some(Decay::Cascade(_))) { "via" } else { "legs" };
     let decay_line = section.line_of(decay_key);
     let axis_line = section.line_of("mass_axis");
+    let efficient_legs_line = section.line_of("min_efficient_legs");
     section.finish();
     let channel = Channel {
         name,
         decay: decay?,
+        choice,
         cuts,
+        min_efficient_legs,
         axis: axis?,
         shape: shape.unwrap_or(ShapeChoice::DoubleCrystalBall),
         categories,
     };
-    Some(PlacedChannel { channel, decay_line, axis_line, path, decay_key })
+    Some(PlacedChannel { channel, decay_line, axis_line, path, decay_key, efficient_legs_line })
 }
 
 fn decay(section: &mut Section<'_>, generated: Option<bool>) -> Option<Decay> {
@@ -108,6 +120,39 @@ fn decay(section: &mut Section<'_>, generated: Option<bool>) -> Option<Decay> {
             section.problem("legs", "missing; give the legs, as [\"photon\", \"photon\"], or `via` for X -> V V");
             None
         }
+    }
+}
+
+/// How legs are chosen from an event file; of generated events they are known.
+fn choice(section: &mut Section<'_>, decay: Option<&Decay>, generated: Option<bool>) -> LegChoice {
+    let from_file = |item: &Item<'_>| {
+        if generated == Some(true) {
+            item.problem("only with `events`: the legs of generated events are known; remove it");
+        }
+        generated != Some(true)
+    };
+    let ancestry = section.optional("ancestry").filter(from_file).and_then(|item| item.word(&ANCESTRY));
+    let pick = section.optional("pick").filter(from_file).and_then(|item| {
+        let pick = item.word(&PICKS);
+        match decay {
+            Some(Decay::Direct(legs)) if pick == Some(Pick::Nearest) && legs.len() != 2 => {
+                let count = legs.len();
+                item.problem(format!("found \"nearest\" for {count} legs, must be \"hardest\" unless there are two"));
+            }
+            _ => {}
+        }
+        pick
+    });
+    let pairing = section.optional("pairing").filter(from_file).and_then(|item| {
+        if matches!(decay, Some(Decay::Direct(_))) {
+            item.problem("only with `via`: these legs form no pairs; remove it");
+        }
+        item.word(&PAIRINGS)
+    });
+    LegChoice {
+        ancestry: ancestry.unwrap_or_default(),
+        pick: pick.unwrap_or_default(),
+        pairing: pairing.unwrap_or_default(),
     }
 }
 

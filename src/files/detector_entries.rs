@@ -1,10 +1,13 @@
 //! The entries of a detector file, one by one.
 
-use super::domain::{ABOVE_MINUS_ONE, ABOVE_ONE, ABS_ETA, NOT_NEGATIVE, POSITIVE, SHARE};
+use super::domain::{ABOVE_MINUS_ONE, ABOVE_ONE, ABS_ETA, NOT_NEGATIVE, PLATEAU, POSITIVE, SHARE};
+use super::efficiency_file;
 use super::reader::Section;
+use super::resonance_table::{OtherFiles, file_name};
 use super::uncertainties;
 use crate::detector::{
-    Calorimeter, Direction, EtaRange, Object, Tail, Tracker, TrackerGeometry, TrackerResolution, Vertex,
+    Calorimeter, Direction, Efficiency, EfficiencyCurve, EtaRange, Object, Tail, Tracker, TrackerGeometry,
+    TrackerResolution, Vertex,
 };
 
 /// Most points of a tracker; more is a slip of the pen.
@@ -87,7 +90,6 @@ pub(super) fn tracker(mut entry: Section<'_>) -> Option<Tracker> {
             "geometry.field_t",
             "geometry.inner_radius_m",
             "geometry.lever_arm_m",
-            "geometry.points",
             "geometry.point_resolution_um",
             "geometry.radiation_lengths",
         ],
@@ -148,6 +150,47 @@ pub(super) fn vertex(mut entry: Section<'_>) -> Vertex {
         spread_wrong_mm,
         uncertainties,
     }
+}
+
+/// Reads an `[[efficiency]]`; `None` when it is not known which legs it concerns, or how often it finds them.
+pub(super) fn efficiency(mut entry: Section<'_>, files: &mut OtherFiles) -> Option<Efficiency> {
+    const NUMBERS: [&str; 3] = ["threshold_gev", "width_gev", "plateau"];
+    let object = object(&mut entry, |_| true);
+    let name = match entry.optional("name") {
+        Some(item) => item.name(),
+        None => object.map_or_else(String::new, |object| format!("{object}-efficiency")),
+    };
+    let eta = match entry.optional("eta") {
+        Some(_) => eta(&mut entry),
+        None => Some(EtaRange { low: 0.0, high: f64::INFINITY }),
+    };
+    let (curve, uncertainties) = match entry.optional("table") {
+        Some(item) => {
+            for key in NUMBERS {
+                if entry.optional(key).is_some() {
+                    entry.problem(key, "the entry has a `table` too; give the table or the three numbers, not both");
+                }
+            }
+            for key in ["uncertainty", "share"] {
+                if entry.optional(key).is_some() {
+                    entry.problem(key, "a table has no number that could move; remove this, or give the three numbers");
+                }
+            }
+            let path = file_name(&item).map(|named| entry.sheet.resolve(named));
+            let cells = path.and_then(|path| files.take(&item, efficiency_file::read(&path)));
+            (cells.map(EfficiencyCurve::Table), Vec::new())
+        }
+        None => {
+            let curve = EfficiencyCurve::TurnOn {
+                threshold_gev: entry.number("threshold_gev", &NOT_NEGATIVE),
+                width_gev: entry.number("width_gev", &NOT_NEGATIVE),
+                plateau: entry.number("plateau", &PLATEAU),
+            };
+            (Some(curve), uncertainties::read(&mut entry, &NUMBERS))
+        }
+    };
+    entry.finish();
+    Some(Efficiency { name, object: object?, eta: eta?, curve: curve?, uncertainties })
 }
 
 fn object(entry: &mut Section<'_>, measurable: fn(Object) -> bool) -> Option<Object> {

@@ -4,10 +4,13 @@ use std::path::Path;
 
 use super::detector_entries as entries;
 use super::reader::Section;
+use super::resonance_table::OtherFiles;
 use super::source::{InputText, Sheet, Unreadable, read_text};
+use super::study_checks::{ranges, without};
 use super::{FileDigest, LoadedDetector};
-use crate::detector::{Calorimeter, Detector, EtaRange, Object};
+use crate::detector::{Calorimeter, Detector, EfficiencyCurve, EtaRange, Object};
 use crate::problem::{Problem, Problems};
+use crate::shift::nuisances;
 
 /// How far from 1 the fractions of one region may add up.
 const FRACTION_TOLERANCE: f64 = 1e-9;
@@ -17,10 +20,21 @@ const FRACTION_TOLERANCE: f64 = 1e-9;
 /// # Errors
 /// Every problem of the file, not only the first.
 pub fn load_detector(path: &Path) -> Result<LoadedDetector, Problems> {
-    let reading = read(path).map_err(|unreadable| unreadable.of_file(path))?;
+    loaded(read(path).map_err(|unreadable| unreadable.of_file(path))?)
+}
+
+/// Reads a detector from its text; `path` stands in messages.
+///
+/// # Errors
+/// As [`load_detector`].
+pub fn parse_detector(path: &Path, text: &str) -> Result<LoadedDetector, Problems> {
+    loaded(of_text(path, InputText::of_memory(path, text)))
+}
+
+fn loaded(reading: DetectorReading) -> Result<LoadedDetector, Problems> {
     match reading.detector {
         Some(detector) if reading.problems.is_empty() => {
-            Ok(LoadedDetector { detector, input: reading.input, warnings: reading.warnings })
+            Ok(LoadedDetector { detector, inputs: reading.inputs, warnings: reading.warnings })
         }
         _ => Err(Problems(reading.problems)),
     }
@@ -32,20 +46,27 @@ pub(super) struct DetectorReading {
     /// What could be read, for further checks even where there are problems; `None` where some entry's object or region
     /// is not known.
     pub detector: Option<Detector>,
-    pub input: FileDigest,
+    /// The file itself, then its tables.
+    pub inputs: Vec<FileDigest>,
     pub problems: Vec<Problem>,
     pub warnings: Vec<Problem>,
 }
 
 pub(super) fn read(path: &Path) -> Result<DetectorReading, Unreadable> {
-    let InputText { text, input } = read_text(path)?;
+    Ok(of_text(path, read_text(path)?))
+}
+
+fn of_text(path: &Path, InputText { text, input }: InputText) -> DetectorReading {
     let sheet = Sheet::new(path, &text);
+    let mut tables = OtherFiles::default();
     let detector = sheet.parse(&text).and_then(|table| {
         let root = Section::new(&sheet, 1, String::new(), table.get_ref());
-        detector(root)
+        detector(root, &mut tables)
     });
-    let (problems, warnings) = sheet.into_findings();
-    Ok(DetectorReading { detector, input, problems, warnings })
+    let (mut problems, warnings) = sheet.into_findings();
+    problems.append(&mut tables.problems);
+    let inputs = std::iter::once(input).chain(tables.inputs).collect();
+    DetectorReading { detector, inputs, problems, warnings }
 }
 
 /// An entry as it was read, with its line for later messages.
@@ -54,14 +75,15 @@ struct Placed<T> {
     entry: T,
 }
 
-fn detector(mut root: Section<'_>) -> Option<Detector> {
+fn detector(mut root: Section<'_>, tables: &mut OtherFiles) -> Option<Detector> {
     let sheet = root.sheet;
     let name = root.title("name");
-    root.not_yet("efficiency");
     let (calorimeters, calorimeters_whole) = placed(root.tables("calorimeter"), entries::calorimeter);
     let (trackers, trackers_whole) = placed(root.tables("tracker"), entries::tracker);
     let (directions, _) = placed(root.tables("direction"), entries::direction);
     let vertex = root.table("vertex").map(entries::vertex);
+    let (efficiencies, efficiencies_whole) =
+        placed(root.tables("efficiency"), |section| entries::efficiency(section, tables));
     if root.optional("calorimeter").is_none() && root.optional("tracker").is_none() {
         root.problem("calorimeter", "neither [[calorimeter]] nor [[tracker]] is there; give at least one entry");
     }
@@ -72,25 +94,35 @@ fn detector(mut root: Section<'_>) -> Option<Detector> {
         calorimeters
             .iter()
             .map(|placed| (placed.line, "calorimeter", placed.entry.name.as_str()))
-            .chain(trackers.iter().map(|placed| (placed.line, "tracker", placed.entry.name.as_str()))),
+            .chain(trackers.iter().map(|placed| (placed.line, "tracker", placed.entry.name.as_str())))
+            .chain(efficiencies.iter().map(|placed| (placed.line, "efficiency", placed.entry.name.as_str()))),
     );
     one_direction_an_object(sheet, directions.iter().map(|placed| (placed.line, placed.entry.object)));
     fractions(sheet, &calorimeters);
-    let lines = (lines(&calorimeters), lines(&trackers));
+    let lines =
+        Lines { calorimeters: lines(&calorimeters), trackers: lines(&trackers), efficiencies: lines(&efficiencies) };
     let detector = Detector {
         name,
         calorimeters: calorimeters.into_iter().map(|placed| placed.entry).collect(),
         trackers: trackers.into_iter().map(|placed| placed.entry).collect(),
         directions: directions.into_iter().map(|placed| placed.entry).collect(),
         vertex,
+        efficiencies: efficiencies.into_iter().map(|placed| placed.entry).collect(),
+        covariances: Vec::new(),
     };
-    warn_of_hidden_entries(sheet, &detector, &lines.0, &lines.1);
+    if let Err(error) = nuisances(&detector) {
+        root.problem("share", error.to_string());
+    }
+    warn_of_hidden_entries(sheet, &detector, &lines);
+    if whole && efficiencies_whole {
+        efficiency_holes(sheet, &detector, &lines.efficiencies);
+    }
     root.finish();
     whole.then_some(detector)
 }
 
 /// The entries that could be read, and whether all could.
-fn placed<'a, T>(sections: Vec<Section<'a>>, read: fn(Section<'a>) -> Option<T>) -> (Vec<Placed<T>>, bool) {
+fn placed<'a, T>(sections: Vec<Section<'a>>, mut read: impl FnMut(Section<'a>) -> Option<T>) -> (Vec<Placed<T>>, bool) {
     let count = sections.len();
     let entries: Vec<Placed<T>> = sections
         .into_iter()
@@ -101,6 +133,13 @@ fn placed<'a, T>(sections: Vec<Section<'a>>, read: fn(Section<'a>) -> Option<T>)
         .collect();
     let whole = entries.len() == count;
     (entries, whole)
+}
+
+/// Where the entries stand.
+struct Lines {
+    calorimeters: Vec<usize>,
+    trackers: Vec<usize>,
+    efficiencies: Vec<usize>,
 }
 
 fn lines<T>(entries: &[Placed<T>]) -> Vec<usize> {
@@ -114,7 +153,7 @@ fn unique_names<'n>(sheet: &Sheet, names: impl Iterator<Item = (usize, &'static 
             Some((first, _)) => sheet.problem(
                 line,
                 &format!("{kind}.{name}.name"),
-                format!("{name:?} names another entry (line {first}) too; every calorimeter and tracker entry needs its own name"),
+                format!("{name:?} names another entry (line {first}) too; every calorimeter, tracker and efficiency entry needs its own `name`"),
             ),
             None => seen.push((line, name)),
         }
@@ -162,17 +201,59 @@ fn fractions(sheet: &Sheet, calorimeters: &[Placed<Calorimeter>]) {
     }
 }
 
-fn warn_of_hidden_entries(sheet: &Sheet, detector: &Detector, calorimeter_lines: &[usize], tracker_lines: &[usize]) {
-    const MESSAGE: &str = "never used: entries before it measure its whole range; reorder the entries or remove it";
+fn warn_of_hidden_entries(sheet: &Sheet, detector: &Detector, lines: &Lines) {
+    const MESSAGE: &str = "never used: entries before it serve its whole range; reorder the entries or remove it";
     let regions = |object| detector.calorimeter_regions(object);
-    for (index, (entry, line)) in detector.calorimeters.iter().zip(calorimeter_lines).enumerate() {
+    for (index, (entry, line)) in detector.calorimeters.iter().zip(&lines.calorimeters).enumerate() {
         if !regions(entry.object).iter().any(|region| region.entries.contains(&index)) {
             sheet.warn(*line, &format!("calorimeter.{}", entry.name), MESSAGE);
         }
     }
-    for (index, (entry, line)) in detector.trackers.iter().zip(tracker_lines).enumerate() {
+    for (index, (entry, line)) in detector.trackers.iter().zip(&lines.trackers).enumerate() {
         if !detector.tracker_regions(entry.object).iter().any(|region| region.entry == index) {
             sheet.warn(*line, &format!("tracker.{}", entry.name), MESSAGE);
+        }
+    }
+    for (index, (entry, line)) in detector.efficiencies.iter().zip(&lines.efficiencies).enumerate() {
+        if !detector.efficiency_regions(entry.object).iter().any(|region| region.entry == index) {
+            sheet.warn(*line, &format!("efficiency.{}", entry.name), MESSAGE);
+        }
+    }
+}
+
+/// Where the detector measures an object, its efficiency must be told if it is told anywhere; the cells of a table may
+/// leave a range of |eta| out, which is worth a warning.
+fn efficiency_holes(sheet: &Sheet, detector: &Detector, lines: &[usize]) {
+    for object in Object::ALL {
+        let covered = detector.coverage(object);
+        let regions = detector.efficiency_regions(object);
+        let Some((first, line)) = detector.efficiencies.iter().zip(lines).find(|(entry, _)| entry.object == object)
+        else {
+            continue;
+        };
+        let told: Vec<EtaRange> = regions.iter().map(|region| region.eta).collect();
+        let holes = without(&covered, &told);
+        if !holes.is_empty() {
+            let message = format!(
+                "no entry tells the efficiency of the {object} at |eta| {}, where the detector measures it; add an entry for \
+                 it, or leave `eta` out of the last one",
+                ranges(&holes)
+            );
+            sheet.problem(*line, &format!("efficiency.{}.eta", first.name), message);
+        }
+        for region in &regions {
+            let (entry, line) = (&detector.efficiencies[region.entry], lines[region.entry]);
+            let EfficiencyCurve::Table(cells) = &entry.curve else { continue };
+            let outside = without(&[region.eta], &covered);
+            let here = without(&[region.eta], &outside);
+            let empty = without(&here, &cells.iter().map(|cell| cell.eta).collect::<Vec<_>>());
+            if !empty.is_empty() {
+                let message = format!(
+                    "the table has no cell at |eta| {}, where the detector measures the {object}; the efficiency is 0 there",
+                    ranges(&empty)
+                );
+                sheet.warn(line, &format!("efficiency.{}.table", entry.name), message);
+            }
         }
     }
 }

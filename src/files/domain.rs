@@ -23,6 +23,8 @@ pub(super) const POSITIVE: Domain = Domain { contains: |x| x > 0.0, text: "a fin
 pub(super) const ABOVE_ONE: Domain = Domain { contains: |x| x > 1.0, text: "a finite number larger than 1" };
 pub(super) const ABOVE_MINUS_ONE: Domain = Domain { contains: |x| x > -1.0, text: "a finite number larger than -1" };
 pub(super) const SHARE: Domain = Domain { contains: |x| (0.0..=1.0).contains(&x), text: "a number from 0 to 1" };
+pub(super) const PLATEAU: Domain =
+    Domain { contains: |x| x > 0.0 && x <= 1.0, text: "a number larger than 0, up to 1" };
 pub(super) const INSIDE_UNIT: Domain =
     Domain { contains: |x| x > 0.0 && x < 1.0, text: "a number larger than 0 and smaller than 1" };
 pub(super) const ABS_ETA: Domain = Domain { contains: |x| (0.0..=20.0).contains(&x), text: "an |eta| from 0 to 20" };

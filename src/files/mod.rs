@@ -9,11 +9,14 @@ mod detector_entries;
 mod detector_file;
 mod digest;
 mod domain;
+mod efficiency_file;
 mod fit_data;
 mod interrupt;
 mod number;
+mod number_table;
 mod reader;
 mod resonance_table;
+mod response_table;
 mod run_read;
 mod run_record;
 mod run_target;
@@ -24,16 +27,16 @@ mod study_checks;
 mod study_file;
 mod uncertainties;
 
-pub use detector_file::load_detector;
+pub use detector_file::{load_detector, parse_detector};
 pub use digest::FileDigest;
 pub use fit_data::load_fit_data;
 pub use interrupt::remove_unfinished_on_interrupt;
 pub use number::shortest;
 pub use run_read::{Run, read_run};
-pub use run_record::{FoldSummary, RunRecord, Skipped};
+pub use run_record::{FoldSummary, MoveRecord, NuisanceRecord, RunRecord, Skipped};
 pub use run_target::{Committed, Staging, Target, TargetError};
 pub use run_write::{NOMINAL, RunContents, write_templates};
-pub use study_file::load_study;
+pub use study_file::{load_study, parse_study};
 
 use crate::detector::Detector;
 use crate::problem::Problem;
@@ -44,7 +47,8 @@ use crate::process::Study;
 pub struct LoadedStudy {
     /// The study.
     pub study: Study,
-    /// Every file that it depends on: the study, the detector, then a spectrum table or an event file.
+    /// Every file that it depends on: the study, the detector with its efficiency tables, then a spectrum
+    /// table or an event file.
     pub inputs: Vec<FileDigest>,
     /// What is allowed but likely not meant.
     pub warnings: Vec<Problem>,
@@ -55,8 +59,8 @@ pub struct LoadedStudy {
 pub struct LoadedDetector {
     /// The detector.
     pub detector: Detector,
-    /// Its file.
-    pub input: FileDigest,
+    /// Every file that it depends on: its own, then its efficiency tables.
+    pub inputs: Vec<FileDigest>,
     /// What is allowed but likely not meant.
     pub warnings: Vec<Problem>,
 }

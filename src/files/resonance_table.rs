@@ -3,12 +3,12 @@
 use std::path::Path;
 
 use super::FileDigest;
-use super::domain::{ANY, MASS, NOT_NEGATIVE};
+use super::domain::{ANY, Domain, MASS, NOT_NEGATIVE};
 use super::reader::{Item, Section};
 use super::source::{Sheet, Unreadable, digest};
 use super::spectrum_file;
 use crate::problem::Problem;
-use crate::process::{EventSource, Intermediate, Natural, Production, Resonance, Width};
+use crate::process::{EventSource, Intermediate, Natural, Production, Radiation, Resonance, Width};
 
 const NATURAL_SHAPES: [(&str, Natural); 3] = [
     ("breit-wigner", Natural::BreitWigner),
@@ -19,11 +19,34 @@ const NATURAL_SHAPES: [(&str, Natural); 3] = [
 /// The V of X -> V V(*) when none is given: mass and width in GeV.
 const INTERMEDIATE: Intermediate = Intermediate { mass_gev: 91.188, width_gev: 2.4955 };
 
-/// What other files of the study brought along.
+const DELTA_R: Domain = Domain { contains: |x| x > 0.0 && x <= 2.0, text: "a number larger than 0, up to 2" };
+
+/// What other files of a study or a detector brought along.
 #[derive(Debug, Default)]
 pub(super) struct OtherFiles {
     pub inputs: Vec<FileDigest>,
     pub problems: Vec<Problem>,
+}
+
+impl OtherFiles {
+    /// What a file gave, with its digest and problems kept here; `None` when it could not be read. `item` names the file.
+    pub fn take<T>(&mut self, item: &Item<'_>, read: Result<(T, FileDigest, Vec<Problem>), Unreadable>) -> Option<T> {
+        match read {
+            Ok((value, input, problems)) => {
+                self.inputs.push(input);
+                self.problems.extend(problems);
+                Some(value)
+            }
+            Err(Unreadable::Access(message)) => {
+                item.problem(message);
+                None
+            }
+            Err(Unreadable::Content(problem)) => {
+                self.problems.push(problem);
+                None
+            }
+        }
+    }
 }
 
 /// Reads the table; `None` when it is not known where the events come from.
@@ -48,7 +71,21 @@ pub(super) fn read(mut section: Section<'_>, files: &mut OtherFiles) -> Option<R
         table.finish();
         intermediate
     });
-    section.not_yet("radiation");
+    let radiation = match source {
+        Some(EventSource::File(_)) => section.table("radiation").map(|mut table| {
+            let radiation = Radiation { recombination_delta_r: table.number("recombination_delta_r", &DELTA_R) };
+            table.finish();
+            radiation
+        }),
+        Some(EventSource::Generated(_)) => {
+            section.not_yet("radiation");
+            None
+        }
+        None => {
+            section.optional("radiation");
+            None
+        }
+    };
     section.finish();
     Some(Resonance {
         masses_gev,
@@ -57,6 +94,7 @@ pub(super) fn read(mut section: Section<'_>, files: &mut OtherFiles) -> Option<R
         falloff_power,
         source: source?,
         intermediate,
+        radiation,
     })
 }
 
@@ -125,21 +163,7 @@ fn production(mut section: Section<'_>, files: &mut OtherFiles) -> Option<Produc
     let sheet = section.sheet;
     section.finish();
     let path = sheet.resolve(file_name(&item)?);
-    match spectrum_file::read(&path) {
-        Ok((cells, input, problems)) => {
-            files.inputs.push(input);
-            files.problems.extend(problems);
-            Some(Production::Table(cells))
-        }
-        Err(Unreadable::Access(message)) => {
-            item.problem(message);
-            None
-        }
-        Err(Unreadable::Content(problem)) => {
-            files.problems.push(problem);
-            None
-        }
-    }
+    files.take(&item, spectrum_file::read(&path)).map(Production::Table)
 }
 
 fn events(item: &Item<'_>, sheet: &Sheet, files: &mut OtherFiles) -> Option<EventSource> {

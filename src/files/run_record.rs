@@ -1,7 +1,9 @@
 //! What `run.json` says about a run.
 
 use super::FileDigest;
+use crate::detector::Detector;
 use crate::fold::FoldRecord;
+use crate::shift::Nuisance;
 use serde::{Deserialize, Serialize};
 
 /// The program's name in `run.json`.
@@ -14,6 +16,32 @@ pub struct Skipped {
     pub reason: String,
     /// How many.
     pub events: u64,
+}
+
+/// A number that a nuisance moves.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct MoveRecord {
+    /// Name of the number.
+    pub term: String,
+    /// By how much it moves at +1, in its own unit.
+    pub by: f64,
+}
+
+/// A nuisance of the detector.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct NuisanceRecord {
+    /// Its name, as in `shifts.csv` before the colon.
+    pub name: String,
+    /// What it moves.
+    pub moves: Vec<MoveRecord>,
+}
+
+impl NuisanceRecord {
+    /// The record of a nuisance of a detector.
+    pub fn new(detector: &Detector, nuisance: &Nuisance) -> Self {
+        let moves = nuisance.moves.iter().map(|m| MoveRecord { term: detector.term_name(&m.term), by: m.by });
+        NuisanceRecord { name: nuisance.name.clone(), moves: moves.collect() }
+    }
 }
 
 /// How the fold of one channel at one mass went.
@@ -39,7 +67,7 @@ pub struct FoldSummary {
     pub events_effective: Option<f64>,
     /// Events of the list that were skipped, by reason.
     pub events_skipped: Vec<Skipped>,
-    /// What else is worth knowing about the file of events.
+    /// What else is worth knowing: about the file of events, and about events where no efficiency is told.
     pub notes: Vec<String>,
 }
 
@@ -87,6 +115,8 @@ pub struct RunRecord {
     pub sigma_eff_fraction: f64,
     /// How each fold went, in the order of the study.
     pub folds: Vec<FoldSummary>,
+    /// The nuisances whose shifts were folded; empty for a detector without uncertainties.
+    pub nuisances: Vec<NuisanceRecord>,
     /// What was not reached, one sentence each; empty when all is well.
     pub not_reached: Vec<String>,
     /// Threads used.
@@ -128,6 +158,7 @@ impl RunRecord {
             sigma_eff_fraction: crate::template::SIGMA_EFF_FRACTION,
             cpu_seconds: folds.iter().map(|fold| fold.cpu_seconds).sum(),
             folds,
+            nuisances: Vec::new(),
             not_reached,
             threads: 1,
             wall_seconds: 0.0,

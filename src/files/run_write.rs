@@ -1,8 +1,10 @@
-//! The files of a run directory: `templates.csv`, `shifts.csv`, `summary.csv`, `run.json`.
+//! The files of a run directory: `templates.csv`, `shifts.csv`, `responses.csv`, `summary.csv`, `run.json`.
 
 use super::number::{shortest, shortest_or_empty};
+use super::response_table::{self, RESPONSES_FILE};
 use super::run_record::{FoldSummary, RunRecord};
 use super::run_target::{Committed, RUN_FILE, Staging, Target, TargetError};
+use crate::shift::LabelledResponse;
 use crate::template::{LabelledTemplate, Measured, SIGMA_EFF_FRACTION};
 use std::io::{self, Write};
 
@@ -16,7 +18,7 @@ pub(super) const SUMMARY_FILE: &str = "summary.csv";
 pub(super) const TEMPLATE_COLUMNS: [&str; 10] =
     ["channel", "category", "mass_gev", "shift", "bin", "low_gev", "high_gev", "probability", "error", "list_error"];
 
-const SUMMARY_COLUMNS: [&str; 32] = [
+const SUMMARY_COLUMNS: [&str; 35] = [
     "channel",
     "category",
     "mass_gev",
@@ -24,6 +26,9 @@ const SUMMARY_COLUMNS: [&str; 32] = [
     "acceptance",
     "acceptance_error",
     "acceptance_list_error",
+    "efficiency",
+    "efficiency_error",
+    "efficiency_list_error",
     "below_axis",
     "below_axis_error",
     "above_axis",
@@ -58,6 +63,8 @@ pub struct RunContents {
     pub record: RunRecord,
     /// All templates; those with another `shift` than [`NOMINAL`] go to `shifts.csv`.
     pub templates: Vec<LabelledTemplate>,
+    /// What the nuisances do to the templates.
+    pub responses: Vec<LabelledResponse>,
     /// Further files: path in the run (with `/`, e.g. `figures/two-photon.svg`) and contents.
     pub further: Vec<(String, Vec<u8>)>,
 }
@@ -78,6 +85,9 @@ impl RunContents {
         if self.templates.iter().any(|template| template.shift != NOMINAL) {
             let shifted = |template: &&LabelledTemplate| template.shift != NOMINAL;
             staging.write(SHIFTS_FILE, |out| write_templates(out, self.templates.iter().filter(shifted)))?;
+        }
+        if !self.responses.is_empty() {
+            staging.write(RESPONSES_FILE, |out| response_table::write(out, &self.responses))?;
         }
         staging.write(SUMMARY_FILE, |out| write_summary(out, &self.templates, &self.record.folds))?;
         for (name, bytes) in &self.further {
@@ -134,9 +144,10 @@ fn write_summary(out: impl Write, templates: &[LabelledTemplate], folds: &[FoldS
     for labelled in templates {
         let t = &labelled.template;
         let w = t.widths().map_err(|error| refuse(labelled, &error.to_string()))?;
+        let efficiency = [t.efficiency, t.efficiency_error, t.efficiency_list_error];
         let plain = [t.acceptance, t.acceptance_error, t.acceptance_list_error, t.lost];
-        if plain.iter().any(|number| !number.is_finite()) {
-            return Err(refuse(labelled, "acceptance or loss is not a finite number"));
+        if plain.iter().chain(&efficiency).any(|number| !number.is_finite()) {
+            return Err(refuse(labelled, "acceptance, efficiency or loss is not a finite number"));
         }
         let mut row = vec![
             labelled.channel.clone(),
@@ -147,6 +158,7 @@ fn write_summary(out: impl Write, templates: &[LabelledTemplate], folds: &[FoldS
             shortest(t.acceptance_error),
             shortest(t.acceptance_list_error),
         ];
+        row.extend(efficiency.map(shortest));
         let pair = |measured: Measured| [shortest_or_empty(measured.value), shortest_or_empty(measured.error)];
         row.extend([w.below_axis, w.above_axis].into_iter().flat_map(pair));
         row.push(shortest(t.lost));

@@ -22,6 +22,14 @@ pub(super) struct InputText {
     pub input: FileDigest,
 }
 
+impl InputText {
+    /// A text that is in memory already, with its digest as if it stood in the file.
+    pub fn of_memory(path: &Path, text: &str) -> Self {
+        let sha256 = hexadecimal(&Sha256::digest(text.as_bytes()));
+        InputText { text: text.to_owned(), input: FileDigest { path: path.display().to_string(), sha256 } }
+    }
+}
+
 /// Why a file could not be read.
 #[derive(Debug)]
 pub(super) enum Unreadable {

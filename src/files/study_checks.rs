@@ -71,6 +71,19 @@ pub(super) fn coverage(sheet: &Sheet, detector: &Detector, channels: &[PlacedCha
     }
 }
 
+/// A number of legs that is reached without any efficiency is likely not meant.
+pub(super) fn efficient_legs(sheet: &Sheet, detector: &Detector, channels: &[PlacedChannel]) {
+    for PlacedChannel { channel, efficient_legs_line, path, .. } in channels {
+        let always = channel.decay.legs().iter().filter(|object| !detector.has_efficiency(**object)).count();
+        if channel.min_efficient_legs.is_some_and(|count| count <= always) {
+            let message = format!(
+                "has no effect: the detector gives no [[efficiency]] for {always} of the legs, which are always found"
+            );
+            sheet.warn(*efficient_legs_line, &format!("{path}.min_efficient_legs"), message);
+        }
+    }
+}
+
 /// The |eta| that a channel accepts: up to its cut, or from end to end of the detector's coverage, without the gap.
 fn acceptance(cuts: &Cuts, covered: &[EtaRange]) -> Vec<EtaRange> {
     let whole = match (cuts.max_abs_eta, covered) {
@@ -87,7 +100,7 @@ fn overlap(a: EtaRange, b: EtaRange) -> bool {
 }
 
 /// What is left of some ranges when others are taken out.
-fn without(ranges: &[EtaRange], taken: &[EtaRange]) -> Vec<EtaRange> {
+pub(super) fn without(ranges: &[EtaRange], taken: &[EtaRange]) -> Vec<EtaRange> {
     let mut left = ranges.to_vec();
     for out in taken {
         left = left
@@ -103,7 +116,7 @@ fn without(ranges: &[EtaRange], taken: &[EtaRange]) -> Vec<EtaRange> {
     left
 }
 
-fn ranges(ranges: &[EtaRange]) -> String {
+pub(super) fn ranges(ranges: &[EtaRange]) -> String {
     let texts: Vec<String> = ranges.iter().map(|range| format!("{} to {}", range.low, range.high)).collect();
     if texts.is_empty() { "nowhere".to_owned() } else { texts.join(" and ") }
 }

@@ -2,7 +2,7 @@
 
 use std::path::Path;
 
-use super::domain::INSIDE_UNIT;
+use super::domain::{INSIDE_UNIT, SHARE};
 use super::reader::{Item, Section};
 use super::resonance_table::{self, OtherFiles, file_name};
 use super::source::{InputText, Sheet, Unreadable, read_text};
@@ -24,7 +24,18 @@ const LARGEST_WHOLE: u64 = i64::MAX as u64;
 /// Every problem of all files, not only the first: those of the study, then of the detector, then of other files, each
 /// in the order of the lines.
 pub fn load_study(path: &Path) -> Result<LoadedStudy, Problems> {
-    let InputText { text, input } = read_text(path).map_err(|unreadable| unreadable.of_file(path))?;
+    of_text(path, read_text(path).map_err(|unreadable| unreadable.of_file(path))?)
+}
+
+/// Reads a study from its text; `path` stands in messages, and the files that it names are relative to it.
+///
+/// # Errors
+/// As [`load_study`].
+pub fn parse_study(path: &Path, text: &str) -> Result<LoadedStudy, Problems> {
+    of_text(path, InputText::of_memory(path, text))
+}
+
+fn of_text(path: &Path, InputText { text, input }: InputText) -> Result<LoadedStudy, Problems> {
     let sheet = Sheet::new(path, &text);
     let mut files = Files { detector: FileOfStudy::default(), others: OtherFiles::default() };
     let study =
@@ -36,7 +47,7 @@ pub fn load_study(path: &Path) -> Result<LoadedStudy, Problems> {
     warnings.append(&mut files.detector.warnings);
     match study {
         Some(study) if problems.is_empty() => {
-            let inputs = [input].into_iter().chain(files.detector.input).chain(files.others.inputs).collect();
+            let inputs = [input].into_iter().chain(files.detector.inputs).chain(files.others.inputs).collect();
             Ok(LoadedStudy { study, inputs, warnings })
         }
         _ => Err(Problems(problems)),
@@ -51,7 +62,7 @@ struct Files {
 
 #[derive(Default)]
 struct FileOfStudy {
-    input: Option<FileDigest>,
+    inputs: Vec<FileDigest>,
     problems: Vec<Problem>,
     warnings: Vec<Problem>,
 }
@@ -64,6 +75,8 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
     let seed = root.whole_or("seed", (0, LARGEST_WHOLE), SEED);
     let precision = root.number_or("precision", &INSIDE_UNIT, PRECISION);
     let max_points = root.whole_or("max_points", (FEWEST_POINTS, LARGEST_WHOLE), MAX_POINTS);
+
+    let prune_shifts_below = root.number_or("prune_shifts_below", &SHARE, 0.0);
 
     let resonance_section = root.required("resonance", "the table [resonance]").and_then(|item| item.section());
     let masses_line = resonance_section.as_ref().map_or(1, |section| section.line_of("masses_gev"));
@@ -82,6 +95,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
     }
     if let Some(detector) = &detector {
         study_checks::coverage(sheet, detector, &channels);
+        study_checks::efficient_legs(sheet, detector, &channels);
     }
     Some(Study {
         name,
@@ -89,6 +103,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
         seed,
         precision,
         max_points,
+        prune_shifts_below,
         resonance: resonance?,
         channels: channels.into_iter().map(|placed| placed.channel).collect(),
     })
@@ -98,7 +113,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
 fn detector(sheet: &Sheet, item: &Item<'_>, file: &mut FileOfStudy) -> Option<Detector> {
     match detector_file::read(&sheet.resolve(file_name(item)?)) {
         Ok(reading) => {
-            file.input = Some(reading.input);
+            file.inputs = reading.inputs;
             file.problems = reading.problems;
             file.warnings = reading.warnings;
             reading.detector

@@ -30,11 +30,13 @@ pub(super) struct Total {
     pub sums: Vec<Sums>,
     /// Weight of all generated events.
     pub generated: f64,
+    /// That of events with a leg outside of what the efficiency tells.
+    pub outside: f64,
 }
 
 impl Total {
     pub fn new(categories: usize, edges: usize) -> Self {
-        Total { sums: vec![Sums::new(edges); categories], generated: 0.0 }
+        Total { sums: vec![Sums::new(edges); categories], generated: 0.0, outside: 0.0 }
     }
 
     pub fn add(&mut self, other: &Total) {
@@ -42,6 +44,7 @@ impl Total {
             a.add(b);
         }
         self.generated += other.generated;
+        self.outside += other.outside;
     }
 }
 
@@ -118,6 +121,7 @@ pub(super) fn fold_generated(
                 reached: reached <= study.precision,
                 cpu_seconds,
                 wall_seconds: started.elapsed().as_secs_f64(),
+                notes: estimate::notes(&totals),
                 ..FoldRecord::default()
             };
             let templates = estimate::templates(channel, mass_gev, &totals, None);
@@ -159,6 +163,7 @@ fn fold_chunk(
         generator.fill(points, first, &mut workspace.truth);
         total.generated += workspace.truth.generated.iter().sum::<f64>();
         workspace.measure(plan, points, first);
+        total.outside += workspace.outside;
         for last in &workspace.last {
             add(plan, last, &mut total.sums[last.category]);
         }

@@ -3,7 +3,7 @@
 use super::engine::Total;
 use super::last_leg::Sums;
 use crate::process::Channel;
-use crate::template::{LabelledTemplate, Replicate, Template};
+use crate::template::{LabelledTemplate, Replicate, Template, standard_error};
 
 /// What the statistics of an event list add.
 #[derive(Clone, Debug)]
@@ -14,6 +14,10 @@ pub(super) struct ListSums {
     /// By category: sum of (accepted weight)², and of it times the event's weight.
     pub accepted_squares: Vec<f64>,
     pub accepted_products: Vec<f64>,
+    /// By category, with u the accepted weight at an efficiency of 1: the sums of u, u², and u times the accepted weight.
+    pub unfiltered: Vec<f64>,
+    pub unfiltered_squares: Vec<f64>,
+    pub unfiltered_products: Vec<f64>,
     /// Sum of weight².
     pub weight_squares: f64,
     /// Sum of weights.
@@ -27,6 +31,9 @@ impl ListSums {
             products: vec![vec![0.0; bins]; categories],
             accepted_squares: vec![0.0; categories],
             accepted_products: vec![0.0; categories],
+            unfiltered: vec![0.0; categories],
+            unfiltered_squares: vec![0.0; categories],
+            unfiltered_products: vec![0.0; categories],
             weight_squares: 0.0,
             weights: 0.0,
         }
@@ -38,6 +45,10 @@ impl ListSums {
         self.weight_squares += weight * weight;
         for (category, sums) in sums.iter().enumerate() {
             let accepted = sums.accepted * unit;
+            let unfiltered = sums.unfiltered * unit;
+            self.unfiltered[category] += unfiltered;
+            self.unfiltered_squares[category] += unfiltered * unfiltered;
+            self.unfiltered_products[category] += unfiltered * accepted;
             if accepted == 0.0 {
                 continue;
             }
@@ -61,19 +72,12 @@ impl ListSums {
         }
         add(&mut self.accepted_squares, &other.accepted_squares);
         add(&mut self.accepted_products, &other.accepted_products);
+        add(&mut self.unfiltered, &other.unfiltered);
+        add(&mut self.unfiltered_squares, &other.unfiltered_squares);
+        add(&mut self.unfiltered_products, &other.unfiltered_products);
         self.weight_squares += other.weight_squares;
         self.weights += other.weights;
     }
-}
-
-/// Standard error of the mean of values.
-fn standard_error(values: impl Iterator<Item = f64> + Clone) -> f64 {
-    let count = values.clone().count() as f64;
-    if count < 2.0 {
-        return 0.0;
-    }
-    let mean = values.clone().sum::<f64>() / count;
-    (values.map(|value| (value - mean) * (value - mean)).sum::<f64>() / (count * (count - 1.0))).sqrt()
 }
 
 /// The scramblings of one category, normalised.
@@ -103,7 +107,7 @@ fn pooled(totals: &[Total], category: usize) -> (Replicate, Vec<f64>, Vec<Replic
     let mean = normalised(&sum.sums[category], sum.generated);
     let replicates = replicates(totals, category);
     let errors = (0..mean.probability.len())
-        .map(|bin| standard_error(replicates.iter().map(|replicate| replicate.probability[bin])))
+        .map(|bin| standard_error(replicates.iter().map(|replicate| replicate.probability[bin])).unwrap_or(0.0))
         .collect();
     (mean, errors, replicates)
 }
@@ -139,9 +143,13 @@ pub(super) fn templates(
                 None => (vec![0.0; error.len()], 0.0),
                 Some(list) => list_errors(list, index, &mean),
             };
+            let weights: Vec<(f64, f64)> =
+                totals.iter().map(|total| (total.sums[index].accepted, total.sums[index].unfiltered)).collect();
+            let efficiency = efficiency(weights.iter().map(|w| w.0).sum(), weights.iter().map(|w| w.1).sum());
             let template = Template {
                 edges_gev: channel.axis.edges_gev(mass_gev),
-                acceptance_error: standard_error(replicates.iter().map(|replicate| replicate.acceptance)),
+                acceptance_error: standard_error(replicates.iter().map(|replicate| replicate.acceptance))
+                    .unwrap_or(0.0),
                 probability: mean.probability,
                 error,
                 list_error,
@@ -149,6 +157,9 @@ pub(super) fn templates(
                 above_axis: mean.above_axis,
                 acceptance: mean.acceptance,
                 acceptance_list_error,
+                efficiency,
+                efficiency_error: standard_error(weights.iter().map(|w| self::efficiency(w.0, w.1))).unwrap_or(0.0),
+                efficiency_list_error: list.map_or(0.0, |list| efficiency_list_error(list, index, efficiency)),
                 lost: if generated == 0.0 { 0.0 } else { lost / generated },
                 replicates,
             };
@@ -183,4 +194,31 @@ fn list_errors(list: &ListSums, category: usize, mean: &Replicate) -> (Vec<f64>,
         list.accepted_squares[category] - 2.0 * a * list.accepted_products[category] + a * a * list.weight_squares;
     let acceptance = if list.weights == 0.0 { 0.0 } else { variance.max(0.0).sqrt() / list.weights.abs() };
     (bins, acceptance)
+}
+
+/// Accepted weight over what it would be at an efficiency of 1; 1 where nothing is accepted even then.
+fn efficiency(accepted: f64, unfiltered: f64) -> f64 {
+    if unfiltered == 0.0 { 1.0 } else { accepted / unfiltered }
+}
+
+/// As [`list_errors`]: the variance of sum a/sum u is sum (a_i - e u_i)²/(sum u)².
+fn efficiency_list_error(list: &ListSums, category: usize, efficiency: f64) -> f64 {
+    let variance = list.accepted_squares[category] - 2.0 * efficiency * list.unfiltered_products[category]
+        + efficiency * efficiency * list.unfiltered_squares[category];
+    let unfiltered = list.unfiltered[category];
+    if unfiltered == 0.0 { 0.0 } else { variance.max(0.0).sqrt() / unfiltered.abs() }
+}
+
+/// What the user should hear of: events whose efficiency nothing tells.
+pub(super) fn notes(totals: &[Total]) -> Vec<String> {
+    let generated: f64 = totals.iter().map(|total| total.generated).sum();
+    let outside: f64 = totals.iter().map(|total| total.outside).sum();
+    if outside == 0.0 || generated == 0.0 {
+        return Vec::new();
+    }
+    let percent = 100.0 * outside / generated;
+    vec![format!(
+        "{percent:.3} % of the generated weight has a leg outside of every cell of its efficiency table, where the \
+         efficiency is 0"
+    )]
 }

@@ -25,7 +25,10 @@ pub(super) struct LastLeg {
     /// Index of the tailed response; beyond the list for a Gaussian.
     pub tail: usize,
     pub category: usize,
+    /// Weight with the efficiency of the event.
     pub weight: f64,
+    /// Weight without it.
+    pub unfiltered: f64,
     /// Mass of the leg, GeV.
     pub mass: f64,
     /// Sine of its measured polar angle.
@@ -51,19 +54,22 @@ pub(super) struct Sums {
     pub steps: Vec<f64>,
     /// Accepted weight.
     pub accepted: f64,
+    /// What it would be with an efficiency of 1.
+    pub unfiltered: f64,
     /// Weight lost by the measurement.
     pub lost: f64,
 }
 
 impl Sums {
     pub fn new(edges: usize) -> Self {
-        Sums { below: vec![0.0; edges], steps: vec![0.0; edges + 1], accepted: 0.0, lost: 0.0 }
+        Sums { below: vec![0.0; edges], steps: vec![0.0; edges + 1], accepted: 0.0, unfiltered: 0.0, lost: 0.0 }
     }
 
     pub fn clear(&mut self) {
         self.below.fill(0.0);
         self.steps.fill(0.0);
         self.accepted = 0.0;
+        self.unfiltered = 0.0;
         self.lost = 0.0;
     }
 
@@ -75,6 +81,7 @@ impl Sums {
             *a += b;
         }
         self.accepted += other.accepted;
+        self.unfiltered += other.unfiltered;
         self.lost += other.lost;
     }
 
@@ -248,6 +255,7 @@ fn add_rising(axis: &AxisPlan, last: &LastLeg, tail: Option<&UnitTail>, from: f6
             sums.steps[first] -= w * low;
             sums.steps[last_edge] += w * high;
             sums.accepted += w * (high - low);
+            sums.unfiltered += last.unfiltered * (high - low);
             fill(axis, last, first, last_edge, &mut sums.below, |t| w * normal_cdf(t));
         }
         Some(tail) => {
@@ -256,6 +264,7 @@ fn add_rising(axis: &AxisPlan, last: &LastLeg, tail: Option<&UnitTail>, from: f6
             sums.steps[first] -= w * low;
             sums.steps[last_edge] += w * high;
             sums.accepted += w * (high - low);
+            sums.unfiltered += last.unfiltered * (high - low);
             let core_first = if start < -tail.alpha_low { edge(-tail.alpha_low).min(last_edge) } else { first };
             let core_last =
                 if end > tail.alpha_high { edge(tail.alpha_high).clamp(core_first, last_edge) } else { last_edge };
@@ -341,6 +350,7 @@ fn add_falling(axis: &AxisPlan, last: &LastLeg, tail: Option<&UnitTail>, from: f
         return;
     }
     sums.accepted += w * (high - low);
+    sums.unfiltered += last.unfiltered * (high - low);
     let (first, end) = (axis.first_edge(last.mass_squared(to)), axis.first_edge(last.mass_squared(from)));
     for k in first..end {
         let p = last.momenta_at(axis.squares[k]).1;

@@ -90,7 +90,9 @@ pub(super) fn fold_file(
     let started = Instant::now();
     let channel = study.channels.get(channel_index).ok_or(FoldError::NoSuchChannel(channel_index))?;
     let selector = Selector::new(&channel.decay, study.resonance.intermediate.mass_gev)
-        .ok_or_else(|| FoldError::CannotPick { channel: channel.name.clone() })?;
+        .ok_or_else(|| FoldError::CannotPick { channel: channel.name.clone() })?
+        .with_choice(channel.choice, mass_gev)
+        .with_recombination(study.resonance.radiation.map(|radiation| radiation.recombination_delta_r));
     let plan = Plan::new(detector, channel, mass_gev, &TruthDimensions::default());
     let scramblings = scramblings(study.seed, &plan)?;
     let (categories, edges) = (channel.categories.len(), plan.axis.squares.len());
@@ -148,6 +150,7 @@ pub(super) fn fold_file(
             record.final_points = pass.points;
             record.precision_reached = reached;
             record.reached = reached <= study.precision;
+            record.notes.extend(estimate::notes(&pass.totals));
             record.wall_seconds = started.elapsed().as_secs_f64();
             record.events_effective = Some(pass.list.weights * pass.list.weights / pass.list.weight_squares);
             let templates = estimate::templates(channel, mass_gev, &pass.totals, Some(&pass.list));
@@ -238,6 +241,7 @@ fn fold_batch(
             for block in 0..blocks {
                 total.generated += workspace.truth.generated.iter().sum::<f64>();
                 workspace.measure(plan, scrambling, point + block * BLOCK as u64);
+                total.outside += workspace.outside;
                 for (last, lane) in workspace.last.iter().zip(&workspace.event) {
                     let slot = lane / lanes * categories + last.category;
                     touched[slot] = true;

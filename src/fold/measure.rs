@@ -1,6 +1,7 @@
 //! From truth events to what is measured of every leg but the last.
 
 use super::aim::{Aimed, aim, point};
+use super::efficiency::Found;
 use super::last_leg::{LastLeg, Reading};
 use super::plan::Plan;
 use super::resolve::{Resolved, widths};
@@ -24,6 +25,8 @@ pub(super) struct Workspace {
     pub event: Vec<usize>,
     /// Weight lost by the other legs: event of the block, category, weight.
     pub lost: Vec<(usize, usize, f64)>,
+    /// Weight of the events with a leg outside of what the efficiency tells; their efficiency is 0.
+    pub outside: f64,
     total: LegLanes,
     aimed: Vec<Aimed>,
     resolved: Vec<Resolved>,
@@ -36,6 +39,7 @@ pub(super) struct Workspace {
     /// Spread and shift of the vertex in calorimeter radii.
     spread: Lane,
     dz: Lane,
+    found: Found,
 }
 
 impl Workspace {
@@ -47,6 +51,7 @@ impl Workspace {
             last: Vec::with_capacity(BLOCK),
             event: Vec::with_capacity(BLOCK),
             lost: Vec::with_capacity(BLOCK),
+            outside: 0.0,
             total: LegLanes::default(),
             aimed: vec![Aimed::default(); legs],
             resolved: vec![Resolved::default(); legs],
@@ -56,6 +61,7 @@ impl Workspace {
             gradient: vec![zero; plan.normals.count],
             spread: zero,
             dz: zero,
+            found: Found::new(plan.efficiency.as_ref()),
         }
     }
 
@@ -65,10 +71,12 @@ impl Workspace {
         self.last.clear();
         self.event.clear();
         self.lost.clear();
+        self.outside = 0.0;
         self.resolve(plan, points, first);
         if self.live.is_empty() {
             return;
         }
+        self.find(plan);
         self.rank();
         self.spread(plan, points, first);
         for (leg, aimed) in self.aimed.iter_mut().enumerate() {
@@ -106,6 +114,13 @@ impl Workspace {
         for (leg, resolved) in self.resolved.iter_mut().enumerate() {
             widths(&self.truth.legs[leg], &self.aimed[leg].pt, &self.total, resolved);
         }
+    }
+
+    /// How likely the events are found. Their weights in `truth` stay as they are: they serve several scramblings.
+    fn find(&mut self, plan: &Plan) {
+        let Some(efficiency) = &plan.efficiency else { return };
+        self.found.find(efficiency, &self.aimed, &self.live);
+        self.outside = self.live.iter().filter(|i| self.found.outside[**i]).map(|i| self.truth.weight[*i]).sum();
     }
 
     /// Puts the leg that contributes most to the mass variance last, the others in their order.
@@ -234,7 +249,7 @@ impl Workspace {
     /// Measures the other legs of an event and files its last leg.
     #[inline(always)]
     fn collect(&mut self, plan: &Plan, i: usize, category: usize) {
-        let weight = self.truth.weight[i];
+        let weight = self.truth.weight[i] * self.found.probability[i];
         match self.last_leg(plan, i, category) {
             Some(last) => {
                 self.last.push(last);
@@ -254,7 +269,8 @@ impl Workspace {
             reading: r.reading[i],
             tail: r.tail[i],
             category,
-            weight: self.truth.weight[i],
+            weight: self.truth.weight[i] * self.found.probability[i],
+            unfiltered: self.truth.weight[i],
             mass,
             sin: aimed.sin[i],
             ..LastLeg::default()

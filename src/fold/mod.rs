@@ -1,6 +1,7 @@
 //! The folding engine, and the plain reference path.
 
 mod aim;
+mod efficiency;
 mod engine;
 mod estimate;
 mod last_leg;
@@ -43,7 +44,7 @@ pub struct FoldRecord {
     pub events_effective: Option<f64>,
     /// Events of the list that were skipped, with the reason.
     pub events_skipped: Vec<(String, u64)>,
-    /// What else is worth knowing about the file of events.
+    /// What else is worth knowing: about the file of events, and about events where no efficiency is told.
     pub notes: Vec<String>,
 }
 

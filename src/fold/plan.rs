@@ -1,5 +1,6 @@
 //! A fold made ready: one channel at one mass point, with everything looked up that the inner loops need.
 
+use super::efficiency::EfficiencyPlan;
 use super::response::UnitTail;
 use crate::detector::{Detector, Object, Tracker, TrackerResolution};
 use crate::events::TruthDimensions;
@@ -38,6 +39,27 @@ pub(super) struct TrackerTerms {
 pub(super) struct Regions<T> {
     bounds: Vec<f64>,
     regions: Vec<T>,
+}
+
+impl<T> Default for Regions<T> {
+    fn default() -> Self {
+        Regions { bounds: Vec::new(), regions: Vec::new() }
+    }
+}
+
+impl<T: Default> Regions<T> {
+    /// Appends a region, with an empty one before it where there is a hole and one after it that the next may replace.
+    pub fn push(&mut self, low: f64, high: f64, region: T) {
+        match self.bounds.last() {
+            Some(end) if *end == low => {
+                self.regions.pop();
+            }
+            _ => self.bounds.push(low),
+        }
+        self.regions.push(region);
+        self.bounds.push(high);
+        self.regions.push(T::default());
+    }
 }
 
 impl<T> Regions<T> {
@@ -153,6 +175,8 @@ pub(super) struct Plan {
     pub axis: AxisPlan,
     pub dimensions: Dimensions,
     pub normals: Normals,
+    /// `None` where every event is found.
+    pub efficiency: Option<EfficiencyPlan>,
 }
 
 impl Plan {
@@ -194,6 +218,7 @@ impl Plan {
             axis: AxisPlan::new(&channel.axis, mass_gev),
             dimensions,
             normals,
+            efficiency: EfficiencyPlan::new(detector, channel),
         }
     }
 }
@@ -226,29 +251,26 @@ fn tracker_terms(entry: &Tracker) -> TrackerTerms {
 
 fn leg_plan(detector: &Detector, object: Object) -> LegPlan {
     let direction = detector.directions.iter().find(|direction| direction.object == object);
-    let cot = |eta: f64| if eta.is_finite() { libm::sinh(eta) } else { f64::INFINITY };
     let calorimeter_regions = detector.calorimeter_regions(object);
     let calorimeter = (!calorimeter_regions.is_empty()).then(|| {
-        let mut bounds = Vec::new();
-        let mut regions: Vec<SharedRegion> = Vec::new();
+        let mut regions = Regions::default();
         for region in &calorimeter_regions {
             let mut sum = 0.0;
             let shares = region.entries.iter().map(|entry| {
                 sum += detector.calorimeters[*entry].fraction;
                 (sum, *entry)
             });
-            push_region(&mut bounds, &mut regions, cot(region.eta.low), cot(region.eta.high), shares.collect());
+            regions.push(cot(region.eta.low), cot(region.eta.high), shares.collect());
         }
-        Regions { bounds, regions }
+        regions
     });
     let tracker_regions = detector.tracker_regions(object);
     let tracker = (!tracker_regions.is_empty()).then(|| {
-        let mut bounds = Vec::new();
-        let mut regions = Vec::new();
+        let mut regions = Regions::default();
         for region in &tracker_regions {
-            push_region(&mut bounds, &mut regions, cot(region.eta.low), cot(region.eta.high), Some(region.entry));
+            regions.push(cot(region.eta.low), cot(region.eta.high), Some(region.entry));
         }
-        Regions { bounds, regions }
+        regions
     });
     LegPlan {
         calorimeter,
@@ -259,17 +281,9 @@ fn leg_plan(detector: &Detector, object: Object) -> LegPlan {
     }
 }
 
-/// Appends a region, with an empty one before it where there is a hole and one after it that the next may replace.
-fn push_region<T: Default>(bounds: &mut Vec<f64>, regions: &mut Vec<T>, low: f64, high: f64, region: T) {
-    match bounds.last() {
-        Some(end) if *end == low => {
-            regions.pop();
-        }
-        _ => bounds.push(low),
-    }
-    regions.push(region);
-    bounds.push(high);
-    regions.push(T::default());
+/// |cot theta| of an |eta|.
+pub(super) fn cot(eta: f64) -> f64 {
+    if eta.is_finite() { libm::sinh(eta) } else { f64::INFINITY }
 }
 
 fn cut_plan(cuts: &Cuts, channel: &Channel) -> CutPlan {

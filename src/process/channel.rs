@@ -22,6 +22,50 @@ impl Decay {
     }
 }
 
+/// What intermediate rows of an event file (status 2) count for in the choice of legs.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub enum Ancestry {
+    /// Legs that such rows decay to go first; without them, all final particles are looked at.
+    #[default]
+    Prefer,
+    /// Nothing: all final particles are looked at.
+    Ignore,
+    /// Everything: an event without such legs is skipped.
+    Require,
+}
+
+/// Which particles of an event file become legs where there is a choice.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub enum Pick {
+    /// The largest pT of each kind and charge.
+    #[default]
+    Hardest,
+    /// Those with the mass looked for: the two legs of a direct decay nearest to the mass point, the pairs of a cascade
+    /// nearest to the mass of V, by the [`Pairing`].
+    Nearest,
+}
+
+/// How legs of an event file are paired in a cascade.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub enum Pairing {
+    /// The pair nearest to the mass of V first; the other one is the hardest of what it leaves.
+    #[default]
+    NearestPair,
+    /// The two pairs with the smallest sum of distances from the mass of V.
+    NearestSum,
+}
+
+/// How the legs of a channel are chosen from the particles of an event file.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub struct LegChoice {
+    /// What intermediate rows count for.
+    pub ancestry: Ancestry,
+    /// Which particles are taken.
+    pub pick: Pick,
+    /// How they are paired in a cascade.
+    pub pairing: Pairing,
+}
+
 /// What an event must satisfy, in measured values except for the gap.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub struct Cuts {
@@ -64,8 +108,13 @@ pub struct Channel {
     pub name: String,
     /// The decay.
     pub decay: Decay,
+    /// How its legs are chosen from an event file; without meaning for generated events.
+    pub choice: LegChoice,
     /// What events must satisfy.
     pub cuts: Cuts,
+    /// How many legs the efficiency of the detector must find, as when a trigger on one lepton of four suffices: at least
+    /// this many, any of them; all without. A leg of an object without efficiency counts as found.
+    pub min_efficient_legs: Option<usize>,
     /// The axis of reconstructed mass.
     pub axis: MassAxis,
     /// The shape that the model fits.

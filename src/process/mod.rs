@@ -5,8 +5,8 @@ mod channel;
 mod resonance;
 
 pub use axis::MassAxis;
-pub use channel::{Category, Channel, Cuts, Decay, ShapeChoice};
-pub use resonance::{EventSource, Intermediate, Natural, Production, Resonance, SpectrumCell, Width};
+pub use channel::{Ancestry, Category, Channel, Cuts, Decay, LegChoice, Pairing, Pick, ShapeChoice};
+pub use resonance::{EventSource, Intermediate, Natural, Production, Radiation, Resonance, SpectrumCell, Width};
 
 use crate::detector::Detector;
 
@@ -23,6 +23,8 @@ pub struct Study {
     pub precision: f64,
     /// Most points per channel and mass.
     pub max_points: u64,
+    /// Calibration shifts that change |CDF| and relative acceptance by less are left out; 0 keeps all.
+    pub prune_shifts_below: f64,
     /// The resonance.
     pub resonance: Resonance,
     /// The channels.

@@ -75,6 +75,13 @@ pub struct Intermediate {
     pub width_gev: f64,
 }
 
+/// Final-state radiation of charged leptons.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Radiation {
+    /// Photons of an event file within this sqrt(d eta² + d phi²) of an electron or muon are added to it.
+    pub recombination_delta_r: f64,
+}
+
 /// The resonance that is studied.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Resonance {
@@ -90,4 +97,6 @@ pub struct Resonance {
     pub source: EventSource,
     /// The V of cascades.
     pub intermediate: Intermediate,
+    /// Radiation of charged leptons; without, the leptons of an event file are bare.
+    pub radiation: Option<Radiation>,
 }

@@ -1,9 +1,11 @@
 //! Templates: bin probabilities with errors, and their widths.
 
 mod cumulative;
+mod error;
 mod widths;
 
 pub use cumulative::{Cumulative, CumulativeError};
+pub use error::standard_error;
 pub use widths::{Measured, SIGMA_EFF_FRACTION, Widths};
 
 /// What one independent scrambling of the points gave; the spread over scramblings is the numerical error.
@@ -37,14 +39,21 @@ pub struct Template {
     pub below_axis: f64,
     /// Probability above the axis.
     pub above_axis: f64,
-    /// Sum of weights that pass cuts and category, over the sum of all generated weights.
+    /// Sum of weights that pass cuts and category, each times the event's efficiency, over the sum of all generated weights.
     pub acceptance: f64,
     /// Numerical standard error of the acceptance.
     pub acceptance_error: f64,
     /// Statistical standard error of the acceptance from the event list.
     pub acceptance_list_error: f64,
+    /// Accepted weight with over without the efficiency of the detector, which the acceptance includes; 1 for a detector
+    /// without, and where nothing passes the cuts.
+    pub efficiency: f64,
+    /// Numerical standard error of the efficiency.
+    pub efficiency_error: f64,
+    /// Statistical standard error of the efficiency from the event list.
+    pub efficiency_list_error: f64,
     /// Fraction of the generated weight that the measurement lost (no positive energy, wrong-sign curvature), of events
-    /// whose directions pass cuts and category.
+    /// whose directions pass cuts and category, with the efficiency.
     pub lost: f64,
     /// The independent scramblings that `error` comes from, at least 16.
     pub replicates: Vec<Replicate>,

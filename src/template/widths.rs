@@ -16,7 +16,7 @@
 //! and 1e-4. Bins of 0.4 core widths: 3e-3, 2e-3 and 2e-4 (0.08, 5e-3 and 5e-4). (`tests/template_widths.rs`.)
 
 use super::cumulative::{Cumulative, CumulativeError};
-use super::{Replicate, Template};
+use super::{Replicate, Template, standard_error};
 use crate::lineshape::widths::ONE_SIGMA;
 use crate::numerics::root;
 
@@ -76,6 +76,18 @@ impl Values {
     }
 }
 
+impl Cumulative {
+    /// Where the interpolated density is highest; `None` where that is not on the axis.
+    pub fn peak(&self) -> Option<f64> {
+        peak_and_fwhm(self).0
+    }
+
+    /// Half-width of the narrowest interval that holds [`SIGMA_EFF_FRACTION`] of the accepted events.
+    pub fn sigma_eff(&self) -> Option<f64> {
+        sigma_eff(self)
+    }
+}
+
 impl Template {
     /// Widths with their numerical errors.
     ///
@@ -91,7 +103,7 @@ impl Template {
         let measured = |k: usize| {
             let value = values.0[k];
             let spread: Option<Vec<f64>> = replicates.iter().map(|r| r.0[k]).collect();
-            let error = value.and(spread).and_then(|v| standard_error(&v));
+            let error = value.and(spread).and_then(|v| standard_error(v.iter().copied()));
             Measured { value, error }
         };
         Ok(Widths {
@@ -106,17 +118,6 @@ impl Template {
             monotone: cumulative.monotone(),
         })
     }
-}
-
-/// Standard error of the mean; `None` for less than two values.
-fn standard_error(values: &[f64]) -> Option<f64> {
-    if values.len() < 2 {
-        return None;
-    }
-    let n = values.len() as f64;
-    let mean = values.iter().sum::<f64>() / n;
-    let squares = values.iter().map(|v| (v - mean) * (v - mean)).sum::<f64>();
-    Some(f64::sqrt(squares / (n * (n - 1.0))))
 }
 
 /// Mean and standard deviation of the interpolated density on the axis.

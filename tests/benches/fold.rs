@@ -7,8 +7,8 @@
 use peakfold::detector::{Calorimeter, Detector, Direction, EtaRange, Object, Tail, Vertex};
 use peakfold::fold::fold_channel;
 use peakfold::process::{
-    Category, Channel, Cuts, Decay, EventSource, Intermediate, MassAxis, Natural, Production, Resonance, ShapeChoice,
-    Study, Width,
+    Category, Channel, Cuts, Decay, EventSource, Intermediate, LegChoice, MassAxis, Natural, Production, Resonance,
+    ShapeChoice, Study, Width,
 };
 use std::time::Instant;
 
@@ -52,10 +52,13 @@ fn study(precision: f64, tails: bool) -> Study {
                 spread_wrong_mm: 45.0,
                 uncertainties: Vec::new(),
             }),
+            efficiencies: Vec::new(),
+            covariances: Vec::new(),
         },
         seed: 1,
         precision,
         max_points: 1 << 30,
+        prune_shifts_below: 0.0,
         resonance: Resonance {
             masses_gev: vec![180.0],
             width: Width::Gev(0.0),
@@ -63,16 +66,19 @@ fn study(precision: f64, tails: bool) -> Study {
             falloff_power: 0.0,
             source: EventSource::Generated(Production::Spectrum { pt_mean_gev: 40.0, rapidity_sigma: 1.2 }),
             intermediate: Intermediate { mass_gev: 91.188, width_gev: 2.4955 },
+            radiation: None,
         },
         channels: vec![Channel {
             name: "two-photon".to_string(),
             decay: Decay::Direct(vec![Object::Photon, Object::Photon]),
+            choice: LegChoice::default(),
             cuts: Cuts {
                 max_abs_eta: Some(2.5),
                 gap_abs_eta: None,
                 min_pt_gev: Vec::new(),
                 min_pt_over_mass: vec![0.35, 0.25],
             },
+            min_efficient_legs: None,
             axis: MassAxis { low: 150.0, high: 210.0, bins: 200, relative: false },
             shape: ShapeChoice::DoubleCrystalBall,
             categories: vec![Category { name: "all".to_string(), max_abs_eta: None }],

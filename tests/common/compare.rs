@@ -129,6 +129,9 @@ pub fn template_of(plain: &PlainSample, category: usize, edges_gev: &[f64]) -> T
         acceptance,
         acceptance_error: (acceptance * (1.0 - acceptance) / events).sqrt(),
         acceptance_list_error: 0.0,
+        efficiency: 1.0,
+        efficiency_error: 0.0,
+        efficiency_list_error: 0.0,
         lost: sample.lost_weight / plain.generated_weight,
         replicates,
     }

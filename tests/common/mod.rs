@@ -13,8 +13,8 @@ use peakfold::detector::{
 };
 use peakfold::kinematics::{MAX_LEGS, TruthEvent, TruthLeg};
 use peakfold::process::{
-    Category, Channel, Cuts, Decay, EventSource, Intermediate, MassAxis, Natural, Production, Resonance, ShapeChoice,
-    Study, Width,
+    Category, Channel, Cuts, Decay, EventSource, Intermediate, LegChoice, MassAxis, Natural, Production, Resonance,
+    ShapeChoice, Study, Width,
 };
 
 /// A range that takes every leg.
@@ -62,6 +62,8 @@ pub fn empty_detector() -> Detector {
         trackers: Vec::new(),
         directions: Vec::new(),
         vertex: None,
+        efficiencies: Vec::new(),
+        covariances: Vec::new(),
     }
 }
 
@@ -70,7 +72,9 @@ pub fn channel(name: &str, decay: Decay) -> Channel {
     Channel {
         name: name.into(),
         decay,
+        choice: LegChoice::default(),
         cuts: Cuts::default(),
+        min_efficient_legs: None,
         axis: MassAxis { low: 0.8, high: 1.2, bins: 200, relative: true },
         shape: ShapeChoice::DoubleCrystalBall,
         categories: vec![Category { name: "all".into(), max_abs_eta: None }],
@@ -85,6 +89,7 @@ pub fn study(detector: Detector, mass_gev: f64, channel: Channel) -> Study {
         seed: 1,
         precision: 1e-4,
         max_points: 1 << 24,
+        prune_shifts_below: 0.0,
         resonance: Resonance {
             masses_gev: vec![mass_gev],
             width: Width::Gev(0.0),
@@ -92,6 +97,7 @@ pub fn study(detector: Detector, mass_gev: f64, channel: Channel) -> Study {
             falloff_power: 0.0,
             source: EventSource::Generated(Production::Spectrum { pt_mean_gev: 40.0, rapidity_sigma: 1.2 }),
             intermediate: Intermediate { mass_gev: 91.188, width_gev: 2.4955 },
+            radiation: None,
         },
         channels: vec![channel],
     }

@@ -5,6 +5,7 @@ usage: check_run.py PROGRAM RUN     RUN is the directory of a finished fold of g
 * numbers are the shortest that read back as the same value (Python's `repr` gives the shortest too);
 * edges of neighbouring bins are the same text; the bins and the parts outside of the axis add to 1;
 * the digests of `run.json` are those of the files;
+* the efficiency of `summary.csv` is a share, not below the acceptance, and without error where it is 1;
 * the widths of `summary.csv`, against SciPy: mean and standard deviation from the bin centres with Sheppard's correction
   (W. F. Sheppard, Proc. London Math. Soc. 29 (1898) 353), the others from a monotone cubic of the running sum.
 """
@@ -102,6 +103,15 @@ def check_widths(row, edges, probability):
     assert number(row["sigma_eff_gev"]) <= number(row["central_68_gev"]) * (1.0 + 1e-9), name
 
 
+def check_efficiency(key, row):
+    # Positive weights: a share of what passes the cuts. The acceptance includes it, so it cannot be larger.
+    efficiency, error = number(row["efficiency"]), number(row["efficiency_error"])
+    assert 0.0 <= efficiency <= 1.0 + 1e-12, (key, efficiency)
+    assert error >= 0.0 and number(row["efficiency_list_error"]) >= 0.0, key
+    assert number(row["acceptance"]) <= efficiency * (1.0 + 1e-12), (key, efficiency)
+    assert efficiency < 1.0 or error == 0.0, (key, error)
+
+
 def main():
     directory = pathlib.Path(sys.argv[2])
     run = json.loads((directory / "run.json").read_text(encoding="utf-8"))
@@ -119,6 +129,7 @@ def main():
         check_widths(row, edges, probability)
         near(f"{key}: fraction", number(row["sigma_eff_fraction"]), FRACTION, 1e-15)
         assert row["reached"] == "true" and number(row["precision_reached"]) <= run["precision"], key
+        check_efficiency(key, row)
         fold = (row["channel"], row["mass_gev"])
         accepted[fold] = accepted.get(fold, 0.0) + number(row["acceptance"])
     assert all(0.0 < share <= 1.0 for share in accepted.values()), accepted

@@ -1,14 +1,18 @@
 """Independent reading of Les Houches event files, with the standard library only.
 
-Written against the accord (J. Alwall et al., Comput. Phys. Commun. 176 (2007) 300), and against no other reader of this
-project. Prints one line for every event that serves a channel, and nothing for the others:
+Written against the accord (J. Alwall et al., Comput. Phys. Commun. 176 (2007) 300) and the documented rules for the choice of
+legs, and against no other reader of this project. Prints one line for every event that serves a channel, and nothing for the
+others:
 
     number channel weight mass px1 py1 pz1 m1 px2 py2 pz2 m2
 
 `number` counts all events from 1; events in which an incoming (-1), intermediate (2) or final (1) particle has a negative
 energy serve no channel; the negative lepton comes first; floats are printed as `float.hex`.
 
-usage: lhe_read.py FILE CHANNEL     (two-electron or two-muon)
+usage: lhe_read.py FILE CHANNEL ANCESTRY PICK DELTA_R
+
+CHANNEL is two-electron or two-muon, ANCESTRY prefer, ignore or require, PICK hardest or nearest (to 91.188 GeV), DELTA_R the
+distance up to which photons are added to leptons; 0: none are.
 """
 
 import gzip
@@ -59,53 +63,89 @@ def transverse(row):
     return math.hypot(row[6], row[7])
 
 
+def momentum(row):
+    """px, py, pz and the energy that follows from momentum and mass."""
+    p = row[6:9]
+    return (*p, math.sqrt(math.fsum(x * x for x in (*p, row[10]))))
+
+
 def mass_of(legs):
-    """Invariant mass by m² = sum of m_i² + 2 (E1 E2 - p1 p2), energies from momentum and mass."""
-    (a, b) = legs
-    energies = [math.sqrt(math.fsum(x * x for x in (l[6], l[7], l[8], l[10]))) for l in legs]
-    product = energies[0] * energies[1] - math.fsum(a[k] * b[k] for k in (6, 7, 8))
-    return math.sqrt(a[10] ** 2 + b[10] ** 2 + 2.0 * product)
+    """Invariant mass by m² = sum of m_i² + 2 (E1 E2 - p1 p2)."""
+    (a, b) = map(momentum, legs)
+    product = a[3] * b[3] - math.fsum(a[k] * b[k] for k in range(3))
+    return math.sqrt(legs[0][10] ** 2 + legs[1][10] ** 2 + 2.0 * product)
 
 
-def pick(rows, code):
+def dressed(rows, delta_r):
+    """The rows with each final photon added to the nearest final electron or muon within the distance."""
+
+    def direction(row):
+        return math.asinh(row[8] / transverse(row)), math.atan2(row[7], row[6])
+
+    parts = {i: [row] for i, row in enumerate(rows) if row[1] == 1 and abs(row[0]) in (11, 13)}
+    for photon in rows:
+        if photon[1] != 1 or photon[0] != 22:
+            continue
+        eta, phi = direction(photon)
+        distances = []
+        for i, (lepton, *_) in parts.items():
+            eta_l, phi_l = direction(lepton)
+            turn = math.remainder(phi - phi_l, 2.0 * math.pi)
+            distances.append((math.hypot(eta - eta_l, turn), i))
+        if distances and min(distances)[0] <= delta_r:
+            parts[min(distances)[1]].append(photon)
+    result = [list(row) for row in rows]
+    for i, group in parts.items():
+        if len(group) > 1:
+            vectors = [momentum(row) for row in group]
+            result[i][6:10] = [math.fsum(v[k] for v in vectors) for k in range(4)]
+            # m² = sum of m_i² + 2 sum over pairs of E_i E_j - p_i p_j, the latter by the angle between them.
+            square = math.fsum(row[10] ** 2 for row in group)
+            for k, a in enumerate(vectors):
+                for b in vectors[:k]:
+                    square += 2.0 * (a[3] * b[3] - math.fsum(a[n] * b[n] for n in range(3)))
+            result[i][10] = math.sqrt(square)
+    return result
+
+
+def pick(rows, code, ancestry, choice, delta_r):
     """The two legs and the truth mass, or None."""
     if any(row[9] < 0.0 for row in rows if row[1] in (-1, 1, 2)):
         return None
+    if delta_r > 0.0:
+        rows = dressed(rows, delta_r)
     final = [i for i in range(1, len(rows) + 1) if rows[i - 1][1] == 1]
+    families = {
+        i: [k for k in final if descends(rows, k, i)] for i in range(1, len(rows) + 1) if rows[i - 1][1] == 2
+    }
 
-    def pair(indices):
-        negative = [rows[i - 1] for i in indices if rows[i - 1][0] == code]
-        positive = [rows[i - 1] for i in indices if rows[i - 1][0] == -code]
-        if not negative or not positive:
-            return None
-        return max(negative, key=transverse), max(positive, key=transverse)
+    def score(pair):
+        legs = [rows[i - 1] for i in pair]
+        return -abs(mass_of(legs) - 91.188) if choice == "nearest" else sum(map(transverse, legs))
 
-    best = None
-    for resonance in range(1, len(rows) + 1):
-        if rows[resonance - 1][1] != 2:
-            continue
-        below = [i for i in final if descends(rows, i, resonance)]
-        leptons = [i for i in below if abs(rows[i - 1][0]) == code]
-        others = [i for i in below if abs(rows[i - 1][0]) != code]
-        if len(leptons) != 2 or any(rows[i - 1][0] != 22 for i in others):
-            continue
-        legs = pair(leptons)
-        if legs is None:
-            continue
-        score = transverse(legs[0]) + transverse(legs[1])
-        if best is None or score > best[0]:
-            mass = mass_of(legs) if others else rows[resonance - 1][10]
-            best = (score, legs, mass)
-    if best is not None:
-        return best[1], best[2]
-    legs = pair(final)
-    return None if legs is None else (legs, mass_of(legs))
+    def best(indices):
+        pairs = [(a, b) for a in indices if rows[a - 1][0] == code for b in indices if rows[b - 1][0] == -code]
+        return max(pairs, key=score, default=None)
+
+    def is_pair_of(pair, family):
+        return set(pair) <= set(family) and all(i in pair or rows[i - 1][0] == 22 for i in family)
+
+    of_rows = [(best(family), family) for family in families.values()]
+    of_rows = [pair for pair, family in of_rows if pair is not None and is_pair_of(pair, family)]
+    found = max(of_rows, key=score, default=None) if ancestry != "ignore" else None
+    if found is None and ancestry != "require":
+        found = best(final)
+    if found is None:
+        return None
+    legs = [rows[i - 1] for i in found]
+    sizes = [(len(family), row) for row, family in families.items() if is_pair_of(found, family)]
+    return legs, rows[min(sizes)[1] - 1][10] if sizes else mass_of(legs)
 
 
 def main():
-    path, channel = sys.argv[1:]
+    path, channel, ancestry, choice, delta_r = sys.argv[1:]
     for number, (weight, rows) in enumerate(events(text_of(path)), start=1):
-        found = pick(rows, LEPTON[channel])
+        found = pick(rows, LEPTON[channel], ancestry, choice, float(delta_r))
         if found is None:
             continue
         legs, mass = found

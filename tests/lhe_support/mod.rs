@@ -1,6 +1,8 @@
 //! What the tests of event files share.
 #![allow(dead_code, clippy::unwrap_used, clippy::expect_used, clippy::panic)]
 
+pub mod made;
+
 use std::io::Read;
 use std::path::{Path, PathBuf};
 

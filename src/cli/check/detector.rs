@@ -1,11 +1,16 @@
 //! The detector in words: regions with their resolution at typical energies.
 
-use super::text::wrapped;
-use crate::detector::{Calorimeter, Detector, EtaRange, Object, Tracker, TrackerResolution, Uncertainty};
+use super::text::{plural, wrapped};
+use crate::detector::{
+    Calorimeter, Detector, Efficiency, EfficiencyCurve, EtaRange, Object, Tracker, TrackerResolution, Uncertainty,
+};
 use std::fmt::Write as _;
 
 /// Energies in GeV at which the resolution of a calorimeter is given.
 const ENERGIES_GEV: [f64; 4] = [10.0, 50.0, 100.0, 200.0];
+
+/// Transverse momenta in GeV at which the efficiency is given.
+const THRESHOLDS_GEV: [f64; 4] = [10.0, 20.0, 50.0, 100.0];
 
 /// Transverse momenta in GeV at which the resolution of a tracker is given.
 const MOMENTA_GEV: [f64; 4] = [10.0, 50.0, 100.0, 500.0];
@@ -15,10 +20,12 @@ pub fn describe(report: &mut String, detector: &Detector) {
     report.push('\n');
     wrapped(report, "detector ", "  ", &format!("\"{}\"", detector.name));
     let names = detector.calorimeters.iter().map(|c| &c.name).chain(detector.trackers.iter().map(|t| &t.name));
+    let names = names.chain(detector.efficiencies.iter().map(|e| &e.name));
     let table = Table { name_width: names.map(|name| name.chars().count()).max().unwrap_or(0).clamp(6, 38) };
     for object in Object::ALL {
         calorimeter_text(report, detector, object, &table);
         tracker_text(report, detector, object, &table);
+        efficiency_text(report, detector, object, &table);
         for direction in detector.directions.iter().filter(|direction| direction.object == object) {
             let text =
                 format!("theta to {} mrad, phi to {} mrad", direction.sigma_theta_mrad, direction.sigma_phi_mrad);
@@ -124,6 +131,40 @@ fn tracker_details(entry: &Tracker) -> [String; 2] {
         ),
     };
     [resolution, off_centre(0.0, entry.scale)]
+}
+
+fn efficiency_text(report: &mut String, detector: &Detector, object: Object, table: &Table) {
+    let (Some(first), Some(last)) =
+        (detector.coverage(object).first().copied(), detector.coverage(object).last().copied())
+    else {
+        return;
+    };
+    let mut header = false;
+    for region in detector.efficiency_regions(object) {
+        // Only where the object is measured.
+        let eta = EtaRange { low: region.eta.low.max(first.low), high: region.eta.high.min(last.high) };
+        let (true, Some(entry)) = (eta.low < eta.high, detector.efficiencies.get(region.entry)) else { continue };
+        if !header {
+            table.header(report, &format!("{object} efficiency, in the middle of the region"), "pT", THRESHOLDS_GEV);
+            header = true;
+        }
+        let middle = 0.5 * (eta.low + eta.high);
+        table.row(report, eta, &entry.name, THRESHOLDS_GEV.map(|pt| entry.curve.at(pt, middle)));
+        table.details(report, &[efficiency_details(entry)], &known_to(&entry.uncertainties));
+    }
+}
+
+fn efficiency_details(entry: &Efficiency) -> String {
+    match &entry.curve {
+        EfficiencyCurve::TurnOn { threshold_gev, width_gev, plateau } => {
+            format!("half of the plateau {plateau} at {threshold_gev} GeV, turn-on width {width_gev} GeV")
+        }
+        EfficiencyCurve::Table(cells) => {
+            let low = cells.iter().map(|cell| cell.pt_gev.0).fold(f64::INFINITY, f64::min);
+            let high = cells.iter().map(|cell| cell.pt_gev.1).fold(0.0, f64::max);
+            format!("a table of {}, pT {low} to {high} GeV; 0 outside of its cells", plural(cells.len(), "cell"))
+        }
+    }
 }
 
 fn vertex_text(report: &mut String, detector: &Detector) {

@@ -44,7 +44,7 @@ fn describe(path: &Path, study: &Study, costs: &[cost::Cost], warnings: &[Proble
     study_text(&mut report, path, study);
     detector::describe(&mut report, &study.detector);
     for channel in &study.channels {
-        channel::describe(&mut report, channel, &study.resonance.masses_gev);
+        channel::describe(&mut report, channel, &study.detector, &study.resonance);
     }
     cost::describe(&mut report, study, costs);
     if warnings.is_empty() {

@@ -1,9 +1,9 @@
-//! Final particles as candidates for legs, and the choice among them.
+//! Final particles as candidates for legs, and the hardest among them.
 
 use super::Skip;
 use crate::detector::Object;
 use crate::events::raw::{FINAL, Particle};
-use crate::kinematics::TruthLeg;
+use crate::kinematics::{FourVector, TruthLeg};
 
 /// What a particle is reconstructed as, with its charge where the choice looks at it (leptons; 0 otherwise).
 ///
@@ -11,7 +11,7 @@ use crate::kinematics::TruthLeg;
 /// top quark, neutrinos and taus are no legs.
 pub(super) fn object_of(code: i64) -> Option<(Object, i8)> {
     match code {
-        22 => Some((Object::Photon, 0)),
+        PHOTON => Some((Object::Photon, 0)),
         11 => Some((Object::Electron, -1)),
         -11 => Some((Object::Electron, 1)),
         13 => Some((Object::Muon, -1)),
@@ -21,10 +21,8 @@ pub(super) fn object_of(code: i64) -> Option<(Object, i8)> {
     }
 }
 
-/// The leg that a final particle becomes. Photons that a lepton has radiated would be added to it here.
-pub(super) fn leg_of(particle: &Particle) -> TruthLeg {
-    TruthLeg { px_gev: particle.px, py_gev: particle.py, pz_gev: particle.pz, mass_gev: particle.mass }
-}
+/// Particle code of the photon.
+pub(super) const PHOTON: i64 = 22;
 
 /// A final particle that can be a leg.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -35,19 +33,33 @@ pub(super) struct Candidate {
     pub object: Object,
     /// Charge of a lepton.
     pub charge: i8,
-    /// Transverse momentum in GeV.
+    /// Transverse momentum of the leg, in GeV.
     pub pt: f64,
+    /// The leg that it becomes.
+    pub leg: TruthLeg,
 }
 
 impl Candidate {
     /// The candidate of a row, if it is a final particle that can be a leg.
     pub(super) fn of_row(row: usize, particle: &Particle) -> Option<Self> {
         let (object, charge) = object_of(particle.code).filter(|_| particle.status == FINAL)?;
-        Some(Candidate { row, object, charge, pt: particle.pt() })
+        let leg = TruthLeg { px_gev: particle.px, py_gev: particle.py, pz_gev: particle.pz, mass_gev: particle.mass };
+        Some(Candidate { row, object, charge, pt: particle.pt(), leg })
+    }
+
+    /// Whether it is an electron or a muon.
+    pub(super) fn is_lepton(&self) -> bool {
+        matches!(self.object, Object::Electron | Object::Muon)
+    }
+
+    /// The same particle with another momentum and mass.
+    pub(super) fn with_vector(self, vector: &FourVector) -> Self {
+        let leg = TruthLeg { px_gev: vector.px, py_gev: vector.py, pz_gev: vector.pz, mass_gev: vector.mass() };
+        Candidate { pt: vector.pt(), leg, ..self }
     }
 }
 
-/// Chooses legs for the wanted objects, in their order.
+/// Chooses the hardest legs for the wanted objects, in their order.
 ///
 /// Of each kind the hardest (largest pT; the earlier row at equal pT). Leptons of one kind alternate between negative and
 /// positive, each the hardest of its charge. One electron and one muon that are left over are of opposite charge, and have
@@ -70,16 +82,8 @@ pub(super) fn choose(candidates: &[Candidate], wanted: &[Object]) -> Result<Vec<
         (1, 0) | (0, 1) => &[[-1, -1], [1, 1]],
         _ => &[[0, 0]],
     };
-    let mut best: Option<(f64, Vec<Candidate>)> = None;
-    for charges in single_charges {
-        if let Some(chosen) = fill(candidates, wanted, *charges) {
-            let sum: f64 = chosen.iter().map(|c| c.pt).sum();
-            if best.as_ref().is_none_or(|(largest, _)| sum > *largest) {
-                best = Some((sum, chosen));
-            }
-        }
-    }
-    best.map(|(_, chosen)| chosen).ok_or(Skip::Charge)
+    let filled = single_charges.iter().filter_map(|charges| fill(candidates, wanted, *charges));
+    best(filled, |chosen| pt_sum(chosen)).ok_or(Skip::Charge)
 }
 
 /// Fills the wanted objects one after the other; `single_charges` are those of an electron and a muon without partner.
@@ -95,19 +99,36 @@ fn fill(candidates: &[Candidate], wanted: &[Object], single_charges: [i8; 2]) ->
             _ if number % 2 == 0 => -1,
             _ => 1,
         };
-        let free = candidates
-            .iter()
-            .filter(|c| c.object == *object && c.charge == charge && chosen.iter().all(|taken| taken.row != c.row));
-        let hardest = free.fold(None, |best: Option<&Candidate>, c| match best {
-            Some(b) if b.pt >= c.pt => Some(b),
-            _ => Some(c),
-        });
-        chosen.push(*hardest?);
+        let free = candidates.iter().filter(|c| c.object == *object && c.charge == charge && !holds(&chosen, c));
+        chosen.push(*best(free, |c| c.pt)?);
     }
     Some(chosen)
 }
 
-/// Whether two legs can come from one neutral particle.
-pub(super) fn neutral_pair(a: &Candidate, b: &Candidate) -> bool {
-    a.charge + b.charge == 0 || (a.charge == 0 || b.charge == 0)
+/// The item with the largest score; the first one of equals.
+pub(super) fn best<T>(items: impl Iterator<Item = T>, score: impl Fn(&T) -> f64) -> Option<T> {
+    items
+        .map(|item| (score(&item), item))
+        .reduce(|best, next| if next.0 > best.0 { next } else { best })
+        .map(|(_, item)| item)
+}
+
+/// Whether a candidate is among others.
+pub(super) fn holds(legs: &[Candidate], candidate: &Candidate) -> bool {
+    legs.iter().any(|leg| leg.row == candidate.row)
+}
+
+/// What is left of candidates without some of them.
+pub(super) fn without(candidates: &[Candidate], taken: &[Candidate]) -> Vec<Candidate> {
+    candidates.iter().copied().filter(|candidate| !holds(taken, candidate)).collect()
+}
+
+/// Sum of the transverse momenta in GeV.
+pub(super) fn pt_sum(legs: &[Candidate]) -> f64 {
+    legs.iter().map(|leg| leg.pt).sum()
+}
+
+/// Invariant mass in GeV.
+pub(super) fn invariant_mass(legs: &[Candidate]) -> f64 {
+    legs.iter().fold(FourVector::default(), |sum, leg| sum + leg.leg.four_vector()).mass()
 }

@@ -14,7 +14,7 @@ pub struct Selection {
     /// Events used.
     pub used: u64,
     /// Events skipped, by the reasons of [`Skip::ALL`], with the first line of each.
-    pub skipped: [Tally; 6],
+    pub skipped: [Tally; 7],
     /// Used events of negative weight.
     pub negative_weights: u64,
     /// Sum of the weights of the used events.

@@ -1,6 +1,6 @@
 //! Which final particles come from which resonance row.
 
-use super::legs::Candidate;
+use super::legs::{Candidate, PHOTON};
 use crate::events::raw::{FINAL, Particle, RESONANCE};
 
 /// A resonance row with the final particles that descend from it.
@@ -58,8 +58,17 @@ fn family_of(families: &mut [Family], row: usize) -> Option<&mut Family> {
 }
 
 impl Family {
-    /// Whether the final descendants are exactly these legs.
-    pub(super) fn is_exactly(&self, legs: &[Candidate]) -> bool {
-        self.finals.len() == legs.len() && legs.iter().all(|leg| self.finals.contains(&leg.row))
+    /// The final descendants, if all of them can be legs.
+    pub(super) fn members(&self, candidates: &[Candidate]) -> Option<Vec<Candidate>> {
+        let members: Vec<Candidate> = candidates.iter().copied().filter(|c| self.finals.contains(&c.row)).collect();
+        (members.len() == self.finals.len()).then_some(members)
+    }
+
+    /// Whether the final descendants are these legs and, possibly, further photons.
+    pub(super) fn is_whole(&self, legs: &[Candidate], particles: &[Particle]) -> bool {
+        let is_leg = |row: usize| legs.iter().any(|leg| leg.row == row);
+        let is_photon = |row: usize| particles.get(row).is_some_and(|particle| particle.code == PHOTON);
+        legs.iter().all(|leg| self.finals.contains(&leg.row))
+            && self.finals.iter().all(|row| is_leg(*row) || is_photon(*row))
     }
 }

@@ -11,12 +11,14 @@
 //!   generated only.
 //! * An event is *lost* when its directions pass cuts and category, but a calorimeter measured no positive energy, a
 //!   tracker the wrong sign of curvature, or a leg's measured energy does not exceed its mass.
+//! * An event of which too few legs are found (efficiency) is neither lost nor accepted.
 //! * An event is *accepted* in the first category whose requirements it meets, when it passes all cuts.
 //!
 //! The same seed gives the same result for any number of threads.
 
 mod decay;
 mod detect;
+mod efficiency;
 mod generate;
 mod natural;
 mod select;
@@ -32,6 +34,7 @@ use rayon::prelude::*;
 use crate::kinematics::TruthEvent;
 use crate::process::{Channel, Study};
 use detect::{LegOutcome, MeasuredLeg, Measurement};
+use efficiency::Finding;
 use generate::Generator;
 use select::{category_of_directions, energies_pass, in_gap};
 
@@ -96,6 +99,8 @@ pub struct PlainCategory {
     pub lost: u64,
     /// Sum of their weights.
     pub lost_weight: f64,
+    /// Sum of the weights of the events that would be accepted at an efficiency of 1.
+    pub unfiltered_weight: f64,
 }
 
 impl PlainCategory {
@@ -137,6 +142,7 @@ impl PlainSample {
             mine.weights.extend(theirs.weights);
             mine.lost += theirs.lost;
             mine.lost_weight += theirs.lost_weight;
+            mine.unfiltered_weight += theirs.unfiltered_weight;
         }
     }
 }
@@ -154,10 +160,10 @@ pub fn smear_generated(
 ) -> Result<PlainSample, PlainError> {
     let chosen = channel_of(study, channel)?;
     let generator = Generator::new(study, chosen, mass_gev)?;
-    let measurement = Measurement::new(&study.detector, &chosen.decay.legs());
+    let smearing = Smearing::new(study, chosen);
     Ok(in_chunks(events, chosen, seed, |_, rng, sample| {
         let event = generator.event(rng);
-        smear_one(chosen, &measurement, &event, rng, sample);
+        smearing.smear(&event, rng, sample);
     }))
 }
 
@@ -198,10 +204,10 @@ pub fn smear_events(
             expected: objects.len(),
         });
     }
-    let measurement = Measurement::new(&study.detector, &objects);
+    let smearing = Smearing::new(study, chosen);
     let total = events.len() as u64 * per_event;
     Ok(in_chunks(total, chosen, seed, |number, rng, sample| {
-        smear_one(chosen, &measurement, &events[(number / per_event) as usize], rng, sample);
+        smearing.smear(&events[(number / per_event) as usize], rng, sample);
     }))
 }
 
@@ -238,42 +244,59 @@ where
     whole
 }
 
-fn smear_one(
-    channel: &Channel,
-    measurement: &Measurement<'_>,
-    event: &TruthEvent,
-    rng: &mut StdRng,
-    sample: &mut PlainSample,
-) {
-    sample.generated += 1;
-    sample.generated_weight += event.weight;
-    sample.generated_weight_squared += event.weight * event.weight;
+/// What happens to one event of a channel.
+struct Smearing<'a> {
+    channel: &'a Channel,
+    measurement: Measurement<'a>,
+    finding: Finding<'a>,
+}
 
-    let truth = &event.legs[..event.leg_count];
-    if in_gap(&channel.cuts, truth) {
-        return;
-    }
-    let Some(outcomes) = measurement.measure(truth, rng) else { return };
-    let outcomes = &outcomes[..truth.len()];
-    let Some(index) = category_of_directions(channel, outcomes) else { return };
-
-    let category = &mut sample.categories[index];
-    let mut legs = [MeasuredLeg::default(); crate::kinematics::MAX_LEGS];
-    for (leg, outcome) in legs.iter_mut().zip(outcomes) {
-        match outcome {
-            LegOutcome::Measured(measured) => *leg = *measured,
-            LegOutcome::Lost { .. } => {
-                category.lost += 1;
-                category.lost_weight += event.weight;
-                return;
-            }
+impl<'a> Smearing<'a> {
+    fn new(study: &'a Study, channel: &'a Channel) -> Self {
+        Smearing {
+            channel,
+            measurement: Measurement::new(&study.detector, &channel.decay.legs()),
+            finding: Finding::new(&study.detector, channel),
         }
     }
-    let legs = &legs[..truth.len()];
-    let total: nalgebra::Vector4<f64> = legs.iter().map(MeasuredLeg::four_vector).sum();
-    let mass = (total[0] * total[0] - total.fixed_rows::<3>(1).norm_squared()).max(0.0).sqrt();
-    if energies_pass(&channel.cuts, legs, mass) {
-        category.masses_gev.push(mass);
-        category.weights.push(event.weight);
+
+    fn smear(&self, event: &TruthEvent, rng: &mut StdRng, sample: &mut PlainSample) {
+        sample.generated += 1;
+        sample.generated_weight += event.weight;
+        sample.generated_weight_squared += event.weight * event.weight;
+
+        let truth = &event.legs[..event.leg_count];
+        if in_gap(&self.channel.cuts, truth) {
+            return;
+        }
+        let Some(outcomes) = self.measurement.measure(truth, rng) else { return };
+        let outcomes = &outcomes[..truth.len()];
+        let Some(index) = category_of_directions(self.channel, outcomes) else { return };
+
+        let category = &mut sample.categories[index];
+        let found = self.finding.found(truth, rng);
+        let mut legs = [MeasuredLeg::default(); crate::kinematics::MAX_LEGS];
+        for (leg, outcome) in legs.iter_mut().zip(outcomes) {
+            match outcome {
+                LegOutcome::Measured(measured) => *leg = *measured,
+                LegOutcome::Lost { .. } => {
+                    if found {
+                        category.lost += 1;
+                        category.lost_weight += event.weight;
+                    }
+                    return;
+                }
+            }
+        }
+        let legs = &legs[..truth.len()];
+        let total: nalgebra::Vector4<f64> = legs.iter().map(MeasuredLeg::four_vector).sum();
+        let mass = (total[0] * total[0] - total.fixed_rows::<3>(1).norm_squared()).max(0.0).sqrt();
+        if energies_pass(&self.channel.cuts, legs, mass) {
+            category.unfiltered_weight += event.weight;
+            if found {
+                category.masses_gev.push(mass);
+                category.weights.push(event.weight);
+            }
+        }
     }
 }
