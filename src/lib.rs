@@ -14,7 +14,8 @@
 //! # Rooms
 //!
 //! A module imports only from modules that stand before it in this list: [`problem`], [`numerics`], [`kinematics`], [`lineshape`],
-//! [`fit`], [`detector`], [`process`], [`events`], [`template`], [`fold`], [`shift`], [`files`], [`draw`], [`cli`].
+//! [`fit`], [`detector`], [`process`], [`events`], [`template`], [`fold`], [`shift`], [`model`], [`files`], [`draw`],
+//! [`cli`].
 
 pub mod problem;
 
@@ -36,6 +37,7 @@ pub mod template;
 
 pub mod fold;
 
+pub mod model;
 pub mod shift;
 
 pub mod files;

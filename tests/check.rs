@@ -154,10 +154,10 @@ channel four-lepton: X -> V V(*), V -> electron electron, V -> muon muon
     to                 290       290
     bin width          2.5       2.5
 
-cost, with points for one mass and time for all; points and time are estimates
-  channel      templates   points at most        points    CPU time
-  two-photon 4 1,048,576 ~
-  four-lepton 2 1,048,576 ~
+cost, with the points of one nominal template and the time of all masses and shifts; points and time are estimates
+  channel      templates  shifts   points at most        points    CPU time
+  two-photon 4 2 1,048,576 ~
+  four-lepton 2 0 1,048,576 ~
   estimated time: ~ with 2 threads, from coarse folds and error ~ points^-0.6
 
 no problems
@@ -355,4 +355,124 @@ fn a_reader_that_stops_early_is_no_failure() {
     let output = child.wait_with_output().unwrap();
     assert_eq!(stderr(&output), "");
     assert_eq!(output.status.code(), Some(0));
+}
+
+/// A study of events from a file, in two channels.
+fn list_study(events: &str) -> String {
+    let study = STUDY
+        .replace("production = { pt_mean_gev = 40.0, rapidity_sigma = 1.2 }", &format!("events = \"{events}\""))
+        .replace("[125.0, 250.0]", "[125.0]")
+        .replace("via = [[\"electron\", \"electron\"], [\"muon\", \"muon\"]]", "legs = [\"muon\", \"muon\"]")
+        .replace("four-lepton", "two-muon");
+    study.replace("min_pt_gev = [20.0, 10.0]\n", "")
+}
+
+/// Five events: two of two photons (m² = 2 pT1 pT2 (cosh(d eta) - cos(d phi)) = 50² 4 and 60² 4), two of two muons, one of them
+/// with its true mass, and one photon alone.
+const EVENTS_CSV: &str = "event,code,pt_gev,eta,phi_rad,weight,true_mass_gev\n\
+                          1,22,50,0,0,2,\n1,22,50,0,3.141592653589793,2,\n\
+                          2,22,60,0,0,-0.5,\n2,22,60,0,3.141592653589793,-0.5,\n\
+                          3,13,50,0.5,0,1,125.5\n3,-13,50,-0.5,3,1,125.5\n\
+                          4,13,40,0,0,1,130.25\n4,-13,40,0.25,3,1,130.25\n\
+                          5,22,10,0,0,1,\n";
+
+const EXPECTED_CSV: &str = "events, of 5 in the file; true mass in GeV
+  channel           used     skipped    weight sum   effective  mass from         to
+  two-photon           2           3           1.5    0.529412        100        120
+  two-muon             2           3             2           2      125.5     130.25
+  two-photon: 1 of the events used have a negative weight
+  two-photon: 2 skipped, no particle of a kind that the channel needs (first at line 6)
+  two-photon: 1 skipped, too few particles of a kind (first at line 10)
+  two-muon: 3 skipped, no particle of a kind that the channel needs (first at line 2)
+";
+
+/// The part of a report between the channels and the cost, and the whole report without it.
+fn events_part(report: &str) -> (String, String) {
+    let begin = report.find("events, of ").unwrap();
+    let end = report.find("\ncost, ").unwrap();
+    (report[begin..end].to_owned(), format!("{}{}", &report[..begin], &report[end + 1..]))
+}
+
+#[test]
+fn says_what_a_file_of_events_holds() {
+    let directory = tempfile::tempdir().unwrap();
+    write_study(directory.path(), DETECTOR, &list_study("truth.csv"));
+    std::fs::write(directory.path().join("truth.csv"), EVENTS_CSV).unwrap();
+    let output = peakfold(directory.path(), &["check", "study.toml"]);
+    assert_eq!(stderr(&output), "");
+    assert_eq!(output.status.code(), Some(0));
+    let (part, rest) = events_part(&stdout(&output));
+    // Effective: (2 - 0.5)²/(2² + 0.5²) = 2.25/4.25.
+    assert_eq!(part, EXPECTED_CSV);
+    // The rest is the report of a generated study but for what the study says differently.
+    let (rest, points) = without_estimates(&rest, &["two-photon", "two-muon"]);
+    assert_eq!(points.len(), 2);
+    let generated = "generated: exponential pT of mean 40 GeV, Gaussian rapidity of standard deviation 1.2";
+    let head = EXPECTED
+        .split("\nchannel four-lepton")
+        .next()
+        .unwrap()
+        .replace("masses      125, 250 GeV", "masses      125 GeV")
+        .replace(generated, "read from truth.csv")
+        .replace("  cascade V   91.188 GeV with a width of 2.4955 GeV\n", "")
+        .replace("       250\n    from               100       200", "\n    from               100")
+        .replace("       300\n    bin width          0.5         1", "\n    bin width          0.5");
+    assert!(rest.starts_with(&head), "{rest}\n{head}");
+    assert!(rest.ends_with("no problems\n"));
+    for line in stdout(&output).lines() {
+        assert!(line.chars().count() <= 100, "too long: {line}");
+    }
+}
+
+#[test]
+fn the_same_for_les_houches_events() {
+    let directory = tempfile::tempdir().unwrap();
+    let sample = |name: &str| {
+        std::fs::read_to_string(Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/lhe").join(name)).unwrap()
+    };
+    // Three events of two photons at 125 GeV with a named weight: 44.1, -43.9 and 44, of which 44.2²/5808.02 count; no muons.
+    std::fs::write(directory.path().join("truth.lhe"), sample("x_gammagamma_v3weights.lhe")).unwrap();
+    let study = list_study("truth.lhe").replace("events = ", "weight = \"1002\"\nevents = ");
+    let (one, two) = (study.find("[[channel]]\nname = \"two-muon\"").unwrap(), study.len());
+    let photons = study[..one].to_owned() + &study[two..];
+    write_study(directory.path(), DETECTOR, &photons);
+    let output = peakfold(directory.path(), &["check", "study.toml"]);
+    assert_eq!(stderr(&output), "");
+    assert!(stdout(&output).contains("  events      read from truth.lhe, weight `1002`\n"), "{}", stdout(&output));
+    let expected = "events, of 3 in the file; true mass in GeV
+  channel           used     skipped    weight sum   effective  mass from         to
+  two-photon           3           0          44.2    0.336369        125        125
+  two-photon: 1 of the events used have a negative weight
+";
+    assert_eq!(events_part(&stdout(&output)).0, expected);
+    // A channel that no event serves is refused, with the reasons; a bad event is counted.
+    write_study(directory.path(), DETECTOR, &study);
+    let output = peakfold(directory.path(), &["check", "study.toml"]);
+    assert_eq!(output.status.code(), Some(1));
+    assert_eq!(stdout(&output), "");
+    assert!(
+        stderr(&output).contains("truth.lhe: no event serves channel `two-muon` (3: no particle"),
+        "{}",
+        stderr(&output)
+    );
+}
+
+#[test]
+fn kinematic_problems_are_counted() {
+    let directory = tempfile::tempdir().unwrap();
+    write_study(directory.path(), DETECTOR, &list_study("truth.csv"));
+    let mut text = EVENTS_CSV.to_owned();
+    for event in 6..200 {
+        text += &format!("{event},22,10,0,0,1,\n");
+    }
+    text += "200,22,-10,0,0,1,\n";
+    std::fs::write(directory.path().join("truth.csv"), text).unwrap();
+    let output = peakfold(directory.path(), &["check", "study.toml"]);
+    let said = stdout(&output);
+    for part in [
+        "two-muon: 1 skipped, kinematics that contradict themselves (first at line 205)",
+        "note: 1 of 200 events were left out because they contradict themselves: 1 x an energy, a",
+    ] {
+        assert!(said.contains(part), "{part}: {said}");
+    }
 }

@@ -4,11 +4,11 @@
 mod common;
 
 use peakfold::detector::{Efficiency, EfficiencyCell, EfficiencyCurve, EtaRange, Object};
-use peakfold::events::lhe::{EventFile, Options};
 use peakfold::events::{EventBatch, Selector};
+use peakfold::events::{EventFile, Options};
 use peakfold::fold::{Folded, fold_channel, fold_shifted, plain};
 use peakfold::kinematics::TruthEvent;
-use peakfold::process::{Decay, EventSource, MassAxis, Natural, Study, Width};
+use peakfold::process::{Decay, EventList, EventSource, MassAxis, Natural, Study, Width};
 use peakfold::template::Template;
 use quadrature::integrate;
 use std::path::{Path, PathBuf};
@@ -282,7 +282,7 @@ fn a_list_has_the_weighted_mean_of_its_efficiencies() {
     let mut channel = common::channel("pair", Decay::Direct(vec![Object::Muon; 2]));
     channel.axis = MassAxis { low: 60.0, high: 120.0, bins: 60, relative: false };
     let mut study = common::study(detector, 91.188, channel);
-    study.resonance.source = EventSource::File(extract());
+    study.resonance.source = EventSource::File(EventList { path: extract(), weight: None });
     study.precision = 1e-2;
     let before = fold(&study);
     for wanted in [1, 2] {

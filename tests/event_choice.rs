@@ -1,6 +1,6 @@
 //! How legs are chosen where an event leaves a choice: ancestry, pick and pairing, each against the documented rule, on events
 //! built here and against a search through all combinations.
-#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic)]
+#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic, clippy::approx_constant)]
 
 mod lhe_support;
 
@@ -204,7 +204,7 @@ impl Random {
     }
 
     fn leg(&mut self, code: i64) -> Particle {
-        let (pt, phi, pz) = (5.0 + 60.0 * self.next(), std::f64::consts::TAU * self.next(), 80.0 * (self.next() - 0.5));
+        let (pt, phi, pz) = (5.0 + 60.0 * self.next(), 6.283 * self.next(), 80.0 * (self.next() - 0.5));
         row(code, FINAL, 0, [pt * phi.cos(), pt * phi.sin(), pz], 0.0)
     }
 }

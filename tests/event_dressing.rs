@@ -10,7 +10,7 @@ use peakfold::detector::Object::{self, Electron, Muon, Photon};
 use peakfold::events::{FINAL, Particle, RESONANCE, Selector};
 use peakfold::fold::fold_channel;
 use peakfold::kinematics::{TruthEvent, TruthLeg};
-use peakfold::process::{Decay, EventSource, MassAxis, Radiation, Study};
+use peakfold::process::{Decay, EventList, EventSource, MassAxis, Radiation, Study};
 
 /// A particle by pT, pseudorapidity and azimuth.
 fn at(code: i64, mother: u32, pt: f64, eta: f64, phi: f64) -> Particle {
@@ -221,7 +221,7 @@ fn a_fold_of_dressed_and_bare_leptons() {
     let mut channel = common::channel("pair", Decay::Direct(vec![Electron; 2]));
     channel.axis = MassAxis { low: 0.8, high: 1.1, bins: 300, relative: true };
     let mut study = common::study(detector, mass, channel);
-    study.resonance.source = EventSource::File(path);
+    study.resonance.source = EventSource::File(EventList { path, weight: None });
     study.precision = 1e-3;
     let mean = |study: &Study| {
         let folded = fold_channel(study, 0, mass, &|_| ()).unwrap();

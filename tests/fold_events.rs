@@ -2,13 +2,14 @@
 #![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic)]
 
 mod common;
+mod lhe_support;
 
 use peakfold::detector::{EtaRange, Object};
-use peakfold::events::lhe::{EventFile, Options};
 use peakfold::events::{EventBatch, Selector};
+use peakfold::events::{EventFile, Options};
 use peakfold::fold::{FoldError, Folded, fold_channel, plain};
 use peakfold::kinematics::TruthEvent;
-use peakfold::process::{Decay, EventSource, MassAxis, Study};
+use peakfold::process::{Decay, EventList, EventSource, MassAxis, Study};
 use std::path::{Path, PathBuf};
 
 /// 200 events of `dilepton_events.lhe.gz` (open test data from scikit-hep-testdata, BSD-3).
@@ -33,7 +34,7 @@ fn study(object: Object, path: &Path) -> Study {
     let mut channel = common::channel("pair", Decay::Direct(vec![object; 2]));
     channel.axis = MassAxis { low: 70.0, high: 110.0, bins: 160, relative: false };
     let mut study = common::study(detector, 91.188, channel);
-    study.resonance.source = EventSource::File(path.to_path_buf());
+    study.resonance.source = EventSource::File(EventList { path: path.to_path_buf(), weight: None });
     study.precision = 1e-3;
     study
 }
@@ -199,4 +200,100 @@ fn threads_do_not_change_a_bit() {
         pool.install(|| fold(&study)).templates
     };
     assert_eq!(with(1), with(3));
+}
+
+/// The extract with every event written `copies` times, in one group or not, and all of it `repeats` times.
+fn copied(copies: usize, grouped: bool, repeats: usize) -> tempfile::NamedTempFile {
+    let text = lhe_support::extract();
+    let start = text.find("  <event").unwrap();
+    let events = text[start..].strip_suffix("</LesHouchesEvents>\n").unwrap();
+    let (open, close) = if grouped { ("<eventgroup>\n", "</eventgroup>\n") } else { ("", "") };
+    let once: String =
+        events.split_inclusive("</event>\n").map(|event| format!("{open}{}{close}", event.repeat(copies))).collect();
+    let file = tempfile::NamedTempFile::new().unwrap();
+    let whole = format!("{}{}</LesHouchesEvents>\n", &text[..start], once.repeat(repeats));
+    std::fs::write(file.path(), whole).unwrap();
+    file
+}
+
+/// Events of one group are fully correlated here: copies of one event know no more than the event. As independent events they
+/// would seem to know sqrt(copies) times more (standard error propagation).
+#[test]
+fn a_group_of_events_counts_as_one() {
+    // 1500 used events in groups of 3 straddle the batches of 512; 200 would not.
+    for (copies, repeats) in [(2, 1), (3, 5)] {
+        let fold_of = |copies: usize, grouped: bool| {
+            let file = copied(copies, grouped, repeats);
+            let mut study = study(Object::Muon, file.path());
+            study.channels[0].axis.bins = 16;
+            study.precision = 1e-4;
+            let folded = fold(&study);
+            let one = rayon::ThreadPoolBuilder::new().num_threads(1).build().unwrap();
+            assert_eq!(one.install(|| fold(&study)).templates, folded.templates);
+            folded
+        };
+        let (single, group, loose) = (fold_of(1, false), fold_of(copies, true), fold_of(copies, false));
+        let n = copies as f64;
+        let [a, b, c] = [&single, &group, &loose].map(|folded| &folded.templates[0].template);
+        let close = |x: f64, y: f64| (x - y).abs() < 1e-3 * x.abs().max(0.01);
+        assert!(close(a.acceptance_list_error, b.acceptance_list_error));
+        assert!(close(a.acceptance_list_error, c.acceptance_list_error * n.sqrt()));
+        let mut compared = 0;
+        for bin in 0..16 {
+            let numerical = 5.0 * (a.error[bin] + b.error[bin]) + 1e-12;
+            assert!((a.probability[bin] - b.probability[bin]).abs() < numerical, "{bin}");
+            // What an event gives to a bin far from its own mass is known from few points only.
+            if a.probability[bin] > 0.01 {
+                let ratio = b.list_error[bin] / a.list_error[bin];
+                assert!((ratio - 1.0).abs() < 0.02, "bin {bin}: {ratio}");
+                let ratio = a.list_error[bin] / c.list_error[bin] / n.sqrt();
+                assert!((ratio - 1.0).abs() < 0.02, "bin {bin}: {ratio}");
+                compared += 1;
+            }
+        }
+        assert!(compared > 4, "{compared}");
+        let effective = |folded: &Folded| folded.record.events_effective.unwrap();
+        assert!((effective(&group) / effective(&single) - 1.0).abs() < 1e-12);
+        assert!((effective(&loose) / effective(&single) - n).abs() < 1e-12 * n);
+    }
+}
+
+#[test]
+fn a_named_weight_is_taken() {
+    let path = lhe_support::data("lhe/x_gammagamma_v3weights.lhe");
+    let mut study = study(Object::Photon, &path);
+    study.detector.calorimeters[0].object = Object::Photon;
+    let EventSource::File(list) = &mut study.resonance.source else { panic!("a file") };
+    list.weight = Some("1002".to_owned());
+    study.channels[0].axis = MassAxis { low: 0.5, high: 1.5, bins: 20, relative: true };
+    let named = fold_channel(&study, 0, 125.0, &|_| ()).expect("a template");
+    let EventSource::File(list) = &mut study.resonance.source else { panic!("a file") };
+    list.weight = Some("1999".to_owned());
+    let unknown = fold_channel(&study, 0, 125.0, &|_| ()).unwrap_err();
+    assert!(unknown.to_string().contains("weight `1999` is not declared"), "{unknown}");
+    let EventSource::File(list) = &mut study.resonance.source else { panic!("a file") };
+    list.weight = None;
+    let plain = fold_channel(&study, 0, 125.0, &|_| ()).expect("a template");
+    // (sum w)²/sum w² of the weights in the file.
+    let expected = (44.1_f64 - 43.9 + 44.0).powi(2) / (44.1_f64.powi(2) + 43.9_f64.powi(2) + 44.0_f64.powi(2));
+    assert!((named.record.events_effective.unwrap() - expected).abs() < 1e-12);
+    assert!((plain.record.events_effective.unwrap() - 1.0 / 3.0).abs() < 1e-12);
+}
+
+/// One group alone has no spread: q = p a exactly. It goes over several batches of 512 events.
+#[test]
+fn a_group_may_be_of_any_length() {
+    let text = lhe_support::extract();
+    let start = text.find("  <event").unwrap();
+    let events = text[start..].strip_suffix("</LesHouchesEvents>\n").unwrap();
+    let whole = format!("{}<eventgroup>\n{}</eventgroup>\n</LesHouchesEvents>\n", &text[..start], events.repeat(20));
+    let file = tempfile::NamedTempFile::new().unwrap();
+    std::fs::write(file.path(), whole).unwrap();
+    let folded = fold(&study(Object::Muon, file.path()));
+    assert!(folded.record.events_used.unwrap() > 1024);
+    assert!((folded.record.events_effective.unwrap() - 1.0).abs() < 1e-12);
+    let template = &folded.templates[0].template;
+    // The root of what rounding leaves of a difference of numbers of order 1.
+    assert!(template.acceptance_list_error < 1e-7);
+    assert!(template.list_error.iter().all(|error| *error < 1e-7), "{:?}", template.list_error);
 }

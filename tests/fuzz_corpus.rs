@@ -24,6 +24,7 @@ fn replay(target: &str, read: impl Fn(&[u8])) {
 #[test]
 fn event_files() {
     replay("lhe", fuzz_support::lhe);
+    replay("csv", fuzz_support::csv);
 }
 
 #[test]

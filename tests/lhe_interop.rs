@@ -17,7 +17,7 @@ use std::process::Command;
 
 use lhe_support::*;
 use peakfold::detector::Object::{Electron, Muon};
-use peakfold::events::{RawEvent, Selection, Selector};
+use peakfold::events::{Selection, Selector};
 use peakfold::process::{Ancestry, Decay, LegChoice, Pick};
 
 const INVARIANT_MASS_TOLERANCE: f64 = 1e-11;
@@ -85,8 +85,7 @@ fn compare(path: &Path, choice: LegChoice, delta_r: Option<f64>) -> u64 {
         let mut selection = Selection::default();
         let (mut from_column, mut largest) = (0, 0.0_f64);
         for owned in &reading.events {
-            let event =
-                RawEvent { particles: &owned.particles, weight: owned.weight, line: owned.line, group: owned.group };
+            let event = owned.event();
             let outcome = selector.select(&event);
             selection.add(&event, &outcome);
             let Ok(truth) = outcome else { continue };

@@ -8,7 +8,7 @@ use std::io::{Read, Write};
 use std::path::Path;
 
 use lhe_support::*;
-use peakfold::events::lhe::{EventFile, Options};
+use peakfold::events::{EventFile, Options};
 use peakfold::problem::Problem;
 
 /// Several chunks of 1 MiB per thread with their rows; far below the 167 MB of the text.

@@ -8,7 +8,7 @@ use common::compare::{compare, kolmogorov_probability, template_of};
 use common::*;
 use peakfold::detector::{EtaRange, Object, Tail, Vertex};
 use peakfold::fold::plain::{PlainError, PlainSample, generate_truth, smear_events, smear_generated};
-use peakfold::process::{Category, Decay, EventSource, Natural, Production, SpectrumCell, Study, Width};
+use peakfold::process::{Category, Decay, EventList, EventSource, Natural, Production, SpectrumCell, Study, Width};
 use quadrature::integrate;
 
 const MILLION: u64 = 1_000_000;
@@ -501,7 +501,7 @@ fn what_cannot_be_done_is_an_error() {
     assert!(matches!(smear_generated(&study, 0, 125.0, 1, 1).unwrap_err(), PlainError::CannotDecay { legs: 3, .. }));
     study.resonance.source = EventSource::Generated(Production::Table(Vec::new()));
     assert_eq!(smear_generated(&study, 0, 125.0, 1, 1).unwrap_err(), PlainError::EmptyTable);
-    study.resonance.source = EventSource::File("events.lhe".into());
+    study.resonance.source = EventSource::File(EventList { path: "events.lhe".into(), weight: None });
     assert_eq!(smear_generated(&study, 0, 125.0, 1, 1).unwrap_err(), PlainError::NotGenerated);
 }
 

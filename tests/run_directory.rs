@@ -92,6 +92,7 @@ fn contents() -> RunContents {
             cpu_seconds: 0.5,
             wall_seconds: 0.25,
             notes: vec!["a note".to_owned()],
+            points_per_event: None,
             events_used: (mass_gev > 160.0).then_some(9000),
             events_effective: (mass_gev > 160.0).then_some(8999.5),
             events_skipped: if mass_gev > 160.0 { vec![("no photon pair".to_owned(), 1000)] } else { Vec::new() },

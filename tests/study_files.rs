@@ -10,8 +10,8 @@ use peakfold::detector::{
 use peakfold::files::{LoadedStudy, load_detector, load_study};
 use peakfold::problem::Problems;
 use peakfold::process::{
-    Category, Channel, Cuts, Decay, EventSource, Intermediate, LegChoice, MassAxis, Natural, Production, Resonance,
-    ShapeChoice, SpectrumCell, Width,
+    Category, Channel, Cuts, Decay, EventList, EventSource, Intermediate, LegChoice, MassAxis, Natural, Production,
+    Resonance, ShapeChoice, SpectrumCell, Width,
 };
 
 const DETECTOR: &str = include_str!("inputs/detector.toml");
@@ -233,6 +233,7 @@ detector = "detector.toml"
 [resonance]
 masses_gev = [150.0]
 events = "truth.lhe"
+weight = "1002"
 [[channel]]
 name = "three"
 legs = ["photon", "photon", "electron"]
@@ -248,7 +249,7 @@ mass_axis = { low_gev = 100.0, high_gev = 200.0, bins = 10 }
         width: Width::Gev(0.0),
         natural: Natural::Relativistic,
         falloff_power: 0.0,
-        source: EventSource::File(pair.path("truth.lhe")),
+        source: EventSource::File(EventList { path: pair.path("truth.lhe"), weight: Some("1002".to_owned()) }),
         intermediate: Intermediate { mass_gev: 91.188, width_gev: 2.4955 },
         radiation: None,
     };

@@ -117,7 +117,6 @@ const BAD: &[Case] = &[
     (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\"]\npick = \"nearest\"", "pick", "channel.two-photon.pick", &["only with `events`", "remove it"]),
     (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\"]\nancestry = \"ignore\"", "ancestry", "channel.two-photon.ancestry", &["only with `events`", "remove it"]),
     (S, "name = \"mixed\"", "name = \"mixed\"\npairing = \"nearest-sum\"", "pairing", "channel.mixed.pairing", &["only with `events`", "remove it"]),
-    (S, "production = { table = \"spectrum.csv\" }", "events = \"t.csv.gz\"", "t.csv.gz", "resonance.events", &["not available in this version yet"]),
     // The study's own numbers.
     (S, "precision = 1e-3", "precision = 0.0", "precision", "precision", &["found 0.0", "larger than 0"]),
     (S, "precision = 1e-3", "precision = 1", "precision", "precision", &["smaller than 1"]),
@@ -134,6 +133,9 @@ const BAD: &[Case] = &[
     (S, "{ relative = 0.02 }", "{}", "width", "resonance.width", &["neither"]),
     (S, "\"running-width\"", "\"runing-width\"", "natural", "resonance.natural", &["did you mean `running-width`?"]),
     (S, "production = { table = \"spectrum.csv\" }\n", "", "[resonance]", "resonance.production", &["missing", "events"]),
+    (S, "falloff_power = 4.0", "weight = \"1002\"", "1002", "resonance.weight", &["there is no `events`"]),
+    (S, "[150, 180.0, 210.0]\nwidth = { relative = 0.02 }\nnatural = \"running-width\"\nfalloff_power = 4.0\nproduction = { table = \"spectrum.csv\" }", "[150]\nevents = \"truth.lhe\"\nweight = 1002", "weight = 1002", "resonance.weight", &["found 1002", "text in quotes"]),
+    (S, "[150, 180.0, 210.0]\nwidth = { relative = 0.02 }\nnatural = \"running-width\"\nfalloff_power = 4.0\nproduction = { table = \"spectrum.csv\" }", "[150]\nevents = \"truth.lhe\"\nweight = \" \"", "weight = ", "resonance.weight", &["name of a weight"]),
     (S, "falloff_power = 4.0", "events = \"truth.lhe\"", "truth.lhe", "resonance.events", &["not both"]),
     (S, "production = { table = \"spectrum.csv\" }", "events = \"truth.lhe\"", "masses_gev", "resonance.masses_gev", &["found 3 masses", "must be one"]),
     (S, "[150, 180.0, 210.0]\nwidth = { relative = 0.02 }\nnatural = \"running-width\"\nfalloff_power = 4.0\nproduction = { table = \"spectrum.csv\" }", "[150]\nevents = \"gone.lhe\"", "gone", "resonance.events", &["there is no file"]),

@@ -39,7 +39,7 @@ const LARGEST_MASS_ERROR: f64 = 1e-3;
 /// How the kinematics of an event contradict each other.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
 pub enum Inconsistency {
-    /// An energy or a mass is negative.
+    /// An energy, a transverse momentum or a mass is negative.
     Sign,
     /// `E² - p²` is far from `m²`.
     OffShell,
@@ -47,21 +47,29 @@ pub enum Inconsistency {
     Unbalanced,
     /// An intermediate particle and its daughters differ.
     ResonanceUnbalanced,
+    /// A momentum or a direction beyond what a file can mean.
+    OutOfRange,
 }
 
 impl Inconsistency {
     /// All kinds.
-    pub const ALL: [Inconsistency; 4] =
-        [Inconsistency::Sign, Inconsistency::OffShell, Inconsistency::Unbalanced, Inconsistency::ResonanceUnbalanced];
+    pub const ALL: [Inconsistency; 5] = [
+        Inconsistency::Sign,
+        Inconsistency::OffShell,
+        Inconsistency::Unbalanced,
+        Inconsistency::ResonanceUnbalanced,
+        Inconsistency::OutOfRange,
+    ];
 }
 
 impl fmt::Display for Inconsistency {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         f.write_str(match self {
-            Inconsistency::Sign => "an energy or a mass is negative",
+            Inconsistency::Sign => "an energy, a transverse momentum or a mass is negative",
             Inconsistency::OffShell => "E² - p² of a particle is far from its m²",
             Inconsistency::Unbalanced => "incoming and final momenta do not balance",
             Inconsistency::ResonanceUnbalanced => "a resonance and its daughters do not balance",
+            Inconsistency::OutOfRange => "a momentum, |eta| (at most 20) or |phi| (at most 2 pi rad) is out of range",
         })
     }
 }

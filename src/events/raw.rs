@@ -61,6 +61,8 @@ pub struct RawEvent<'a> {
     pub particles: &'a [Particle],
     /// The weight that was asked for; finite, may be negative.
     pub weight: f64,
+    /// True mass of the resonance in GeV, where the file gives it apart from the particles.
+    pub true_mass_gev: Option<f64>,
     /// Line of the file on which the event begins, from 1.
     pub line: usize,
     /// Number of the event group, rising through the file. Events of one group are correlated: statistics take a group
@@ -72,6 +74,7 @@ pub struct RawEvent<'a> {
 struct Entry {
     end: usize,
     weight: f64,
+    true_mass_gev: Option<f64>,
     line: usize,
     group: u64,
 }
@@ -101,7 +104,13 @@ impl EventBatch {
         self.entries.iter().map(move |entry| {
             let particles = self.particles.get(start..entry.end).unwrap_or_default();
             start = entry.end;
-            RawEvent { particles, weight: entry.weight, line: entry.line, group: entry.group }
+            RawEvent {
+                particles,
+                weight: entry.weight,
+                true_mass_gev: entry.true_mass_gev,
+                line: entry.line,
+                group: entry.group,
+            }
         })
     }
 
@@ -128,7 +137,7 @@ impl EventBatch {
     }
 
     /// Completes the event that is being built.
-    pub(super) fn complete(&mut self, weight: f64, line: usize, group: u64) {
-        self.entries.push(Entry { end: self.particles.len(), weight, line, group });
+    pub(super) fn complete(&mut self, weight: f64, true_mass_gev: Option<f64>, line: usize, group: u64) {
+        self.entries.push(Entry { end: self.particles.len(), weight, true_mass_gev, line, group });
     }
 }

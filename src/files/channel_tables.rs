@@ -6,10 +6,11 @@ use crate::detector::{EtaRange, Object};
 use crate::kinematics::MAX_LEGS;
 use crate::process::{Ancestry, Category, Channel, Cuts, Decay, LegChoice, MassAxis, Pairing, Pick, ShapeChoice};
 
-const SHAPES: [(&str, ShapeChoice); 4] = [
+const SHAPES: [(&str, ShapeChoice); 5] = [
     ("gaussian", ShapeChoice::Gaussian),
     ("crystal-ball", ShapeChoice::CrystalBall),
     ("double-crystal-ball", ShapeChoice::DoubleCrystalBall),
+    ("double-crystal-ball-two-sigmas", ShapeChoice::DoubleCrystalBallTwoSigmas),
     ("gauss-exp", ShapeChoice::GaussExp),
 ];
 

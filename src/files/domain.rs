@@ -43,24 +43,3 @@ pub(super) fn name_fault(name: &str) -> Option<&'static str> {
         None
     }
 }
-
-/// The candidate that a misspelt word was most likely meant to be.
-pub(super) fn nearest<'c>(word: &str, candidates: impl IntoIterator<Item = &'c str>) -> Option<&'c str> {
-    let lower = word.to_lowercase();
-    let distance = |candidate: &str| strsim::osa_distance(&lower, candidate);
-    // Two letters of five may be wrong; a key that lacks its unit is near whatever its length.
-    let near = |candidate: &&str| {
-        let letters = lower.chars().count().max(candidate.chars().count());
-        5 * distance(candidate) <= 2 * letters || (lower.len() >= 3 && candidate.starts_with(&lower))
-    };
-    candidates.into_iter().filter(near).min_by_key(|candidate| distance(candidate))
-}
-
-/// The end of a message about an unknown word.
-pub(super) fn suggestion(word: &str, candidates: &[&str]) -> String {
-    let allowed = candidates.iter().map(|c| format!("`{c}`")).collect::<Vec<_>>().join(", ");
-    match nearest(word, candidates.iter().copied()) {
-        Some(meant) => format!("did you mean `{meant}`? (allowed: {allowed})"),
-        None => format!("allowed: {allowed}"),
-    }
-}

@@ -5,8 +5,9 @@
 
 use toml::de::{DeTable, DeValue};
 
-use super::domain::{Domain, name_fault, suggestion};
+use super::domain::{Domain, name_fault};
 use super::source::Sheet;
+use crate::problem::suggestion;
 
 /// One value, with where it stands.
 #[derive(Clone, Debug)]

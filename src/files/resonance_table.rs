@@ -1,14 +1,12 @@
 //! The table `[resonance]` of a study.
 
-use std::path::Path;
-
 use super::FileDigest;
 use super::domain::{ANY, Domain, MASS, NOT_NEGATIVE};
 use super::reader::{Item, Section};
 use super::source::{Sheet, Unreadable, digest};
 use super::spectrum_file;
 use crate::problem::Problem;
-use crate::process::{EventSource, Intermediate, Natural, Production, Radiation, Resonance, Width};
+use crate::process::{EventList, EventSource, Intermediate, Natural, Production, Radiation, Resonance, Width};
 
 const NATURAL_SHAPES: [(&str, Natural); 3] = [
     ("breit-wigner", Natural::BreitWigner),
@@ -130,9 +128,15 @@ fn width(mut section: Section<'_>) -> Width {
 }
 
 fn source(section: &mut Section<'_>, files: &mut OtherFiles) -> Option<EventSource> {
-    match (section.optional("production"), section.optional("events")) {
+    let weight = section.optional("weight");
+    let events_item = section.optional("events");
+    if let (Some(weight), None) = (&weight, &events_item) {
+        weight
+            .problem("there is no `events`; `weight` names a weight of an event file, remove it for generated events");
+    }
+    match (section.optional("production"), events_item) {
         (Some(item), None) => production(item.section()?, files).map(EventSource::Generated),
-        (None, Some(item)) => events(&item, section.sheet, files),
+        (None, Some(item)) => events(&item, weight.as_ref(), section.sheet, files),
         (Some(_), Some(events)) => {
             events.problem("`production` is there too; give either generated events or a file, not both");
             None
@@ -166,18 +170,24 @@ fn production(mut section: Section<'_>, files: &mut OtherFiles) -> Option<Produc
     files.take(&item, spectrum_file::read(&path)).map(Production::Table)
 }
 
-fn events(item: &Item<'_>, sheet: &Sheet, files: &mut OtherFiles) -> Option<EventSource> {
-    let named = file_name(item)?;
-    if is_csv(named) {
-        item.problem("events from CSV are not available in this version yet; give an LHE file (.lhe, .lhe.gz)");
-        return None;
-    }
-    let path = sheet.resolve(named);
+fn events(item: &Item<'_>, weight: Option<&Item<'_>>, sheet: &Sheet, files: &mut OtherFiles) -> Option<EventSource> {
+    let weight = weight.and_then(weight_name);
+    let path = sheet.resolve(file_name(item)?);
     match digest(&path) {
         Ok(input) => files.inputs.push(input),
         Err(message) => item.problem(message),
     }
-    Some(EventSource::File(path))
+    Some(EventSource::File(EventList { path, weight }))
+}
+
+/// The name of a weight; `None` after a problem.
+fn weight_name(item: &Item<'_>) -> Option<String> {
+    let name = item.text()?;
+    if name.trim().is_empty() || name.chars().any(char::is_control) {
+        item.reject("the name of a weight of the event file; leave it out for the event weight");
+        return None;
+    }
+    Some(name.trim().to_owned())
 }
 
 /// The name of a file; `None` after a problem.
@@ -188,10 +198,4 @@ pub(super) fn file_name<'a>(item: &Item<'a>) -> Option<&'a str> {
         return None;
     }
     Some(named)
-}
-
-fn is_csv(named: &str) -> bool {
-    let lower = named.to_lowercase();
-    let bare = lower.strip_suffix(".gz").unwrap_or(&lower);
-    Path::new(bare).extension().is_some_and(|extension| extension == "csv")
 }

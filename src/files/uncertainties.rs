@@ -1,8 +1,9 @@
 //! The tables `uncertainty` and `share` of a detector entry.
 
-use super::domain::{NOT_NEGATIVE, suggestion};
+use super::domain::NOT_NEGATIVE;
 use super::reader::{Item, Section};
 use crate::detector::Uncertainty;
+use crate::problem::suggestion;
 
 /// Reads both tables. `keys` are the numbers that the entry has, those of nested tables as `tail.alpha_low`.
 pub(super) fn read(entry: &mut Section<'_>, keys: &[&str]) -> Vec<Uncertainty> {

@@ -1,16 +1,9 @@
 //! Smooth backgrounds, normalised in the window.
 
+use crate::numerics::quadrature::GAUSS_8 as RULE;
+
 /// The highest degree of a polynomial background.
 pub const MAX_DEGREE: usize = 8;
-
-/// Nodes and weights of the 8-point Gauss-Legendre rule on (-1, 1), positive half: exact up to degree 15 (M. Abramowitz and I. A. Stegun,
-/// Handbook of Mathematical Functions (1964), table 25.4).
-const RULE: [(f64, f64); 4] = [
-    (0.183434642495649805, 0.362683783378361983),
-    (0.525532409916328986, 0.313706645877887287),
-    (0.796666477413626740, 0.222381034453374471),
-    (0.960289856497536232, 0.101228536290376259),
-];
 
 /// A smooth background.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]

@@ -5,6 +5,7 @@ use nalgebra::{DMatrix, DVector};
 use super::data::Histogram;
 use super::model::Model;
 use super::objective::{Evaluation, Objective};
+use super::poisson::poisson;
 use crate::lineshape::Shape;
 
 /// See the module. The second derivatives are their expectation: `Σ ∇μ ∇μᵀ / variance`.
@@ -105,20 +106,9 @@ impl Objective for Binned<'_> {
                 curvature[i] = weight;
                 continue;
             }
-            if !(mu > 0.0) {
-                // Nothing expected: impossible if something was found, and no information if not.
-                if found > 0.0 {
-                    return None;
-                }
-                slope[i] = 1.0;
-                continue;
-            }
-            value += mu - found;
-            if found > 0.0 {
-                value += found * libm::log(found / mu);
-            }
-            slope[i] = 1.0 - found / mu;
-            curvature[i] = 1.0 / mu;
+            let term = poisson(found, mu)?;
+            value += term.value;
+            (slope[i], curvature[i]) = (term.slope, term.curvature);
         }
         let row = |k: usize| &expected.gradient[k * n..(k + 1) * n];
         let gradient = DVector::from_fn(count, |k, _| row(k).iter().zip(&slope).map(|(g, s)| g * s).sum());

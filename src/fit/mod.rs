@@ -17,12 +17,15 @@
 mod background;
 mod binned;
 mod coordinates;
+mod counts;
+mod curves;
 mod data;
 mod goodness;
 mod model;
 mod newton;
 mod objective;
 mod outcome;
+mod poisson;
 mod run;
 mod settings;
 mod start;
@@ -31,6 +34,8 @@ mod tail_sums;
 mod unbinned;
 
 pub use background::{Background, MAX_DEGREE};
+pub use counts::{CountFit, Expected, fit_counts};
+pub use curves::{CRITERION_EVENTS, Curve, CurveFit, CurvePoint, Curves, Link, positive_inverse};
 pub use data::{Data, DataError, Histogram, Masses};
 pub use goodness::{Goodness, GoodnessBin};
 pub use model::{Model, ModelError};

@@ -156,13 +156,13 @@ fn ends(histogram: &Histogram) -> (f64, f64) {
 }
 
 /// How a minimisation ended.
-struct Ended {
-    stop: Stop,
-    distance: f64,
-    iterations: u64,
+pub(super) struct Ended {
+    pub stop: Stop,
+    pub distance: f64,
+    pub iterations: u64,
 }
 
-fn minimise(coordinates: &Coordinates<'_>, start: &[f64]) -> Result<(Vec<f64>, Ended), FitError> {
+pub(super) fn minimise(coordinates: &Coordinates<'_>, start: &[f64]) -> Result<(Vec<f64>, Ended), FitError> {
     let names = || start.iter().map(|v| format!("{v:.6}")).collect::<Vec<_>>().join(", ");
     let z = coordinates.inner(start);
     // argmin takes the problem whole; it borrows the same likelihood.

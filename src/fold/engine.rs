@@ -46,6 +46,18 @@ impl Total {
         self.generated += other.generated;
         self.outside += other.outside;
     }
+
+    /// The totals times a factor.
+    pub fn scaled(&self, factor: f64) -> Self {
+        let edges = self.sums.first().map_or(0, |sums| sums.below.len());
+        let mut scaled = Total::new(self.sums.len(), edges);
+        for (a, b) in scaled.sums.iter_mut().zip(&self.sums) {
+            a.add_times(b, factor);
+        }
+        scaled.generated = factor * self.generated;
+        scaled.outside = factor * self.outside;
+        scaled
+    }
 }
 
 /// Folds generated events of one channel at one mass point, with `exactly` so many points if that is given.

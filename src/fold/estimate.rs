@@ -2,83 +2,9 @@
 
 use super::engine::Total;
 use super::last_leg::Sums;
+use super::list_sums::ListSums;
 use crate::process::Channel;
 use crate::template::{LabelledTemplate, Replicate, Template, standard_error};
-
-/// What the statistics of an event list add.
-#[derive(Clone, Debug)]
-pub(super) struct ListSums {
-    /// By category and bin: sum over events of (weighted probability)², and of it times the event's accepted weight.
-    pub squares: Vec<Vec<f64>>,
-    pub products: Vec<Vec<f64>>,
-    /// By category: sum of (accepted weight)², and of it times the event's weight.
-    pub accepted_squares: Vec<f64>,
-    pub accepted_products: Vec<f64>,
-    /// By category, with u the accepted weight at an efficiency of 1: the sums of u, u², and u times the accepted weight.
-    pub unfiltered: Vec<f64>,
-    pub unfiltered_squares: Vec<f64>,
-    pub unfiltered_products: Vec<f64>,
-    /// Sum of weight².
-    pub weight_squares: f64,
-    /// Sum of weights.
-    pub weights: f64,
-}
-
-impl ListSums {
-    pub fn new(categories: usize, bins: usize) -> Self {
-        ListSums {
-            squares: vec![vec![0.0; bins]; categories],
-            products: vec![vec![0.0; bins]; categories],
-            accepted_squares: vec![0.0; categories],
-            accepted_products: vec![0.0; categories],
-            unfiltered: vec![0.0; categories],
-            unfiltered_squares: vec![0.0; categories],
-            unfiltered_products: vec![0.0; categories],
-            weight_squares: 0.0,
-            weights: 0.0,
-        }
-    }
-
-    /// Adds one event of a weight; `sums` holds what its points gave in each category and `unit` is 1 over their number.
-    pub fn add_event(&mut self, weight: f64, sums: &[Sums], unit: f64) {
-        self.weights += weight;
-        self.weight_squares += weight * weight;
-        for (category, sums) in sums.iter().enumerate() {
-            let accepted = sums.accepted * unit;
-            let unfiltered = sums.unfiltered * unit;
-            self.unfiltered[category] += unfiltered;
-            self.unfiltered_squares[category] += unfiltered * unfiltered;
-            self.unfiltered_products[category] += unfiltered * accepted;
-            if accepted == 0.0 {
-                continue;
-            }
-            self.accepted_squares[category] += accepted * accepted;
-            self.accepted_products[category] += accepted * weight;
-            let cumulative = sums.cumulative();
-            let bins = self.squares[category].iter_mut().zip(&mut self.products[category]);
-            for ((square, product), pair) in bins.zip(cumulative.windows(2)) {
-                let q = (pair[1] - pair[0]) * unit;
-                *square += q * q;
-                *product += q * accepted;
-            }
-        }
-    }
-
-    pub fn add(&mut self, other: &ListSums) {
-        let add = |a: &mut [f64], b: &[f64]| a.iter_mut().zip(b).for_each(|(a, b)| *a += b);
-        for category in 0..self.squares.len() {
-            add(&mut self.squares[category], &other.squares[category]);
-            add(&mut self.products[category], &other.products[category]);
-        }
-        add(&mut self.accepted_squares, &other.accepted_squares);
-        add(&mut self.accepted_products, &other.accepted_products);
-        add(&mut self.unfiltered, &other.unfiltered);
-        add(&mut self.unfiltered_squares, &other.unfiltered_squares);
-        add(&mut self.unfiltered_products, &other.unfiltered_products);
-        self.weight_squares += other.weight_squares;
-        self.weights += other.weights;
-    }
-}
 
 /// The scramblings of one category, normalised.
 fn replicates(totals: &[Total], category: usize) -> Vec<Replicate> {
@@ -174,8 +100,8 @@ pub(super) fn templates(
         .collect()
 }
 
-/// Errors of ratios of sums over events, to first order: with q_i the weighted probability of event i in the bin and
-/// a_i its accepted weight, p = sum q/sum a has the variance sum (q_i - p a_i)²/(sum a)²; likewise the acceptance.
+/// Errors of ratios of sums over groups of events, to first order: with q_i the weighted probability of group i in the bin
+/// and a_i its accepted weight, p = sum q/sum a has the variance sum (q_i - p a_i)²/(sum a)²; likewise the acceptance.
 fn list_errors(list: &ListSums, category: usize, mean: &Replicate) -> (Vec<f64>, f64) {
     let accepted = mean.acceptance * list.weights;
     let unit = if accepted == 0.0 { 0.0 } else { 1.0 / accepted.abs() };

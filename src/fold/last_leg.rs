@@ -74,15 +74,20 @@ impl Sums {
     }
 
     pub fn add(&mut self, other: &Sums) {
+        self.add_times(other, 1.0);
+    }
+
+    /// Adds other sums times a factor.
+    pub fn add_times(&mut self, other: &Sums, factor: f64) {
         for (a, b) in self.below.iter_mut().zip(&other.below) {
-            *a += b;
+            *a += factor * b;
         }
         for (a, b) in self.steps.iter_mut().zip(&other.steps) {
-            *a += b;
+            *a += factor * b;
         }
-        self.accepted += other.accepted;
-        self.unfiltered += other.unfiltered;
-        self.lost += other.lost;
+        self.accepted += factor * other.accepted;
+        self.unfiltered += factor * other.unfiltered;
+        self.lost += factor * other.lost;
     }
 
     /// Weight below each edge.

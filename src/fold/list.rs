@@ -1,75 +1,118 @@
 //! Folds of events read from a file: the points are those of the smearing only, several for every event.
 
-use super::engine::{REPLICATES, Total, scramblings};
-use super::estimate::{self, ListSums};
+use super::engine::scramblings;
+use super::estimate;
+use super::event_list::{ChannelEvents, KEPT, Listed, read, selector};
 use super::last_leg::{Sums, add};
+use super::list_sums::ListSums;
 use super::measure::Workspace;
+use super::paired::{Paired, Pairing};
 use super::plan::Plan;
 use super::{FoldError, FoldRecord, Folded, Progress};
 use crate::detector::Detector;
-use crate::events::lhe::{EventFile, Options};
-use crate::events::{Selection, Selector, TruthDimensions};
-use crate::kinematics::TruthEvent;
+use crate::events::{Selection, TruthDimensions};
 use crate::numerics::sobol::{BLOCK, MAX_POINTS, Scrambling};
-use crate::process::Study;
+use crate::process::{EventList, Study};
 use rayon::prelude::*;
-use std::path::Path;
+use std::borrow::Cow;
 use std::time::Instant;
 
-/// Events that add up on their own before they join the total: a multiple of [`BLOCK`].
-const BATCH: usize = 512;
+/// Most events that add up on their own before they join the total: a multiple of [`BLOCK`].
+const BATCH: usize = 2048;
+
+/// Points of one scrambling that a batch has at least, where there are events enough.
+const BATCH_POINTS: u64 = 1 << 14;
 
 /// Batches at work at once; the number must not depend on the number of threads.
 const WAVE: usize = 16;
 
-/// A list of up to this many events stays in memory between the passes; a longer one is read again.
-const KEPT: usize = 1 << 16;
+/// Lists with fewer events have each event, or group of events, as a unit of the list's statistics; longer ones those that
+/// share a block of points, which are many still.
+const SINGLE_UNITS: u64 = 64 * BLOCK as u64;
+
+/// How one pass folds each event.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+struct Scheme {
+    /// Points of every scrambling for each event, a power of two.
+    per_event: u64,
+    pairing: Pairing,
+    /// Whether the events of a block are one unit of the list's statistics.
+    block_units: bool,
+}
+
+impl Scheme {
+    /// For a list of so many events; `None` for a list whose length is not known yet. A list that is not kept in memory is
+    /// folded as one of unknown length.
+    fn new(per_event: u64, events: Option<u64>) -> Self {
+        let events = events.filter(|events| *events <= KEPT as u64);
+        let points = events.map(|events| events.max(1).saturating_mul(per_event));
+        let pairing = Pairing::new(points, per_event.max(BLOCK as u64));
+        Scheme { per_event, pairing, block_units: events.is_none_or(|events| events >= SINGLE_UNITS) }
+    }
+
+    /// Points for each event, of all scramblings.
+    fn points(self) -> u64 {
+        self.per_event * self.pairing.scramblings() as u64
+    }
+
+    /// Events of a batch.
+    fn batch(self) -> usize {
+        ((BATCH_POINTS / self.per_event) as usize).clamp(BLOCK, BATCH)
+    }
+}
 
 /// What a pass over the list gave.
 struct Pass {
-    totals: Vec<Total>,
+    paired: Paired,
     list: ListSums,
     cpu_seconds: f64,
-    points: u64,
 }
 
-/// One pass over the events: `per_event` points of every scrambling for each, a power of two.
+/// One pass over the events.
 struct Folder<'a> {
     plan: &'a Plan,
     scramblings: &'a [Scrambling],
     categories: usize,
-    per_event: u64,
-    queue: Vec<TruthEvent>,
+    scheme: Scheme,
+    queue: Vec<Listed>,
     folded: u64,
     pass: Pass,
 }
 
-impl Folder<'_> {
+impl<'a> Folder<'a> {
+    fn new(plan: &'a Plan, scramblings: &'a [Scrambling], categories: usize, scheme: Scheme) -> Self {
+        let edges = plan.axis.squares.len();
+        let pass = Pass {
+            paired: Paired::new(categories, edges),
+            list: ListSums::new(categories, edges - 1),
+            cpu_seconds: 0.0,
+        };
+        Folder { plan, scramblings, categories, scheme, queue: Vec::new(), folded: 0, pass }
+    }
+
     /// Takes events; folds when enough for a wave have come, or all when `last`.
-    fn take(&mut self, events: impl IntoIterator<Item = TruthEvent>, last: bool) {
+    fn take(&mut self, events: impl IntoIterator<Item = Listed>, last: bool) {
         self.queue.extend(events);
-        while self.queue.len() >= BATCH * WAVE || (last && !self.queue.is_empty()) {
-            let count = self.queue.len().min(BATCH * WAVE);
+        let batch_size = self.scheme.batch();
+        while self.queue.len() >= batch_size * WAVE || (last && !self.queue.is_empty()) {
+            let count = self.queue.len().min(batch_size * WAVE);
             let (plan, scramblings, categories) = (self.plan, self.scramblings, self.categories);
-            let (per_event, folded) = (self.per_event, self.folded);
+            let (scheme, folded) = (self.scheme, self.folded);
             let results: Vec<Pass> = self.queue[..count]
-                .par_chunks(BATCH)
+                .par_chunks(batch_size)
                 .enumerate()
                 .map_init(
                     || Workspace::new(plan),
                     |workspace, (batch, events)| {
-                        let start = (folded + (batch * BATCH) as u64) * per_event;
-                        fold_batch(plan, scramblings, categories, events, per_event, start, workspace)
+                        let start = (folded + (batch * batch_size) as u64) * scheme.per_event;
+                        fold_batch(plan, scramblings, categories, events, scheme, start, workspace)
                     },
                 )
                 .collect();
             for result in &results {
-                for (total, part) in self.pass.totals.iter_mut().zip(&result.totals) {
-                    total.add(part);
-                }
+                self.pass.paired.add(&result.paired);
                 self.pass.list.add(&result.list);
                 self.pass.cpu_seconds += result.cpu_seconds;
-                self.pass.points += result.points;
             }
             self.folded += count as u64;
             self.queue.drain(..count);
@@ -77,48 +120,44 @@ impl Folder<'_> {
     }
 }
 
-/// Folds the events of a file for one channel, in one pass with `exactly` so many points an event if that is given.
+/// Folds the events of a file for one channel, in one pass at `exactly` the points of an earlier fold if that is given; or
+/// those that are known already.
+#[allow(clippy::too_many_arguments)]
 pub(super) fn fold_file(
     study: &Study,
     detector: &Detector,
     channel_index: usize,
     mass_gev: f64,
-    path: &Path,
-    exactly: Option<u64>,
+    file: &EventList,
+    known: Option<&ChannelEvents>,
+    exactly: Option<&FoldRecord>,
     progress: &(dyn Fn(Progress) + Sync),
 ) -> Result<Folded, FoldError> {
     let started = Instant::now();
     let channel = study.channels.get(channel_index).ok_or(FoldError::NoSuchChannel(channel_index))?;
-    let selector = Selector::new(&channel.decay, study.resonance.intermediate.mass_gev)
-        .ok_or_else(|| FoldError::CannotPick { channel: channel.name.clone() })?
-        .with_choice(channel.choice, mass_gev)
-        .with_recombination(study.resonance.radiation.map(|radiation| radiation.recombination_delta_r));
+    let selector = selector(study, channel, mass_gev)?;
     let plan = Plan::new(detector, channel, mass_gev, &TruthDimensions::default());
     let scramblings = scramblings(study.seed, &plan)?;
-    let (categories, edges) = (channel.categories.len(), plan.axis.squares.len());
-    let mut kept: Option<Vec<TruthEvent>> = None;
+    let categories = channel.categories.len();
+    let mut kept: Option<Cow<'_, [Listed]>> = known.map(|known| Cow::Borrowed(known.events.as_slice()));
     let mut record = FoldRecord { channel: channel.name.clone(), mass_gev, ..FoldRecord::default() };
-    let mut per_event = exactly.unwrap_or(1);
+    if let Some(known) = known {
+        known.selection.verdict(&file.path, &channel.name)?;
+        record.events_used = Some(known.events.len() as u64);
+        record.events_effective = Some(known.selection.effective_events());
+    }
+    let mut scheme = match exactly {
+        Some(earlier) => Scheme::new(earlier.points_per_event.unwrap_or(1), earlier.events_used),
+        None => Scheme::new(1, record.events_used),
+    };
     loop {
-        let mut folder = Folder {
-            plan: &plan,
-            scramblings: &scramblings,
-            categories,
-            per_event,
-            queue: Vec::new(),
-            folded: 0,
-            pass: Pass {
-                totals: vec![Total::new(categories, edges); REPLICATES],
-                list: ListSums::new(categories, edges - 1),
-                cpu_seconds: 0.0,
-                points: 0,
-            },
-        };
+        let mut folder = Folder::new(&plan, &scramblings, categories, scheme);
         match &kept {
             Some(events) => folder.take(events.iter().copied(), true),
             None => {
                 let mut all = Some(Vec::new());
-                let (selection, warnings) = read(path, &selector, progress, |events: Vec<TruthEvent>| {
+                let selectors = std::slice::from_ref(&selector);
+                let (selections, report) = read(file, selectors, progress, |_, events| {
                     if let Some(list) = &mut all {
                         list.extend_from_slice(&events);
                     }
@@ -128,75 +167,67 @@ pub(super) fn fold_file(
                     folder.take(events, false);
                 })?;
                 folder.take([], true);
-                selection.verdict(path, &channel.name)?;
-                kept = all;
+                let selection = selections.into_iter().next().unwrap_or_default();
+                selection.verdict(&file.path, &channel.name)?;
+                kept = all.map(Cow::Owned);
                 record.events_used = Some(selection.used);
+                record.events_effective = Some(selection.effective_events());
                 record.events_skipped = skips(&selection);
-                record.notes = warnings;
+                record.notes = report.warnings();
             }
         }
         let used = record.events_used.unwrap_or(0);
+        let points = used * scheme.points();
         let pass = folder.pass;
         record.cpu_seconds += pass.cpu_seconds;
-        record.points += pass.points;
-        let reached = estimate::precision(&pass.totals);
-        let next = next_per_event(
-            per_event,
-            reached / study.precision,
-            used,
-            study.max_points - record.points.min(study.max_points),
-        );
-        if reached <= study.precision || next <= per_event || exactly.is_some() {
-            record.final_points = pass.points;
+        record.points += points;
+        let totals = pass.paired.replicates();
+        let reached = estimate::precision(&totals);
+        let fitting = Scheme::new(scheme.per_event, Some(used));
+        let next = if exactly.is_some() {
+            scheme
+        } else if scheme != fitting {
+            // The length was not known: the pass was a first look.
+            fitting
+        } else {
+            let left = study.max_points.saturating_sub(record.points);
+            next_scheme(scheme, reached / study.precision, used, left).unwrap_or(scheme)
+        };
+        if next == scheme {
+            record.final_points = points;
+            record.points_per_event = Some(scheme.per_event);
             record.precision_reached = reached;
             record.reached = reached <= study.precision;
-            record.notes.extend(estimate::notes(&pass.totals));
+            record.notes.extend(estimate::notes(&totals));
             record.wall_seconds = started.elapsed().as_secs_f64();
-            record.events_effective = Some(pass.list.weights * pass.list.weights / pass.list.weight_squares);
-            let templates = estimate::templates(channel, mass_gev, &pass.totals, Some(&pass.list));
+            let templates = estimate::templates(channel, mass_gev, &totals, Some(&pass.list.finish()));
             return Ok(Folded { templates, record });
         }
-        per_event = next;
+        scheme = next;
     }
 }
 
-/// Points per event of the next pass, for an error that is `excess` times too large: each pass stands alone, since more
-/// points of one event are worth more than those of two passes. After the first the error falls about as points^-0.8;
-/// no pass takes more than is `left`, and one that could not take more points than the last is not made.
-fn next_per_event(per_event: u64, excess: f64, events: u64, left: u64) -> u64 {
-    let wanted = if per_event == 1 { 4.0 } else { per_event as f64 * libm::pow(excess, 1.25).max(2.0) };
-    // `as` saturates; the clamp leaves room for the next power of two.
-    let wanted = (wanted.min(1e9) as u64).next_power_of_two();
-    let per_pass = events.max(1);
-    let most = (left / REPLICATES as u64).min(MAX_POINTS) / per_pass;
-    if most == 0 { 0 } else { wanted.min(1 << most.ilog2()) }
-}
-
-/// Reads the file once and hands on the events of the channel, in the order of the file.
-fn read(
-    path: &Path,
-    selector: &Selector,
-    progress: &(dyn Fn(Progress) + Sync),
-    mut consume: impl FnMut(Vec<TruthEvent>),
-) -> Result<(Selection, Vec<String>), FoldError> {
-    let mut file = EventFile::open(path, &Options::default())?;
-    let mut selection = Selection::default();
-    let position = file.progress().clone();
-    file.for_each_batch(|batch| -> Result<(), FoldError> {
-        let mut events = Vec::with_capacity(batch.len());
-        for event in batch.events() {
-            let outcome = selector.select(&event);
-            selection.add(&event, &outcome);
-            events.extend(outcome.ok());
+/// The next pass, for an error that is `excess` times too large; `None` when none is needed or allowed. Each pass stands
+/// alone, since more points of one event are worth more than those of two passes. The error falls about as points^-0.8, and
+/// no pass takes more than is `left`.
+fn next_scheme(scheme: Scheme, excess: f64, events: u64, left: u64) -> Option<Scheme> {
+    if !(excess > 1.0) {
+        return None;
+    }
+    let wanted = (events * scheme.points()) as f64 * libm::pow(excess, 1.25);
+    let mut best = None;
+    for power in 1..48 {
+        let next = Scheme::new(scheme.per_event.checked_shl(power)?, Some(events));
+        let points = events.checked_mul(next.points())?;
+        if points > left || points / next.pairing.scramblings() as u64 > MAX_POINTS {
+            break;
         }
-        consume(events);
-        let total = position.total_bytes.unwrap_or(0) as f64;
-        let fraction = if total > 0.0 { position.bytes_read() as f64 / total } else { 0.0 };
-        progress(Progress { fraction: fraction.min(1.0) });
-        Ok(())
-    })?;
-    selection.add_left_out(file.report());
-    Ok((selection, file.report().warnings()))
+        best = Some(next);
+        if points as f64 >= wanted {
+            break;
+        }
+    }
+    best
 }
 
 fn skips(selection: &Selection) -> Vec<(String, u64)> {
@@ -207,41 +238,45 @@ fn skips(selection: &Selection) -> Vec<(String, u64)> {
         .collect()
 }
 
-/// Folds up to [`BATCH`] events with `per_event` points of every scrambling.
+/// Folds a batch of events.
 fn fold_batch(
     plan: &Plan,
     scramblings: &[Scrambling],
     categories: usize,
-    events: &[TruthEvent],
-    per_event: u64,
+    events: &[Listed],
+    scheme: Scheme,
     first_point: u64,
     workspace: &mut Workspace,
 ) -> Pass {
     let begun = Instant::now();
     let edges = plan.axis.squares.len();
-    let mut totals = vec![Total::new(categories, edges); REPLICATES];
+    let per_event = scheme.per_event;
+    let mut paired = Paired::new(categories, edges);
     let mut list = ListSums::new(categories, edges - 1);
     // A block of points holds several events, or an event takes several blocks.
     let together = (BLOCK as u64 / per_event).max(1) as usize;
     let blocks = (per_event / BLOCK as u64).max(1);
-    let lanes = per_event.min(BLOCK as u64) as usize;
-    // Of each event and category: one scrambling, and all.
-    let mut one = vec![Sums::new(edges); together * categories];
+    // Lanes of a block that belong to one unit.
+    let lanes = if scheme.block_units { BLOCK } else { per_event.min(BLOCK as u64) as usize };
+    let units = BLOCK / lanes;
+    // Of each unit and category: one scrambling, and all.
+    let mut one = vec![Sums::new(edges); units * categories];
     let mut all = one.clone();
-    let mut touched = vec![false; together * categories];
+    let mut touched = vec![false; units * categories];
     let mut point = first_point;
-    for group in events.chunks(together) {
+    for some in events.chunks(together) {
         for i in 0..BLOCK {
-            match group.get(i / lanes) {
-                Some(event) => workspace.truth.set(i, event),
+            match some.get(i * together / BLOCK) {
+                Some(listed) => workspace.truth.set(i, &listed.event),
                 None => workspace.truth.clear(i),
             }
         }
-        for (scrambling, total) in scramblings.iter().zip(&mut totals) {
+        for (number, scrambling) in scramblings.iter().enumerate().take(scheme.pairing.scramblings()) {
+            let place = scheme.pairing.place(number, point);
             for block in 0..blocks {
-                total.generated += workspace.truth.generated.iter().sum::<f64>();
+                let generated = workspace.truth.generated.iter().sum::<f64>();
                 workspace.measure(plan, scrambling, point + block * BLOCK as u64);
-                total.outside += workspace.outside;
+                paired.add_events(generated, workspace.outside);
                 for (last, lane) in workspace.last.iter().zip(&workspace.event) {
                     let slot = lane / lanes * categories + last.category;
                     touched[slot] = true;
@@ -255,19 +290,19 @@ fn fold_batch(
             }
             for (slot, (sums, touched)) in one.iter_mut().zip(&mut touched).enumerate() {
                 if std::mem::take(touched) {
-                    total.sums[slot % categories].add(sums);
+                    paired.add_sums(place, slot % categories, sums);
                     all[slot].add(sums);
                     sums.clear();
                 }
             }
         }
-        let unit = 1.0 / (per_event * REPLICATES as u64) as f64;
-        for (event, sums) in group.iter().zip(all.chunks_mut(categories)) {
-            list.add_event(event.weight, sums, unit);
+        let unit = 1.0 / scheme.points() as f64;
+        let members = if scheme.block_units { together } else { 1 };
+        for (members, sums) in some.chunks(members).zip(all.chunks_mut(categories)) {
+            list.add_unit(members, sums, unit);
             sums.iter_mut().for_each(Sums::clear);
         }
         point += blocks * BLOCK as u64;
     }
-    let points = events.len() as u64 * per_event * REPLICATES as u64;
-    Pass { totals, list, cpu_seconds: begun.elapsed().as_secs_f64(), points }
+    Pass { paired, list, cpu_seconds: begun.elapsed().as_secs_f64() }
 }

@@ -4,10 +4,13 @@ mod aim;
 mod efficiency;
 mod engine;
 mod estimate;
+mod event_list;
 mod last_leg;
 mod limits;
 mod list;
+mod list_sums;
 mod measure;
+mod paired;
 pub mod plain;
 mod plan;
 mod resolve;
@@ -18,6 +21,7 @@ use crate::detector::Detector;
 use crate::problem::Problem;
 use crate::process::{EventSource, Study};
 use crate::template::LabelledTemplate;
+pub use event_list::{ChannelEvents, StudyEvents, read_events};
 
 /// How a fold of one channel at one mass point went.
 #[derive(Clone, Debug, Default, PartialEq)]
@@ -38,14 +42,26 @@ pub struct FoldRecord {
     pub cpu_seconds: f64,
     /// Elapsed time in seconds.
     pub wall_seconds: f64,
+    /// Points of each scrambling for each event of the list; `None` for generated events.
+    pub points_per_event: Option<u64>,
     /// Events of the list that were used; `None` for generated events.
     pub events_used: Option<u64>,
-    /// Effective number of events of the list, (sum w)²/sum w².
+    /// Effective number of events of the list, (sum w)²/sum w² over groups of correlated events.
     pub events_effective: Option<f64>,
     /// Events of the list that were skipped, with the reason.
     pub events_skipped: Vec<(String, u64)>,
     /// What else is worth knowing: about the file of events, and about events where no efficiency is told.
     pub notes: Vec<String>,
+}
+
+impl FoldRecord {
+    /// The record of a fold of about so many points, the first of the same ones, for [`fold_shifted`]. Of a list these are the
+    /// first points of every event.
+    pub fn leading(&self, points: u64) -> Self {
+        let part = |all: u64| (all as f64 * points as f64 / self.final_points.max(1) as f64) as u64;
+        let per_event = self.points_per_event.map(|all| 1 << part(all).max(1).ilog2());
+        FoldRecord { final_points: points.min(self.final_points), points_per_event: per_event, ..self.clone() }
+    }
 }
 
 /// What a fold of one channel at one mass point gives.
@@ -128,6 +144,23 @@ pub fn fold_shifted(
     fold_with(study, detector, channel, record.mass_gev, Some(record), progress)
 }
 
+/// Folds one channel with the events that [`read_events`] has kept of a file: all of them, or the first ones of a long file.
+///
+/// # Errors
+/// See [`FoldError`].
+pub fn fold_known(
+    study: &Study,
+    channel: usize,
+    mass_gev: f64,
+    known: &ChannelEvents,
+    progress: &(dyn Fn(Progress) + Sync),
+) -> Result<Folded, FoldError> {
+    let EventSource::File(file) = &study.resonance.source else {
+        return fold_channel(study, channel, mass_gev, progress);
+    };
+    list::fold_file(study, &study.detector, channel, mass_gev, file, Some(known), None, progress)
+}
+
 fn fold_with(
     study: &Study,
     detector: &Detector,
@@ -141,10 +174,6 @@ fn fold_with(
             let points = record.map(|record| record.final_points);
             engine::fold_generated(study, detector, channel, mass_gev, production, points, progress)
         }
-        EventSource::File(path) => {
-            let events = |record: &FoldRecord| record.events_used.unwrap_or(1).max(1) * engine::REPLICATES as u64;
-            let points = record.map(|record| (record.final_points / events(record)).max(1).next_power_of_two());
-            list::fold_file(study, detector, channel, mass_gev, path, points, progress)
-        }
+        EventSource::File(file) => list::fold_file(study, detector, channel, mass_gev, file, None, record, progress),
     }
 }

@@ -21,6 +21,15 @@ const RULE: [(f64, f64, f64); 11] = [
     (0.9956571630258081, 0.011694638867371874, 0.0),
 ];
 
+/// Nodes and weights of the 8-point Gauss-Legendre rule on (-1, 1), positive half: exact up to degree 15 (M. Abramowitz and I. A. Stegun,
+/// Handbook of Mathematical Functions (1964), table 25.4).
+pub const GAUSS_8: [(f64, f64); 4] = [
+    (0.183434642495649805, 0.362683783378361983),
+    (0.525532409916328986, 0.313706645877887287),
+    (0.796666477413626740, 0.222381034453374471),
+    (0.960289856497536232, 0.101228536290376259),
+];
+
 /// The most panels before the integration gives up and reports the error that it has.
 const MAX_PANELS: usize = 600;
 

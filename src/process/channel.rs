@@ -97,6 +97,8 @@ pub enum ShapeChoice {
     CrystalBall,
     /// A Gaussian core with power-law tails on both sides.
     DoubleCrystalBall,
+    /// The same with a core width of its own on either side of the peak.
+    DoubleCrystalBallTwoSigmas,
     /// A Gaussian core with exponential tails.
     GaussExp,
 }

@@ -6,7 +6,9 @@ mod resonance;
 
 pub use axis::MassAxis;
 pub use channel::{Ancestry, Category, Channel, Cuts, Decay, LegChoice, Pairing, Pick, ShapeChoice};
-pub use resonance::{EventSource, Intermediate, Natural, Production, Radiation, Resonance, SpectrumCell, Width};
+pub use resonance::{
+    EventList, EventSource, Intermediate, Natural, Production, Radiation, Resonance, SpectrumCell, Width,
+};
 
 use crate::detector::Detector;
 

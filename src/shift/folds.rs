@@ -5,7 +5,7 @@
 //! nominal template of all points. The subset is doubled until the error of the difference is small enough.
 
 use super::nuisance::{Nuisance, Sign};
-use crate::fold::{FoldError, FoldRecord, Folded, fold_shifted};
+use crate::fold::{FoldError, Folded, fold_shifted};
 use crate::process::Study;
 use crate::template::{LabelledTemplate, Replicate, Template, standard_error};
 
@@ -116,7 +116,7 @@ impl Subsets {
             let mut folded = if points >= nominal.record.final_points {
                 nominal.clone()
             } else {
-                let record = FoldRecord { final_points: points, ..nominal.record.clone() };
+                let record = nominal.record.leading(points);
                 let folded = fold_shifted(study, &study.detector, channel, &record, &|_| ())?;
                 spent = folded.record.cpu_seconds;
                 folded

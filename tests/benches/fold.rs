@@ -7,8 +7,8 @@
 use peakfold::detector::{Calorimeter, Detector, Direction, EtaRange, Object, Tail, Vertex};
 use peakfold::fold::fold_channel;
 use peakfold::process::{
-    Category, Channel, Cuts, Decay, EventSource, Intermediate, LegChoice, MassAxis, Natural, Production, Resonance,
-    ShapeChoice, Study, Width,
+    Category, Channel, Cuts, Decay, EventList, EventSource, Intermediate, LegChoice, MassAxis, Natural, Production,
+    Resonance, ShapeChoice, Study, Width,
 };
 use std::time::Instant;
 
@@ -103,21 +103,25 @@ fn main() {
     let precision: f64 = option("--precision").map_or(1e-3, |v| v.parse().expect("a number"));
     let threads: usize = option("--threads").map_or(1, |v| v.parse().expect("a number"));
     let repeats: usize = option("--repeats").map_or(5, |v| v.parse().expect("a number"));
-    let study = study(precision, arguments.iter().any(|a| a == "--tails"));
+    let mut study = study(precision, arguments.iter().any(|a| a == "--tails"));
+    if let Some(path) = option("--list") {
+        study.resonance.source = EventSource::File(EventList { path: path.into(), weight: None });
+    }
     let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build().expect("threads");
-    let (mut wall, mut cpu, mut folded) = (f64::INFINITY, f64::INFINITY, None);
+    let (mut wall, mut cpu, mut own, mut folded) = (f64::INFINITY, f64::INFINITY, f64::INFINITY, None);
     for _ in 0..repeats {
         let start = Instant::now();
         let cpu_start = cpu_seconds(begun);
         let result = pool.install(|| fold_channel(&study, 0, 180.0, &|_| ())).expect("a template");
         wall = wall.min(start.elapsed().as_secs_f64());
         cpu = cpu.min(cpu_seconds(begun) - cpu_start);
+        own = own.min(result.record.cpu_seconds);
         folded = Some(result);
     }
     let folded = folded.expect("at least one repeat");
     let template = &folded.templates[0].template;
     println!(
-        "{{\"what\":\"fold\",\"threads\":{threads},\"wall_s\":{wall:e},\"cpu_s\":{cpu:e},\"points\":{},\"ns_per_point\":{},\"precision\":{:e},\"reached\":{},\"acceptance\":{}}}",
+        "{{\"what\":\"fold\",\"threads\":{threads},\"wall_s\":{wall:e},\"cpu_s\":{cpu:e},\"fold_s\":{own:e},\"points\":{},\"ns_per_point\":{},\"precision\":{:e},\"reached\":{},\"acceptance\":{}}}",
         folded.record.points,
         1e9 * cpu / folded.record.points as f64,
         folded.record.precision_reached,

@@ -36,7 +36,7 @@ fn main() {
     for path in [&path, &packed] {
         for parallel in [false, true] {
             let (begin, processor) = (std::time::Instant::now(), processor_seconds());
-            let mut file = peakfold::events::lhe::EventFile::open(path, &Default::default()).unwrap();
+            let mut file = peakfold::events::EventFile::open(path, &Default::default()).unwrap();
             let (mut events, mut selection) = (0, Selection::default());
             let mut take = |batch: &peakfold::events::EventBatch| {
                 events += batch.len();

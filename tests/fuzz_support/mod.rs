@@ -5,8 +5,7 @@
 use std::path::{Path, PathBuf};
 
 use peakfold::detector::Object::{self, Electron, Muon, Photon};
-use peakfold::events::lhe::{EventFile, Options};
-use peakfold::events::{EventBatch, Selector};
+use peakfold::events::{EventBatch, EventFile, Options, Selector};
 use peakfold::files::{parse_detector, parse_study};
 use peakfold::problem::Problems;
 use peakfold::process::{Ancestry, Decay, LegChoice, Pairing, Pick};
@@ -35,11 +34,21 @@ fn selectors() -> Vec<Selector> {
     decays.iter().flat_map(of).collect()
 }
 
-/// Reads an event file, for the event weight and for a named one, and picks legs.
+/// Reads an event file; what begins with `<` is LHE.
 pub fn lhe(data: &[u8]) {
+    events(data);
+}
+
+/// Reads an event file; what does not begin with `<` is CSV.
+pub fn csv(data: &[u8]) {
+    events(data);
+}
+
+/// Reads an event file, for the event weight and for a named one, and picks legs.
+fn events(data: &[u8]) {
     let selectors = selectors();
     for weight in [None, Some("1002".to_owned())] {
-        let Ok(mut file) = EventFile::from_reader(Path::new("fuzz.lhe"), data, &Options { weight }) else { continue };
+        let Ok(mut file) = EventFile::from_reader(Path::new("fuzz"), data, &Options { weight }) else { continue };
         let mut batch = EventBatch::default();
         loop {
             let more = file.next_batch(&mut batch);

@@ -119,8 +119,14 @@ def main():
     for row in read(directory / "templates.csv"):
         templates.setdefault(label(row), []).append(row)
     assert templates, "no templates"
-    summary = {label(row): row for row in read(directory / "summary.csv")}
+    every = {label(row): row for row in read(directory / "summary.csv")}
+    summary = {key: row for key, row in every.items() if row["shift"] == "nominal"}
     assert list(summary) == list(templates), "templates and summary have other rows"
+    shifts = directory / "shifts.csv"
+    shifted = {label(row) for row in read(shifts)} if shifts.exists() else set()
+    assert set(every) - set(summary) == shifted, "shifts and summary have other rows"
+    for key, row in every.items():
+        check_efficiency(key, row)
 
     accepted = {}
     for key, rows in templates.items():
@@ -129,7 +135,6 @@ def main():
         check_widths(row, edges, probability)
         near(f"{key}: fraction", number(row["sigma_eff_fraction"]), FRACTION, 1e-15)
         assert row["reached"] == "true" and number(row["precision_reached"]) <= run["precision"], key
-        check_efficiency(key, row)
         fold = (row["channel"], row["mass_gev"])
         accepted[fold] = accepted.get(fold, 0.0) + number(row["acceptance"])
     assert all(0.0 < share <= 1.0 for share in accepted.values()), accepted

@@ -16,7 +16,7 @@ pub fn leg(code: i64, mother: u32, pt: f64, phi: f64) -> Particle {
 }
 
 pub fn event(particles: &[Particle], weight: f64, line: usize, group: u64) -> RawEvent<'_> {
-    RawEvent { particles, weight, line, group }
+    RawEvent { particles, weight, true_mass_gev: None, line, group }
 }
 
 /// Rows of the legs, found by their momenta.

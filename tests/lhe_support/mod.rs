@@ -2,12 +2,13 @@
 #![allow(dead_code, clippy::unwrap_used, clippy::expect_used, clippy::panic)]
 
 pub mod made;
+pub mod mutate;
 
 use std::io::Read;
 use std::path::{Path, PathBuf};
 
-use peakfold::events::lhe::{EventFile, Options, Report};
-use peakfold::events::{EventBatch, Particle};
+use peakfold::events::{EventBatch, Particle, RawEvent};
+use peakfold::events::{EventFile, Options, Report};
 use peakfold::problem::Problem;
 
 /// An event with rows of its own.
@@ -15,8 +16,21 @@ use peakfold::problem::Problem;
 pub struct Owned {
     pub particles: Vec<Particle>,
     pub weight: f64,
+    pub true_mass_gev: Option<f64>,
     pub line: usize,
     pub group: u64,
+}
+
+impl Owned {
+    pub fn event(&self) -> RawEvent<'_> {
+        RawEvent {
+            particles: &self.particles,
+            weight: self.weight,
+            true_mass_gev: self.true_mass_gev,
+            line: self.line,
+            group: self.group,
+        }
+    }
 }
 
 /// What reading to the end gave: the events that were handed out, and the report or the problem.
@@ -48,6 +62,7 @@ fn collect(batch: &EventBatch, events: &mut Vec<Owned>) {
     events.extend(batch.events().map(|e| Owned {
         particles: e.particles.to_vec(),
         weight: e.weight,
+        true_mass_gev: e.true_mass_gev,
         line: e.line,
         group: e.group,
     }));

@@ -25,6 +25,7 @@ pub fn describe(report: &mut String, channel: &Channel, detector: &Detector, res
         ShapeChoice::Gaussian => "Gaussian",
         ShapeChoice::CrystalBall => "Crystal Ball",
         ShapeChoice::DoubleCrystalBall => "double-sided Crystal Ball",
+        ShapeChoice::DoubleCrystalBallTwoSigmas => "double-sided Crystal Ball with two core widths",
         ShapeChoice::GaussExp => "Gaussian with exponential tails",
     };
     row("shape", &format!("{shape}, for the fit of the templates"));

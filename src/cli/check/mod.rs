@@ -3,10 +3,12 @@
 mod channel;
 mod cost;
 mod detector;
+mod events;
 mod text;
 
 use super::{Failure, Outcome};
 use crate::files::load_study;
+use crate::fold::{StudyEvents, read_events};
 use crate::problem::Problem;
 use crate::process::{Decay, EventSource, Natural, Production, Study, Width};
 use clap::Args;
@@ -30,21 +32,35 @@ pub struct CheckArgs {
 /// All problems of the files at once, and channels that cannot be folded.
 pub fn run(args: &CheckArgs, out: &mut impl Write) -> Outcome {
     let loaded = load_study(&args.study)?;
-    let costs = cost::measure(&loaded.study).map_err(|messages| {
+    let refused = |messages: Vec<String>| {
         let lines: Vec<String> =
             messages.iter().map(|m| Problem::of_file(&args.study, m.clone()).to_string()).collect();
         Failure::Input(lines.join("\n"))
-    })?;
-    let report = describe(&args.study, &loaded.study, &costs, &loaded.warnings);
+    };
+    let events = read_events(&loaded.study, &|_| ()).map_err(|error| Failure::Input(error.to_string()))?;
+    if let Some(events) = &events {
+        events::verdicts(&loaded.study, events).map_err(Failure::Input)?;
+    }
+    let costs = cost::measure(&loaded.study, events.as_ref()).map_err(refused)?;
+    let report = describe(&args.study, &loaded.study, events.as_ref(), &costs, &loaded.warnings);
     out.write_all(report.as_bytes()).map_err(Failure::Output)
 }
 
-fn describe(path: &Path, study: &Study, costs: &[cost::Cost], warnings: &[Problem]) -> String {
+fn describe(
+    path: &Path,
+    study: &Study,
+    events: Option<&StudyEvents>,
+    costs: &[cost::Cost],
+    warnings: &[Problem],
+) -> String {
     let mut report = String::new();
     study_text(&mut report, path, study);
     detector::describe(&mut report, &study.detector);
     for channel in &study.channels {
         channel::describe(&mut report, channel, &study.detector, &study.resonance);
+    }
+    if let Some(events) = events {
+        events::describe(&mut report, study, events);
     }
     cost::describe(&mut report, study, costs);
     if warnings.is_empty() {
@@ -83,7 +99,10 @@ fn study_text(report: &mut String, path: &Path, study: &Study) {
     row(
         "events",
         &match &resonance.source {
-            EventSource::File(file) => format!("read from {}", file.display()),
+            EventSource::File(list) => match &list.weight {
+                None => format!("read from {}", list.path.display()),
+                Some(weight) => format!("read from {}, weight `{weight}`", list.path.display()),
+            },
             EventSource::Generated(Production::Spectrum { pt_mean_gev, rapidity_sigma }) => {
                 let pt = match *pt_mean_gev {
                     0.0 => "no pT".to_owned(),

@@ -1,7 +1,7 @@
 //! The init block: beams and processes.
 
-use super::numbers::{Cursor, float, integer, shown};
 use super::weights::Declared;
+use crate::events::numbers::{Cursor, float, integer, shown};
 
 const BEAMS: [&str; 10] =
     ["IDBMUP1", "IDBMUP2", "EBMUP1", "EBMUP2", "PDFGUP1", "PDFGUP2", "PDFSUP1", "PDFSUP2", "IDWTUP", "NPRUP"];

@@ -2,11 +2,11 @@
 
 use std::path::PathBuf;
 
-use super::numbers::{Cursor, float, integer, printed_digits, shown};
-use super::report::Report;
 use super::weights::WeightChoice;
 use crate::events::consistency::{FLOOR, Precision, contradiction};
+use crate::events::numbers::{Cursor, float, integer, printed_digits, shown};
 use crate::events::raw::{EventBatch, Particle};
+use crate::events::report::Report;
 use crate::problem::Problem;
 
 /// Most particle rows of an event; the common block of the accord holds 500.
@@ -68,7 +68,7 @@ pub(super) fn parse_event(
             batch.drop_pending();
             report.count_inconsistent(kind, span.line);
         }
-        None => batch.complete(weight, span.line, span.group),
+        None => batch.complete(weight, None, span.line, span.group),
     }
     Ok(())
 }
@@ -99,7 +99,7 @@ fn column<T>(
     cursor: &mut Cursor<'_>,
     columns: &[&str],
     index: usize,
-    read: impl FnOnce(&[u8]) -> Result<T, super::numbers::NumberFault>,
+    read: impl FnOnce(&[u8]) -> Result<T, crate::events::numbers::NumberFault>,
 ) -> Result<T, Fault> {
     let line = cursor.line;
     let word = cursor.word().ok_or_else(|| Fault {

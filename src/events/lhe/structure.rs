@@ -2,12 +2,14 @@
 
 use std::sync::Arc;
 
+use super::Chunk;
 use super::init::Init;
 use super::parse::{Context, Span};
-use super::report::Report;
-use super::source::Source;
 use super::tags::{Tag, find, trimmed};
 use super::weights::{Declared, WeightChoice};
+use crate::events::numbers::shown;
+use crate::events::report::Report;
+use crate::events::source::Source;
 use crate::problem::Problem;
 
 /// Longest text of one event, in bytes.
@@ -33,7 +35,7 @@ enum Place {
 }
 
 /// Finds the events of a file one after the other.
-pub(super) struct Scanner<'a> {
+pub(in crate::events) struct Scanner<'a> {
     source: Source<'a>,
     weight: Option<String>,
     place: Place,
@@ -47,7 +49,7 @@ pub(super) struct Scanner<'a> {
 }
 
 impl<'a> Scanner<'a> {
-    pub(super) fn new(source: Source<'a>, weight: Option<String>) -> Self {
+    pub(in crate::events) fn new(source: Source<'a>, weight: Option<String>) -> Self {
         Scanner {
             source,
             weight,
@@ -61,20 +63,30 @@ impl<'a> Scanner<'a> {
         }
     }
 
-    pub(super) fn file(&self) -> &std::path::Path {
+    pub(in crate::events) fn file(&self) -> &std::path::Path {
         &self.source.file
     }
 
-    /// Fills text and spans with events until the text has about `target` bytes; true when the file has ended.
-    pub(super) fn scan(
+    /// Fills a chunk with events until its text has about `target` bytes; true when the file has ended.
+    pub(in crate::events) fn scan(
+        &mut self,
+        target: usize,
+        chunk: &mut Chunk,
+        report: &mut Report,
+    ) -> Result<bool, Problem> {
+        chunk.clear();
+        let scanned = self.scan_into(target, &mut chunk.text, &mut chunk.spans, report);
+        chunk.context = self.context.clone();
+        scanned
+    }
+
+    fn scan_into(
         &mut self,
         target: usize,
         text: &mut Vec<u8>,
         spans: &mut Vec<Span>,
         report: &mut Report,
     ) -> Result<bool, Problem> {
-        text.clear();
-        spans.clear();
         loop {
             let begin = text.len();
             if !self.source.read_line(text)? {
@@ -104,11 +116,6 @@ impl<'a> Scanner<'a> {
                 }
             }
         }
-    }
-
-    /// The context of the events that were found last.
-    pub(super) fn context(&self) -> Option<Arc<Context>> {
-        self.context.clone()
     }
 
     /// Whether a line that begins with `<` ends the event.
@@ -182,10 +189,9 @@ impl<'a> Scanner<'a> {
         }
         let version = tag.attribute(b"version").unwrap_or_default();
         if !matches!(version.split(|b| *b == b'.').next(), Some(b"1" | b"2" | b"3")) {
-            return Err(self.source.problem(format!(
-                "the version of the event file is {}; 1.0 to 3.0 can be read",
-                super::numbers::shown(version)
-            )));
+            return Err(self
+                .source
+                .problem(format!("the version of the event file is {}; 1.0 to 3.0 can be read", shown(version))));
         }
         self.place = Place::Between;
         Ok(())

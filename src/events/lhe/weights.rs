@@ -1,7 +1,7 @@
 //! Named weights: declared in `<initrwgt>`, given per event in `<rwgt>` by name or in `<weights>` by position.
 
-use super::numbers::{Cursor, float, shown};
 use super::tags::{Tag, find};
+use crate::events::numbers::{Cursor, float, shown};
 
 /// Most weights that are kept by name, so that a damaged file cannot fill the memory.
 const MOST_DECLARED: usize = 20_000;

@@ -9,7 +9,7 @@ use crate::kinematics::{FourVector, TruthLeg};
 ///
 /// Codes of the Review of Particle Physics, Monte Carlo particle numbering scheme: quarks 1 to 5 and the gluon 21 are jets; the
 /// top quark, neutrinos and taus are no legs.
-pub(super) fn object_of(code: i64) -> Option<(Object, i8)> {
+pub(in crate::events) fn object_of(code: i64) -> Option<(Object, i8)> {
     match code {
         PHOTON => Some((Object::Photon, 0)),
         11 => Some((Object::Electron, -1)),

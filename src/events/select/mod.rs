@@ -37,8 +37,9 @@
 //!
 //! # Truth mass
 //!
-//! The mass column of the resonance row whose final descendants are the legs and possibly further photons, which were radiated
-//! off; of several such rows that with the fewest descendants, of equals the first. Without one, the invariant mass of the legs.
+//! That which the file gives for the event, else the mass column of the resonance row whose final descendants are the legs and
+//! possibly further photons, which were radiated off; of several such rows that with the fewest descendants, of equals the
+//! first. Without one, the invariant mass of the legs.
 
 mod dress;
 mod legs;
@@ -53,6 +54,7 @@ use crate::detector::Object;
 use crate::kinematics::{MAX_LEGS, TruthEvent, TruthLeg};
 use crate::process::{Ancestry, Decay, LegChoice, Pairing, Pick};
 use dress::dress;
+pub(super) use legs::object_of;
 use legs::{Candidate, best, choose, holds, invariant_mass, pt_sum, without};
 use pairs::{hardest_of_each, nearest_first, nearest_pairs, nearest_sum};
 pub use tally::Selection;
@@ -166,7 +168,8 @@ impl Selector {
         let wholes = families.iter().filter(|family| family.is_whole(&chosen, particles));
         let whole = wholes.min_by_key(|family| family.finals.len());
         let resonance_mass = whole.and_then(|family| particles.get(family.row)).map(|row| row.mass);
-        let mass_gev = resonance_mass.filter(|m| *m > 0.0).unwrap_or_else(|| invariant_mass(&chosen));
+        let resonance_mass = resonance_mass.filter(|m| *m > 0.0);
+        let mass_gev = event.true_mass_gev.or(resonance_mass).unwrap_or_else(|| invariant_mass(&chosen));
         if !(mass_gev > 0.0 && mass_gev.is_finite()) {
             return Err(Skip::NoMass);
         }

@@ -3,8 +3,8 @@
 use std::path::Path;
 
 use super::Skip;
-use crate::events::lhe::{Report, Tally};
 use crate::events::raw::RawEvent;
+use crate::events::report::{Report, Tally};
 use crate::kinematics::TruthEvent;
 use crate::problem::Problem;
 

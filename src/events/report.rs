@@ -41,13 +41,15 @@ pub struct Report {
     pub events: u64,
     /// Events that were left out because their kinematics contradict themselves, by the kinds of
     /// [`Inconsistency::ALL`].
-    pub inconsistent: [Tally; 4],
+    pub inconsistent: [Tally; 5],
     /// Numbers with a Fortran D exponent, which were read as E.
     pub d_exponents: Tally,
     /// Line of an event that the end of the file cuts off; it was left out.
     pub truncated_line: Option<usize>,
-    /// Whether the file ends without its closing tag.
+    /// Whether the file ends without its closing tag (LHE).
     pub end_missing: bool,
+    /// Whether the last line has no line end (CSV).
+    pub line_end_missing: bool,
 }
 
 impl Report {
@@ -78,6 +80,7 @@ impl Report {
         self.d_exponents.merge(later.d_exponents);
         self.truncated_line = self.truncated_line.or(later.truncated_line);
         self.end_missing |= later.end_missing;
+        self.line_end_missing |= later.line_end_missing;
     }
 
     /// Whether a file that was read to its end can be used.
@@ -94,7 +97,7 @@ impl Report {
                     line,
                     "the file ends inside its first event; one complete event is needed at least",
                 ),
-                None => Problem::of_file(file, "the file has no <event>; one is needed at least"),
+                None => Problem::of_file(file, "the file has no event; one is needed at least"),
             });
         }
         let bad = self.inconsistent_events();
@@ -140,6 +143,9 @@ impl Report {
                 self.events,
                 self.inconsistent_kinds()
             ));
+        }
+        if self.line_end_missing {
+            warnings.push("the last line of the file has no line end; the file may have been cut off".to_owned());
         }
         match self.truncated_line {
             Some(line) => {

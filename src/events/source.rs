@@ -15,6 +15,12 @@ pub(super) const LONGEST_LINE: usize = 1 << 20;
 
 const BUFFER_BYTES: usize = 256 << 10;
 
+/// Text that is looked at to tell the format.
+const START_BYTES: u64 = 4096;
+
+/// What some editors write before the first line of UTF-8 text.
+pub(super) const BYTE_ORDER_MARK: &[u8] = b"\xef\xbb\xbf";
+
 /// How far the reading of a file has come; can be asked from another thread.
 #[derive(Clone, Debug)]
 pub struct Progress {
@@ -43,11 +49,25 @@ impl<R: Read> Read for Counted<R> {
     }
 }
 
+/// What a failed reading means.
+fn unreadable(gzip: bool, error: &io::Error) -> String {
+    match (gzip, error.kind()) {
+        (true, io::ErrorKind::UnexpectedEof) => {
+            "the gzip data end too early: the file was cut off; copy or write it again".to_owned()
+        }
+        (true, io::ErrorKind::InvalidData | io::ErrorKind::InvalidInput) => {
+            format!("the gzip data are damaged ({error}); copy or write the file again")
+        }
+        _ => format!("the event file cannot be read: {error}"),
+    }
+}
+
 /// The lines of a file.
 pub(super) struct Source<'a> {
     pub file: PathBuf,
     reader: Box<dyn BufRead + Send + 'a>,
     gzip: bool,
+    begins_with_tag: bool,
     /// Number of the line that was read last, from 1.
     pub line: usize,
 }
@@ -58,7 +78,10 @@ impl<'a> Source<'a> {
         let file = File::open(path).map_err(unreadable)?;
         let metadata = file.metadata().map_err(unreadable)?;
         if metadata.is_dir() {
-            return Err(Problem::of_file(path, "this is a directory; an event file (LHE, plain or gzip) is needed"));
+            return Err(Problem::of_file(
+                path,
+                "this is a directory; an event file (LHE or CSV, plain or gzip) is needed",
+            ));
         }
         let total = metadata.is_file().then_some(metadata.len());
         Source::new(path, file, total)
@@ -72,39 +95,48 @@ impl<'a> Source<'a> {
         let bytes_read = Arc::new(AtomicU64::new(0));
         let progress = Progress { bytes_read: bytes_read.clone(), total_bytes };
         let mut counted = Counted { inner: reader, bytes_read };
-        let mut start = Vec::new();
+        let mut magic = Vec::new();
         (&mut counted)
             .take(2)
-            .read_to_end(&mut start)
+            .read_to_end(&mut magic)
             .map_err(|error| Problem::of_file(file, format!("the event file cannot be read: {error}")))?;
-        if start.is_empty() {
-            return Err(Problem::of_file(file, "the file is empty; an event file (LHE, plain or gzip) is needed"));
+        let empty = || Problem::of_file(file, "the file is empty; an event file (LHE or CSV, plain or gzip) is needed");
+        if magic.is_empty() {
+            return Err(empty());
         }
-        let gzip = start == [0x1f, 0x8b];
-        let whole = BufReader::with_capacity(BUFFER_BYTES, Cursor::new(start).chain(counted));
-        let reader: Box<dyn BufRead + Send + 'a> = if gzip {
+        let gzip = magic == [0x1f, 0x8b];
+        let whole = BufReader::with_capacity(BUFFER_BYTES, Cursor::new(magic).chain(counted));
+        let mut reader: Box<dyn BufRead + Send + 'a> = if gzip {
             Box::new(BufReader::with_capacity(BUFFER_BYTES, MultiGzDecoder::new(whole)))
         } else {
             Box::new(whole)
         };
-        Ok((Source { file: file.to_path_buf(), reader, gzip, line: 0 }, progress))
+        let mut start = Vec::new();
+        (&mut reader)
+            .take(START_BYTES)
+            .read_to_end(&mut start)
+            .map_err(|error| Problem::of_file(file, unreadable(gzip, &error)))?;
+        if start.is_empty() {
+            return Err(empty());
+        }
+        let text = start.strip_prefix(BYTE_ORDER_MARK).unwrap_or(&start);
+        let begins_with_tag = text.trim_ascii_start().first() == Some(&b'<');
+        let reader = Box::new(Cursor::new(start).chain(reader));
+        Ok((Source { file: file.to_path_buf(), reader, gzip, begins_with_tag, line: 0 }, progress))
+    }
+
+    /// Whether the first character that is no blank is `<`.
+    pub(super) fn begins_with_tag(&self) -> bool {
+        self.begins_with_tag
     }
 
     /// Appends the next line with its end to `text`; false at the end of the file.
     pub(super) fn read_line(&mut self, text: &mut Vec<u8>) -> Result<bool, Problem> {
         let limit = LONGEST_LINE as u64 + 1;
-        let count = (&mut *self.reader).take(limit).read_until(b'\n', text).map_err(|error| {
-            let message = match (self.gzip, error.kind()) {
-                (true, io::ErrorKind::UnexpectedEof) => {
-                    "the gzip data end too early: the file was cut off; copy or write it again".to_owned()
-                }
-                (true, io::ErrorKind::InvalidData | io::ErrorKind::InvalidInput) => {
-                    format!("the gzip data are damaged ({error}); copy or write the file again")
-                }
-                _ => format!("the event file cannot be read: {error}"),
-            };
-            self.problem(message)
-        })?;
+        let count = (&mut *self.reader)
+            .take(limit)
+            .read_until(b'\n', text)
+            .map_err(|error| self.problem(unreadable(self.gzip, &error)))?;
         if count == 0 {
             return Ok(false);
         }

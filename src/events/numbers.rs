@@ -1,4 +1,4 @@
-//! Words and numbers of an event file, without any allocation.
+//! Words and numbers of event files, without any allocation.
 
 use std::fmt;
 
