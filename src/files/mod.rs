@@ -5,6 +5,7 @@
 //! collected, with file, line and key, over all files of a study; only a study without any becomes typed.
 
 mod channel_tables;
+mod closure_table;
 mod detector_entries;
 mod detector_file;
 mod digest;

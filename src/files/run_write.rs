@@ -1,5 +1,7 @@
-//! The files of a run directory: `templates.csv`, `shifts.csv`, `responses.csv`, `summary.csv`, `model.json`, `run.json`.
+//! The files of a run directory: `templates.csv`, `shifts.csv`, `responses.csv`, `summary.csv`, `model.json`,
+//! `closure.csv`, `run.json`.
 
+use super::closure_table::{self, CLOSURE_FILE};
 use super::model_file::{self, MODEL_FILE, RunModels};
 use super::number::{shortest, shortest_or_empty};
 use super::response_table::{self, RESPONSES_FILE};
@@ -101,6 +103,7 @@ impl RunContents {
             let text = model_file::to_json(models, &self.record.study)
                 .map_err(|error| TargetError::from_json(MODEL_FILE, error))?;
             staging.write(MODEL_FILE, |out| out.write_all(&text))?;
+            staging.write(CLOSURE_FILE, |out| closure_table::write(out, &models.categories))?;
         }
         for (name, bytes) in &self.further {
             staging.write(name, |out| out.write_all(bytes))?;
