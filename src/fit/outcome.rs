@@ -41,6 +41,12 @@ pub enum Warning {
     /// A shape of nothing.
     #[error("there is no background, so {0} is not determined")]
     Empty(String),
+    /// A background that is compatible with none: its events, and their error where it is known.
+    #[error(
+        "the background of {0:.1}{err} events is compatible with none, so its shape is not determined; fix its shape or leave it out",
+        err = .1.map_or_else(String::new, |e| format!(" ± {e:.1}"))
+    )]
+    FaintBackground(f64, Option<f64>),
     /// No positive second derivatives.
     #[error(
         "the second derivatives at the minimum are not positive; no errors are given: the data do not determine all free parameters"

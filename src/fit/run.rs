@@ -24,6 +24,8 @@ const MANY: usize = 1 << 17;
 const THIN: usize = 64;
 /// Below this part of a line shape in the window the fit says so.
 const SMALL_WINDOW: f64 = 0.1;
+/// With fewer errors than this between its events and 0 a background counts as compatible with none.
+const FAINT: f64 = 2.0;
 /// Below this probability of the chi-square the fit says so: 4 standard deviations.
 const BAD: f64 = 6e-5;
 
@@ -255,6 +257,18 @@ fn finish(
         Data::Masses(masses) => (masses.gev().len(), masses.total()),
         Data::Histogram(histogram) => (histogram.bins().len(), histogram.total()),
     };
+    if let (Some(kind), Some((events, error))) = (model.background, background_events) {
+        let shape = &settled[model.background_start()..];
+        let shape = if kind == super::Background::Exponential { &shape[1..] } else { shape };
+        // One free coefficient of a polynomial is its yield.
+        let least = if kind == super::Background::Exponential { 1 } else { 2 };
+        let shaped = shape.iter().filter(|s| s.free).count() >= least;
+        let told = warnings.iter().any(|w| matches!(w, Warning::Empty(_)));
+        // Without second derivatives an error is at most about that of all events.
+        if shaped && !told && events <= FAINT * error.unwrap_or_else(|| total.abs().sqrt()) {
+            warnings.push(Warning::FaintBackground(events, error));
+        }
+    }
     Ok(FitOutcome {
         covariant: places.iter().map(|&k| settled[k].name.clone()).collect(),
         parameters,
