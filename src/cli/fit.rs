@@ -232,7 +232,7 @@ pub fn run(args: &FitArgs, out: &mut impl Write) -> Outcome {
     };
     Err(Failure::Numerical(format!(
         "the fit did not converge: {why} (estimated distance in -ln L: {:.2e}, must be below 1e-6); the printed values \
-         are the best point met, not the best fit, and their errors mean nothing; start nearer (--start NAME=VALUE) or \
+         are the best point met, not the best fit, and have no errors; start nearer (--start NAME=VALUE) or \
          fix what the data do not tell (--fix NAME=VALUE)",
         outcome.distance
     )))

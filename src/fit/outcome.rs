@@ -80,7 +80,7 @@ pub struct FitOutcome {
     pub parameters: Vec<Fitted>,
     /// Names of the parameters that the covariance is about.
     pub covariant: Vec<String>,
-    /// Covariance of these, where the second derivatives are positive.
+    /// Covariance of these, where the fit converged and the second derivatives are positive.
     pub covariance: Option<DMatrix<f64>>,
     /// `-ln L` at the minimum (see the module for what constants it leaves out).
     pub negative_log_likelihood: f64,

@@ -214,7 +214,9 @@ fn finish(
         slope && values[k - 1] == 0.0
     };
     let places: Vec<usize> = coordinates.free.iter().copied().filter(|&k| !at_bound(k) && !empty(k)).collect();
-    let covariance = covariance(objective, &coordinates, &values, &places);
+    // Away from the minimum second derivatives are no measure of errors.
+    let converged = ended.stop == Stop::Converged;
+    let covariance = if converged { covariance(objective, &coordinates, &values, &places) } else { None };
     let error = |k: usize| {
         let place = places.iter().position(|&p| p == k)?;
         covariance.as_ref().map(|c| c[(place, place)].sqrt())
@@ -233,7 +235,7 @@ fn finish(
     warnings.extend(
         (0..values.len()).filter(|&k| settled[k].free && empty(k)).map(|k| Warning::Empty(settled[k].name.clone())),
     );
-    warnings.extend(warnings_of(&parameters, covariance.is_some() || places.is_empty()));
+    warnings.extend(warnings_of(&parameters, covariance.is_some() || places.is_empty() || !converged));
     let window_probability = model.at(&values).map_or(f64::NAN, |p| p.window_probability);
     if window_probability < SMALL_WINDOW {
         warnings.push(Warning::SmallWindow(window_probability));
@@ -265,7 +267,7 @@ fn finish(
         let shaped = shape.iter().filter(|s| s.free).count() >= least;
         let told = warnings.iter().any(|w| matches!(w, Warning::Empty(_)));
         // Without second derivatives an error is at most about that of all events.
-        if shaped && !told && events <= FAINT * error.unwrap_or_else(|| total.abs().sqrt()) {
+        if converged && shaped && !told && events <= FAINT * error.unwrap_or_else(|| total.abs().sqrt()) {
             warnings.push(Warning::FaintBackground(events, error));
         }
     }
