@@ -91,6 +91,7 @@ fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> O
         axis: axis?,
         shape: shape.unwrap_or(ShapeChoice::DoubleCrystalBall),
         categories,
+        simulated: Default::default(),
     };
     Some(PlacedChannel { channel, decay_line, axis_line, path, decay_key, efficient_legs_line })
 }

@@ -6,6 +6,7 @@
 //! * [`Residuals`]: what the shapes leave of the templates, interpolated, for templates more exact than any shape.
 //! * [`QuantileInterpolation`]: templates at new masses without a shape.
 //! * [`closure`]: what each of these predicts for a mass point that it has not seen.
+//! * [`Anchor`]: a simulated sample as a mass point, and [`Agreement`]: how the folded templates agree with such samples.
 //! * [`MassBias`]: the misfit as a bias of a fitted mass.
 //! * [`wide_template`]: templates of a resonance with a natural width.
 //!
@@ -13,6 +14,8 @@
 //! its `bias` is where the peak lies. The mass model is made from templates of width 0.
 
 mod acceptance;
+mod agreement;
+mod anchor;
 mod bias;
 mod closure;
 mod mass_model;
@@ -25,6 +28,8 @@ mod shape;
 mod smooth;
 
 pub use acceptance::YieldFactor;
+pub use agreement::{Agreement, AgreementError, AnchorComparison, agreement, compare_anchor};
+pub use anchor::{Anchor, AnchorError, BinnedSample, LEAST_ENTRIES, merge_points};
 pub use bias::{BiasError, MassBias, mass_bias};
 pub use closure::{
     Closure, ClosureError, ClosurePoint, Deviation, InterpolationError, closure, deviation, quantile_closure,
