@@ -7,21 +7,23 @@ use super::anchor::{Anchor, BinnedSample};
 use super::mass_model::ModelPoint;
 use super::response::Response;
 use super::shape::{parameter_link, prototype};
-use crate::fit::{Expected, FitError, Stop, fit_counts, positive_inverse};
-use crate::lineshape::widths::narrowest_interval;
+use crate::fit::{Expected, FitError, fit_counts, positive_inverse};
 use crate::lineshape::Resolution;
+use crate::lineshape::widths::narrowest_interval;
 use crate::template::{Cumulative, CumulativeError, Measured, SIGMA_EFF_FRACTION, Template};
 
 /// Bins are joined until the fold expects this many effective entries of the sample.
 const LEAST_EXPECTED: f64 = 20.0;
 /// Least number of joined bins of a sample.
 const LEAST_BINS: usize = 5;
-/// Smearing below this part of sigma_eff is interpolated from it.
+/// Smearing below this part of sigma_eff is interpolated, for its derivative in the square is 0/0 at 0.
 const SMALL: f64 = 0.1;
 /// Steps of the sum over a standard normal, and where it ends. The sum over equal steps of a smooth function times a
 /// Gaussian is exact to rounding at such steps.
 const STEP: f64 = 0.25;
 const STEPS: i32 = 28;
+/// Largest distance of a minimum, in units of the logarithm of the likelihood, of which one standard error is 0.5.
+const NEAR: f64 = 1e-3;
 /// Step in a parameter's smooth coordinate for derivatives of sigma_eff.
 const DIFFERENCE: f64 = 1e-4;
 
@@ -182,8 +184,9 @@ pub struct Agreement {
     pub smearing: f64,
     /// How far the smearing reaches up at one standard error of its square.
     pub smearing_error: f64,
-    /// Signed square of the smearing, which has a symmetric error: negative when the simulated peak is narrower. Then the
-    /// folded mass is contracted about the peak by `sqrt(1 + squared_smearing/w²)`, w the relative sigma_eff.
+    /// Signed square of the smearing, which has a symmetric error: negative when the simulated peak is narrower. Then
+    /// every bin is divided by what smearing multiplies it by, so that a Gaussian gets the width `sqrt(w² +
+    /// squared_smearing)`; of other shapes the number is approximate, and the chi-square may stay large.
     pub squared_smearing: f64,
     /// Its statistical error.
     pub squared_smearing_error: f64,
@@ -231,13 +234,16 @@ pub fn agreement(pairs: &[(&Anchor, &Template)]) -> Result<Agreement, AgreementE
         }
         Some(Expected { events, gradient: by_scale.into_iter().chain(by_square).collect() })
     };
-    let bounds = [(-3.0, 3.0), (-0.8, 9.0)];
+    let bounds = [(-3.0, 3.0), (-0.45, 9.0)];
     let fit = fit_counts(&counts, &[0.0, 0.0], &bounds, &expected)?;
     let at_bound = fit.values.iter().zip(&bounds).any(|(v, b)| v - b.0 < 1e-3 || b.1 - v < 1e-3);
-    if fit.stop != Stop::Converged || at_bound {
+    let at = expected(&fit.values).ok_or(AgreementError::NotConverged)?;
+    // Derivatives are approximate where the smearing is interpolated, so that a minimiser that finds no lower value may be
+    // at the minimum for all that matters.
+    let near = distance(&counts, &at).is_some_and(|d| d < NEAR);
+    if at_bound || !near {
         return Err(AgreementError::NotConverged);
     }
-    let at = expected(&fit.values).ok_or(AgreementError::NotConverged)?;
     let start = expected(&[0.0, 0.0]).ok_or(AgreementError::NotConverged)?;
     let covariance = covariance(&parts, &at).ok_or(AgreementError::NotConverged)?;
     let chi_square = |expected: &Expected| -> f64 {
@@ -268,18 +274,29 @@ pub fn agreement(pairs: &[(&Anchor, &Template)]) -> Result<Agreement, AgreementE
     })
 }
 
+/// How much lower than here the negative logarithm of the likelihood is at the minimum of its parabola.
+fn distance(counts: &[f64], at: &Expected) -> Option<f64> {
+    let bins = counts.len();
+    let slope = |k: usize| (0..bins).map(|i| (1.0 - counts[i] / at.events[i]) * at.gradient[k * bins + i]).sum::<f64>();
+    let g = DVector::from_fn(2, |k, _| slope(k));
+    let inverse = positive_inverse(&products(at, &|i| 1.0 / at.events[i]))?;
+    Some(0.5 * g.dot(&(&inverse * &g)))
+}
+
+/// Sums over the bins of products of derivatives.
+fn products(at: &Expected, weight: &dyn Fn(usize) -> f64) -> DMatrix<f64> {
+    let bins = at.events.len();
+    DMatrix::from_fn(2, 2, |k, l| {
+        (0..bins).map(|i| weight(i) * at.gradient[k * bins + i] * at.gradient[l * bins + i]).sum::<f64>()
+    })
+}
+
 /// `H⁻¹ B H⁻¹`, B from the squared weights of the bins (P. J. Huber, Proc. Fifth Berkeley Symp. 1 (1967) 221), so that
 /// weights that go with the mass are allowed for.
 fn covariance(parts: &[Part], at: &Expected) -> Option<DMatrix<f64>> {
-    let bins = at.events.len();
     let variance: Vec<f64> = parts.iter().flat_map(|p| p.squares.iter().copied()).collect();
-    let sum = |of: &dyn Fn(usize) -> f64| {
-        DMatrix::from_fn(2, 2, |k, l| {
-            (0..bins).map(|i| of(i) * at.gradient[k * bins + i] * at.gradient[l * bins + i]).sum::<f64>()
-        })
-    };
-    let hessian = sum(&|i| 1.0 / at.events[i]);
-    let scores = sum(&|i| variance[i] / (at.events[i] * at.events[i]));
+    let hessian = products(at, &|i| 1.0 / at.events[i]);
+    let scores = products(at, &|i| variance[i] / (at.events[i] * at.events[i]));
     let inverse = positive_inverse(&hessian)?;
     Some(&inverse * scores * &inverse)
 }
@@ -289,7 +306,6 @@ struct Part {
     mass_gev: f64,
     edges_gev: Vec<f64>,
     cumulative: Cumulative,
-    peak_gev: f64,
     width_gev: f64,
     below: f64,
     above: f64,
@@ -304,8 +320,7 @@ struct Part {
 impl Part {
     fn new(sample: &BinnedSample, folded: &Template, mass_gev: f64) -> Result<Self, AgreementError> {
         let cumulative = Cumulative::of(folded).map_err(|error| AgreementError::Cumulative(mass_gev, error))?;
-        let peak_and_width = cumulative.peak().zip(cumulative.sigma_eff());
-        let (peak_gev, width_gev) = peak_and_width.ok_or(AgreementError::NoWidth(mass_gev))?;
+        let width_gev = cumulative.sigma_eff().ok_or(AgreementError::NoWidth(mass_gev))?;
         let events = sample.effective_entries();
         let unit = sample.on_axis() / events;
         let on_axis: f64 = folded.probability.iter().sum();
@@ -315,7 +330,6 @@ impl Part {
             mass_gev,
             edges_gev: vec![folded.edges_gev[0]],
             cumulative,
-            peak_gev,
             width_gev,
             below: folded.below_axis,
             above: folded.above_axis,
@@ -370,26 +384,20 @@ impl Part {
         let width = self.width_gev / self.mass_gev;
         let stretch = 1.0 + scale;
         let place = m / stretch;
-        if square < 0.0 {
-            // Contracted about the peak.
-            let by = (1.0 + square / (width * width)).sqrt();
-            let place = self.peak_gev + (place - self.peak_gev) / by;
-            let (sum, density) = self.folded(place);
-            let by_scale = -density * m / (stretch * stretch * by);
-            let by_square = -density * (place - self.peak_gev) / (2.0 * by * by * width * width);
-            return [sum, by_scale, by_square];
-        }
         let least = SMALL * SMALL * width * width;
         if square < least {
-            // The running sum is linear in the squared smearing here.
+            // A parabola in the squared smearing from the fold to the least smearing, with the slope that is there.
             let (sum, density) = self.folded(place);
-            let at_least = self.sum(m, scale, least);
-            let t = square / least;
             let by_scale = -density * m / (stretch * stretch);
+            let [end, end_by_scale, end_by_square] = self.sum(m, scale, least);
+            let mean = (end - sum) / least;
+            let bend = (end_by_square - mean) / least;
+            let slope = mean - bend * least;
+            let t = square / least;
             return [
-                sum + t * (at_least[0] - sum),
-                by_scale + t * (at_least[1] - by_scale),
-                (at_least[0] - sum) / least,
+                sum + square * (slope + square * bend),
+                by_scale + t * (end_by_scale - by_scale),
+                slope + 2.0 * square * bend,
             ];
         }
         let smearing = square.sqrt();
@@ -409,22 +417,43 @@ impl Part {
         total.map(|v| v / norm)
     }
 
+    /// Probabilities of the joined bins with their derivatives.
+    fn bins(&self, scale: f64, square: f64) -> Vec<[f64; 3]> {
+        let sums: Vec<[f64; 3]> = self.edges_gev.iter().map(|&m| self.sum(m, scale, square)).collect();
+        sums.windows(2).map(|pair| std::array::from_fn(|k| pair[1][k] - pair[0][k])).collect()
+    }
+
     /// Expected events per joined bin with their derivatives in scale and squared smearing; `None` where one is not
     /// positive.
     fn expected(&self, scale: f64, square: f64) -> Option<[Vec<f64>; 3]> {
-        let sums: Vec<[f64; 3]> = self.edges_gev.iter().map(|&m| self.sum(m, scale, square)).collect();
-        let (first, last) = (sums.first()?, sums.last()?);
-        let whole: [f64; 3] = std::array::from_fn(|k| last[k] - first[k]);
+        let mut bins = self.bins(scale, square.max(0.0));
+        if square < 0.0 {
+            // The inverse of what smearing by x (in w²) does to each bin, x such that a Gaussian of width w becomes one of
+            // w² (1 - y).
+            let width = self.width_gev / self.mass_gev;
+            let y = -square / (width * width);
+            if !(y < 0.5) {
+                return None;
+            }
+            let x = y / (1.0 - 2.0 * y);
+            let smeared = self.bins(scale, x * width * width);
+            for ([p, by_scale, by_square], [q, q_by_scale, q_by_square]) in bins.iter_mut().zip(smeared) {
+                let ratio = *p / q;
+                *by_scale = ratio * (2.0 * *by_scale - ratio * q_by_scale);
+                *by_square = ratio * ratio * q_by_square / ((1.0 - 2.0 * y) * (1.0 - 2.0 * y));
+                *p *= ratio;
+            }
+        }
+        let whole: [f64; 3] = std::array::from_fn(|k| bins.iter().map(|bin| bin[k]).sum());
         let mut all = [Vec::new(), Vec::new(), Vec::new()];
-        for pair in sums.windows(2) {
-            let part: [f64; 3] = std::array::from_fn(|k| pair[1][k] - pair[0][k]);
-            let share = part[0] / whole[0];
+        for bin in bins {
+            let share = bin[0] / whole[0];
             if !(share > 0.0) {
                 return None;
             }
             all[0].push(self.events * share);
             for k in 1..3 {
-                all[k].push(self.events * (part[k] - share * whole[k]) / whole[0]);
+                all[k].push(self.events * (bin[k] - share * whole[k]) / whole[0]);
             }
         }
         Some(all)
