@@ -23,6 +23,7 @@ mod run_read;
 mod run_record;
 mod run_target;
 mod run_write;
+mod simulated_tables;
 mod source;
 mod spectrum_file;
 mod study_checks;
@@ -51,7 +52,7 @@ pub struct LoadedStudy {
     /// The study.
     pub study: Study,
     /// Every file that it depends on: the study, the detector with its efficiency tables, then a spectrum
-    /// table or an event file.
+    /// table or an event file, then simulated samples.
     pub inputs: Vec<FileDigest>,
     /// What is allowed but likely not meant.
     pub warnings: Vec<Problem>,

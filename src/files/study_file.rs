@@ -89,11 +89,12 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
     if sections.is_empty() && root.optional("channel").is_none_or(|item| !item.is_table()) {
         root.problem("channel", "no channel is there; give at least one [[channel]]");
     }
-    let channels = channel_tables::read(sections, generated);
+    let channels = channel_tables::read(sections, generated, &mut files.others);
     root.finish();
 
     if let Some(resonance) = &resonance {
         study_checks::masses(sheet, masses_line, resonance, &channels);
+        study_checks::simulated(sheet, resonance, &channels);
     }
     if let Some(detector) = &detector {
         study_checks::coverage(sheet, detector, &channels);

@@ -5,7 +5,10 @@ mod channel;
 mod resonance;
 
 pub use axis::MassAxis;
-pub use channel::{Ancestry, Category, Channel, Cuts, Decay, LegChoice, Pairing, Pick, ShapeChoice};
+pub use channel::{
+    Ancestry, Category, Channel, Cuts, Decay, LegChoice, Pairing, Pick, ShapeChoice, Simulated, SimulatedSample,
+    SimulatedUse,
+};
 pub use resonance::{
     EventList, EventSource, Intermediate, Natural, Production, Radiation, Resonance, SpectrumCell, Width,
 };

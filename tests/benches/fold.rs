@@ -83,6 +83,7 @@ fn study(precision: f64, tails: bool) -> Study {
             axis: MassAxis { low: 150.0, high: 210.0, bins: 200, relative: false },
             shape: ShapeChoice::DoubleCrystalBall,
             categories: vec![Category { name: "all".to_string(), max_abs_eta: None }],
+            simulated: Default::default(),
         }],
     }
 }

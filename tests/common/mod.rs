@@ -78,6 +78,7 @@ pub fn channel(name: &str, decay: Decay) -> Channel {
         axis: MassAxis { low: 0.8, high: 1.2, bins: 200, relative: true },
         shape: ShapeChoice::DoubleCrystalBall,
         categories: vec![Category { name: "all".into(), max_abs_eta: None }],
+        simulated: Default::default(),
     }
 }
 
