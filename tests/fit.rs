@@ -385,7 +385,27 @@ fn fit_without_minimum_is_not_trusted() {
     assert!(found["covariance"]["matrix"].is_null() && found["parameters"]["background_0"]["error"].is_null());
 }
 
-const ENDLESS: (&str, &str) = ("", "");
+const ENDLESS: (&str, &str) = (
+    "\
+parameter                      result      value  error
+mass             fixed                 90.000000      -
+bias             fixed                  0.000000      -
+sigma            fixed                  0.200000      -
+signal_yield     free                   1.650101      -
+background_0     free                   4.022987      -
+background_1     at its bound           0.000000      -
+background, sum                4.0230   4.022987      -
+
+Digits in parentheses: standard error of the last digits; masses and widths in GeV.
+7 rows (sum 8.5) from 80 to 100 GeV
+chi2: too few events for it
+-ln L = -82.845250; NOT converged after 300 steps, 2.2e175 above the minimum
+",
+    "\
+peakfold: warning: background_1 ended at its bound 0.000000000000000000000000000000000000000000000000000000000000000000000000000005980079467571891; its error is not known, and those of the others hold it there
+peakfold: the fit did not converge: it had not reached the minimum after 300 steps (estimated distance in -ln L: 2.17e175, must be below 1e-6); the printed values are the best point met, not the best fit, and have no errors; start nearer (--start NAME=VALUE) or fix what the data do not tell (--fix NAME=VALUE)
+",
+);
 
 /// Samples of a shape with falling production and a resolution that grows with the mass are fitted with the same.
 #[test]
