@@ -1,7 +1,8 @@
 //! Figures: well-formed, complete, inside their canvas. Set PEAKFOLD_FIGURES to a directory to look at them.
 #![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic)]
 
-use peakfold::draw::{template_figure, template_figures};
+use peakfold::draw::{LabelledClosure, closure_figure, template_figure, template_figures};
+use peakfold::model::{Closure, ClosurePoint, Deviation};
 use peakfold::template::{LabelledTemplate, Template};
 
 /// A Gaussian with a relative width, on an axis relative to the mass.
@@ -209,4 +210,59 @@ fn files_are_named_after_channels() {
     let names: Vec<String> = template_figures(&scene).unwrap().into_iter().map(|f| f.0).collect();
     assert_eq!(names, ["figures/two-photon.svg", "figures/a_b.svg", "figures/a_b_.svg"]);
     assert!(!template_figures(&scene).unwrap()[0].1.contains("180 GeV"), "shifted templates are not drawn");
+}
+
+/// Invented deviations of a size, one per mass.
+fn closure(masses: &[f64], size: f64) -> Closure {
+    let point = |(k, &mass_gev): (usize, &f64)| {
+        let wave = |phase: f64| size * libm::sin(2.1 * k as f64 + phase);
+        let total = Deviation {
+            peak_in_sigma_eff: Some(0.01 * wave(0.0)),
+            sigma_eff_ratio: Some(1.0 + 0.006 * wave(1.0)),
+            largest_cdf_difference: 0.002 * wave(2.0).abs(),
+        };
+        ClosurePoint { mass_gev, total, interpolation: total, acceptance_ratio: 1.0 + 0.004 * wave(3.0) }
+    };
+    Closure { points: masses.iter().enumerate().map(point).collect() }
+}
+
+#[test]
+fn closure_of_every_number_of_categories_and_methods_is_drawn() {
+    const METHODS: [&str; 4] = ["shape", "shape and residuals", "quantiles", "shape, simulated mass points"];
+    for categories in 1..=4 {
+        for methods in 1..=4 {
+            for (kind, masses, size) in
+                [("good", &SPREAD[..], 1.0), ("bad", &CLOSE[1..5], 30.0), ("one", &CLOSE[..1], 0.1)]
+            {
+                let all: Vec<Closure> = (0..methods).map(|k| closure(masses, size * (1.0 + 0.2 * k as f64))).collect();
+                let labelled: Vec<LabelledClosure<'_>> = CATEGORIES[..categories]
+                    .iter()
+                    .flat_map(|category| {
+                        METHODS.iter().zip(&all).map(|(method, closure)| LabelledClosure { category, method, closure })
+                    })
+                    .collect();
+                let svg = closure_figure("two-photon", &labelled).unwrap();
+                let name = format!("closure-{kind}-{categories}-{methods}");
+                if let Some(directory) = std::env::var_os("PEAKFOLD_FIGURES") {
+                    std::fs::write(std::path::Path::new(&directory).join(format!("{name}.svg")), &svg).unwrap();
+                }
+                check(&name, &svg);
+                for text in CATEGORIES[..categories].iter().chain(&METHODS[..methods]) {
+                    assert!(svg.contains(&format!("{text}\n")), "{name} {text}");
+                }
+                // A band per panel, a marker per point and method, and the legend.
+                let panels = 4 * categories;
+                let markers = panels * masses.len() * methods + methods;
+                assert_eq!(svg.matches("<polygon").count(), panels + markers, "{name}");
+            }
+        }
+    }
+    assert!(closure_figure("none", &[]).is_err());
+    let mut odd = closure(&[120.0, 130.0], 1.0);
+    odd.points[0].total.peak_in_sigma_eff = None;
+    odd.points[1].total.sigma_eff_ratio = Some(f64::NAN);
+    let labelled = LabelledClosure { category: "a < b", method: "shape & more", closure: &odd };
+    let svg = closure_figure(&"long & ".repeat(40), &[labelled]).unwrap();
+    check("closure-odd", &svg);
+    assert!(svg.contains("a &lt; b") && svg.contains("shape &amp; more"));
 }

@@ -11,7 +11,7 @@ use peakfold::files::{LoadedStudy, load_detector, load_study};
 use peakfold::problem::Problems;
 use peakfold::process::{
     Category, Channel, Cuts, Decay, EventList, EventSource, Intermediate, LegChoice, MassAxis, Natural, Production,
-    Resonance, ShapeChoice, SpectrumCell, Width,
+    Resonance, ShapeChoice, Simulated, SpectrumCell, Width,
 };
 
 const DETECTOR: &str = include_str!("inputs/detector.toml");
@@ -205,6 +205,7 @@ fn every_key_of_a_good_pair() {
             Category { name: "central".into(), max_abs_eta: Some(0.8) },
             Category { name: "rest".into(), max_abs_eta: None },
         ],
+        simulated: Simulated::default(),
     };
     let mixed = Channel {
         name: "mixed".into(),
@@ -215,6 +216,7 @@ fn every_key_of_a_good_pair() {
         axis: MassAxis { low: 100.0, high: 300.0, bins: 100, relative: false },
         shape: ShapeChoice::DoubleCrystalBall,
         categories: vec![Category { name: "all".into(), max_abs_eta: None }],
+        simulated: Simulated::default(),
     };
     assert_eq!(study.channels, [photons, mixed]);
     let names: Vec<_> = inputs.iter().map(|input| input.path.clone()).collect();

@@ -5,7 +5,7 @@ use std::path::{Path, PathBuf};
 
 use peakfold::files::{LoadedStudy, load_study};
 use peakfold::problem::{Problem, Problems};
-use peakfold::process::{Ancestry, LegChoice, Pairing, Pick, Radiation};
+use peakfold::process::{Ancestry, LegChoice, Pairing, Pick, Radiation, Simulated, SimulatedUse};
 
 const DETECTOR: &str = include_str!("inputs/detector.toml");
 const STUDY: &str = include_str!("inputs/study.toml");
@@ -117,6 +117,10 @@ const BAD: &[Case] = &[
     (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\"]\npick = \"nearest\"", "pick", "channel.two-photon.pick", &["only with `events`", "remove it"]),
     (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\"]\nancestry = \"ignore\"", "ancestry", "channel.two-photon.ancestry", &["only with `events`", "remove it"]),
     (S, "name = \"mixed\"", "name = \"mixed\"\npairing = \"nearest-sum\"", "pairing", "channel.mixed.pairing", &["only with `events`", "remove it"]),
+    (S, "production = { table = \"spectrum.csv\" }", "events = \"/dev/null\"", "events", "resonance.events", &["is a device or a pipe"]),
+    // Names.
+    (S, "name = \"two-photon\"", "name = \"two-photon \"", "two-photon \"", "channel.two-photon .name", &["must not begin or end with a blank"]),
+    (D, "share = { right_choice = \"vertex\" }", "share = { right_choice = \"muon-central.scale\" }", "name", "share", &["names two different uncertainties"]),
     // The study's own numbers.
     (S, "precision = 1e-3", "precision = 0.0", "precision", "precision", &["found 0.0", "larger than 0"]),
     (S, "precision = 1e-3", "precision = 1", "precision", "precision", &["smaller than 1"]),
@@ -402,4 +406,111 @@ fn a_file_cut_anywhere_is_no_panic() {
         std::fs::write(pair.path(name), text).unwrap();
     }
     assert!(refused > 500, "{refused}");
+}
+
+/// A sample of `count` masses around a mass.
+fn sample(mass: f64, count: usize) -> String {
+    let row = |i: usize| format!("{},x\n", mass * (0.99 + 0.02 * i as f64 / count as f64));
+    std::iter::once("mass_gev,note\n".to_owned()).chain((0..count).map(row)).collect()
+}
+
+const CHANNEL: &str = "shape = \"gauss-exp\"\n";
+const NARROW: (&str, &str) = ("width = { relative = 0.02 }", "width = { gev = 0.0 }");
+
+/// A study with these lines in its first channel, and what is read of it.
+fn with_samples(in_channel: &str, tables: &str, narrow: bool) -> (Pair, Result<LoadedStudy, Problems>) {
+    let tables = format!("{tables}\n[[channel]]\nname = \"mixed\"");
+    let mut study = STUDY.replacen(CHANNEL, &format!("{CHANNEL}{in_channel}\n"), 1);
+    study = study.replacen("[[channel]]\nname = \"mixed\"", &tables, 1);
+    if narrow {
+        study = study.replacen(NARROW.0, NARROW.1, 1);
+    }
+    let pair = Pair::new(&study, DETECTOR);
+    std::fs::write(pair.path("sim180.csv"), sample(180.0, 2000)).unwrap();
+    std::fs::write(pair.path("sim220.csv"), sample(220.0, 2000)).unwrap();
+    std::fs::write(pair.path("few.csv"), sample(180.0, 999)).unwrap();
+    std::fs::write(pair.path("text.csv"), "mass_gev\n180\nabc\n").unwrap();
+    std::fs::write(pair.path("histogram.csv"), "low_gev,high_gev,count\n1,2,3\n").unwrap();
+    let read = pair.load();
+    (pair, read)
+}
+
+#[test]
+fn simulated_samples_are_read() {
+    let tables = "[[channel.simulated]]\nmass_gev = 180\ncategory = \"rest\"\nfile = \"sim180.csv\"\ngenerated = 1e4\n\
+                  [[channel.simulated]]\nmass_gev = 220.0\ncategory = \"central\"\nfile = \"sim220.csv\"\ngenerated = 5e4\n";
+    let (pair, read) = with_samples("simulated_use = \"instead\"", tables, true);
+    let LoadedStudy { study, inputs, .. } = read.unwrap();
+    let Simulated { usage, samples } = &study.channels[0].simulated;
+    assert_eq!((*usage, samples.len()), (SimulatedUse::Instead, 2));
+    assert_eq!((samples[0].mass_gev, samples[0].category, samples[0].generated), (180.0, 1, Some(1e4)));
+    assert_eq!((samples[1].mass_gev, samples[1].category), (220.0, 0));
+    assert_eq!(samples[0].masses.gev().len(), 2000);
+    assert_eq!(study.channels[1].simulated, Simulated::default());
+    // What was read is among the inputs.
+    let names: Vec<&str> = inputs.iter().map(|input| input.path.as_str()).collect();
+    for file in ["sim180.csv", "sim220.csv"] {
+        let path = pair.path(file).display().to_string();
+        assert_eq!(names.iter().filter(|name| **name == path).count(), 1, "{names:?}");
+    }
+    // The only category needs no name.
+    let (_, read) = with_samples("", "", false);
+    assert_eq!(read.unwrap().study.channels[0].simulated, Simulated::default());
+}
+
+#[test]
+fn bad_simulated_samples() {
+    let key = "channel.two-photon.simulated[1]";
+    let table = |lines: &str| format!("[[channel.simulated]]\n{lines}\n");
+    let good = "mass_gev = 180\ncategory = \"rest\"\nfile = \"sim180.csv\"";
+    let instead = "simulated_use = \"instead\"";
+    let at = |k: &str| format!("{key}.{k}");
+    // Key of the channel, tables, narrow or not, where the problem stands (key or file), parts of the message.
+    let cases: Vec<(&str, String, bool, String, &[&str])> = vec![
+        ("", table(&good.replace("rest", "rset")), true, at("category"), &["rset", "did you mean `rest`?"]),
+        (
+            "",
+            table(&good.replace("category = \"rest\"\n", "")),
+            true,
+            at("category"),
+            &["missing", "`central`, `rest`"],
+        ),
+        ("", table(&good.replace("mass_gev = 180\n", "")), true, at("mass_gev"), &["missing"]),
+        ("", table(&good.replace("180\n", "-1\n")), true, at("mass_gev"), &["found -1"]),
+        ("", table(&good.replace("sim180", "gone")), true, at("file"), &["there is no file", "gone.csv"]),
+        ("", table("mass_gev = 180\ncategory = \"rest\""), true, at("file"), &["missing"]),
+        ("", table(&format!("{good}\nwieght = 1")), true, at("wieght"), &["unknown key"]),
+        ("", table(&format!("{good}\ngenerated = 0")), true, at("generated"), &["larger than 0"]),
+        (
+            "",
+            table(&good.replace("sim180", "few")),
+            true,
+            "few.csv".into(),
+            &["999 entries", "at least 1000", "144 to 216"],
+        ),
+        ("", table(&good.replace("sim180", "text")), true, "text.csv".into(), &["found \"abc\"", "finite number"]),
+        ("", table(&good.replace("sim180", "histogram")), true, "histogram.csv".into(), &["histogram", "mass_gev"]),
+        ("", table(&format!("{good}\ngenerated = 1500")), true, "sim180.csv".into(), &["2000", "1500", "`generated`"]),
+        ("", table(&good.replace("180\n", "195\n")), true, at("mass_gev"), &["150, 180, 210", "instead"]),
+        (
+            instead,
+            table(&good.replace("180", "220")),
+            true,
+            at("mass_gev"),
+            &["outside of the folded masses", "generated"],
+        ),
+        (instead, table(good), false, "channel.two-photon.simulated_use".into(), &["natural width", "beside"]),
+        (instead, String::new(), true, "channel.two-photon.simulated_use".into(), &["no [[channel.simulated]]"]),
+        ("simulated_use = \"besides\"", table(good), true, "channel.two-photon.simulated_use".into(), &["`beside`"]),
+        ("", table(good) + &table(good), true, "channel.two-photon.simulated[2]".into(), &["already", "rest"]),
+    ];
+    for (in_channel, tables, narrow, place, parts) in cases {
+        let (_, read) = with_samples(in_channel, &tables, narrow);
+        let problems = read.expect_err(&format!("{in_channel} {tables}")).0;
+        assert_eq!(problems.len(), 1, "{problems:?}");
+        let text = problems[0].to_string();
+        let here = problems[0].key.as_deref() == Some(place.as_str()) || problems[0].file.ends_with(&place);
+        assert!(here, "{text} not at {place}");
+        assert!(parts.iter().all(|part| text.contains(part)), "{text} lacks one of {parts:?}");
+    }
 }

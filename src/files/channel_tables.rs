@@ -2,17 +2,11 @@
 
 use super::domain::{ABS_ETA, Domain, NOT_NEGATIVE};
 use super::reader::{Item, Section};
+use super::resonance_table::OtherFiles;
+use super::simulated_tables::{self, PlacedSimulated};
 use crate::detector::{EtaRange, Object};
 use crate::kinematics::MAX_LEGS;
 use crate::process::{Ancestry, Category, Channel, Cuts, Decay, LegChoice, MassAxis, Pairing, Pick, ShapeChoice};
-
-const SHAPES: [(&str, ShapeChoice); 5] = [
-    ("gaussian", ShapeChoice::Gaussian),
-    ("crystal-ball", ShapeChoice::CrystalBall),
-    ("double-crystal-ball", ShapeChoice::DoubleCrystalBall),
-    ("double-crystal-ball-two-sigmas", ShapeChoice::DoubleCrystalBallTwoSigmas),
-    ("gauss-exp", ShapeChoice::GaussExp),
-];
 
 const ANCESTRY: [(&str, Ancestry); 3] =
     [("prefer", Ancestry::Prefer), ("ignore", Ancestry::Ignore), ("require", Ancestry::Require)];
@@ -37,11 +31,14 @@ pub(super) struct PlacedChannel {
     /// Its name in keys, `channel.two-photon`, and the key of its decay.
     pub path: String,
     pub decay_key: &'static str,
+    /// Where `simulated_use` and the samples of a simulation stand, each with its key.
+    pub simulated_use_line: usize,
+    pub simulated_places: Vec<(usize, String)>,
 }
 
 /// Reads the channels; those whose legs or axis could not be read are left out. `generated` says whether the events are
 /// generated, if that is known.
-pub(super) fn read(sections: Vec<Section<'_>>, generated: Option<bool>) -> Vec<PlacedChannel> {
+pub(super) fn read(sections: Vec<Section<'_>>, generated: Option<bool>, files: &mut OtherFiles) -> Vec<PlacedChannel> {
     let mut seen: Vec<(String, usize)> = Vec::new();
     let mut channels = Vec::new();
     for mut section in sections {
@@ -53,12 +50,17 @@ pub(super) fn read(sections: Vec<Section<'_>>, generated: Option<bool>) -> Vec<P
             ),
             None => seen.push((name.clone(), section.line)),
         }
-        channels.extend(channel(section, name, generated));
+        channels.extend(channel(section, name, generated, files));
     }
     channels
 }
 
-fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> Option<PlacedChannel> {
+fn channel(
+    mut section: Section<'_>,
+    name: String,
+    generated: Option<bool>,
+    files: &mut OtherFiles,
+) -> Option<PlacedChannel> {
     let decay = decay(&mut section, generated);
     let legs = decay.as_ref().map_or(MAX_LEGS, |decay| decay.legs().len());
     let cuts = Cuts {
@@ -74,8 +76,11 @@ fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> O
         section.optional("min_efficient_legs").and_then(|item| item.whole(1, legs as u64)).map(|count| count as usize);
     let choice = choice(&mut section, decay.as_ref(), generated);
     let axis = axis(&mut section);
-    let shape = section.optional("shape").and_then(|item| item.word(&SHAPES));
+    let shapes = ShapeChoice::ALL.map(|shape| (shape.name(), shape));
+    let shape = section.optional("shape").and_then(|item| item.word(&shapes));
     let categories = categories(section.tables("category"));
+    let PlacedSimulated { simulated, use_line: simulated_use_line, places: simulated_places } =
+        simulated_tables::read(&mut section, &categories, axis.as_ref(), files);
     let path = section.path.clone();
     let decay_key = if matches!(decay, Some(Decay::Cascade(_))) { "via" } else { "legs" };
     let decay_line = section.line_of(decay_key);
@@ -91,8 +96,18 @@ fn channel(mut section: Section<'_>, name: String, generated: Option<bool>) -> O
         axis: axis?,
         shape: shape.unwrap_or(ShapeChoice::DoubleCrystalBall),
         categories,
+        simulated,
     };
-    Some(PlacedChannel { channel, decay_line, axis_line, path, decay_key, efficient_legs_line })
+    Some(PlacedChannel {
+        channel,
+        decay_line,
+        axis_line,
+        efficient_legs_line,
+        path,
+        decay_key,
+        simulated_use_line,
+        simulated_places,
+    })
 }
 
 fn decay(section: &mut Section<'_>, generated: Option<bool>) -> Option<Decay> {

@@ -3,7 +3,7 @@
 use super::channel_tables::PlacedChannel;
 use super::source::Sheet;
 use crate::detector::{Detector, EtaRange, Object};
-use crate::process::{Cuts, Resonance};
+use crate::process::{Cuts, Resonance, SimulatedSample, SimulatedUse};
 
 /// Masses must exceed the sum of the legs' masses, and should lie on the axis.
 pub(super) fn masses(sheet: &Sheet, masses_line: usize, resonance: &Resonance, channels: &[PlacedChannel]) {
@@ -28,6 +28,48 @@ pub(super) fn masses(sheet: &Sheet, masses_line: usize, resonance: &Resonance, c
         if !outside.is_empty() {
             let message = format!("the axis does not contain the mass {} GeV", outside.join(", "));
             sheet.warn(*axis_line, &format!("{path}.mass_axis"), message);
+        }
+    }
+}
+
+/// A sample needs a folded template to be compared with, and a mass model takes it only for a resonance of no width.
+pub(super) fn simulated(sheet: &Sheet, resonance: &Resonance, channels: &[PlacedChannel]) {
+    let masses = &resonance.masses_gev;
+    for PlacedChannel { channel, path, simulated_use_line, simulated_places, .. } in channels {
+        let instead = channel.simulated.usage == SimulatedUse::Instead;
+        let wide = masses.iter().any(|mass| resonance.width.at_gev(*mass) > 0.0);
+        if instead && wide {
+            let message = "found \"instead\" for a resonance with a natural width, must be \"beside\": the mass model \
+                           is made of templates without one; set the width to 0 and give it to the prediction";
+            sheet.problem(*simulated_use_line, &format!("{path}.simulated_use"), message);
+        }
+        let legs: f64 = channel.decay.legs().iter().map(|leg| leg.mass_gev()).sum();
+        let (first, last) = (masses.first().copied(), masses.last().copied());
+        for (sample, (line, key)) in channel.simulated.samples.iter().zip(simulated_places) {
+            let SimulatedSample { mass_gev, generated, .. } = sample;
+            let (low, high) = channel.axis.range_gev(*mass_gev);
+            let message = if masses.contains(mass_gev) || masses.is_empty() || mass_gev.is_nan() {
+                continue;
+            } else if *mass_gev <= legs {
+                format!("found {mass_gev}, must be above the sum of the legs' masses, {legs} GeV")
+            } else if *mass_gev < low || *mass_gev > high {
+                format!("found {mass_gev}, which lies outside of the mass axis, {low} to {high} GeV")
+            } else if !instead {
+                let list: Vec<String> = masses.iter().map(f64::to_string).collect();
+                format!(
+                    "found {mass_gev}, which is not among `masses_gev` ({}), so that there is no folded template to \
+                     compare with; add it there, or set simulated_use = \"instead\"",
+                    list.join(", ")
+                )
+            } else if generated.is_none() && (first > Some(*mass_gev) || last < Some(*mass_gev)) {
+                format!(
+                    "found {mass_gev}, which lies outside of the folded masses, so that its acceptance is not known; \
+                     give `generated`, the sum of the generated weights"
+                )
+            } else {
+                continue;
+            };
+            sheet.problem(*line, &format!("{key}.mass_gev"), message);
         }
     }
 }

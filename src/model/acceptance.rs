@@ -36,7 +36,7 @@ pub(super) fn acceptances(templates: &[(f64, &Template)]) -> Vec<FactorPoint> {
     let point = |&(mass_gev, template): &(f64, &Template)| FactorPoint {
         mass_gev,
         value: template.acceptance,
-        error: template.acceptance_error,
+        error: libm::hypot(template.acceptance_error, template.acceptance_list_error),
         replicates: template.replicates.iter().map(|r| r.acceptance).collect(),
     };
     templates.iter().map(point).collect()
@@ -47,7 +47,7 @@ pub(super) fn efficiencies(templates: &[(f64, &Template)]) -> Vec<FactorPoint> {
     let point = |&(mass_gev, template): &(f64, &Template)| FactorPoint {
         mass_gev,
         value: template.efficiency,
-        error: template.efficiency_error,
+        error: libm::hypot(template.efficiency_error, template.efficiency_list_error),
         replicates: Vec::new(),
     };
     templates.iter().map(point).collect()
@@ -90,24 +90,28 @@ fn design(masses: &[f64], scale: &MassScale, basis: Basis) -> DMatrix<f64> {
     DMatrix::from_fn(masses.len(), basis.count(), |j, l| rows[j][l])
 }
 
-/// Covariance of the logarithms: scramblings taken in step where all mass points have equally many, for they may be the
-/// same.
+/// Covariance of the logarithms: scramblings taken in step among mass points that have equally many, for they may be the
+/// same; the error of the value where there are none.
 fn variance(points: &[FactorPoint]) -> DMatrix<f64> {
-    let n = points.len();
-    let number = points.first().map_or(0, |p| p.replicates.len());
-    if number > 1 && points.iter().all(|p| p.replicates.len() == number) {
-        let deviation = |j: usize, r: usize| points[j].replicates[r] / points[j].value;
-        let mean: Vec<f64> =
-            (0..n).map(|j| (0..number).map(|r| deviation(j, r)).sum::<f64>() / number as f64).collect();
-        return DMatrix::from_fn(n, n, |i, j| {
-            let product = |r: usize| (deviation(i, r) - mean[i]) * (deviation(j, r) - mean[j]);
-            (0..number).map(product).sum::<f64>() / (number * (number - 1)) as f64
-        });
-    }
-    DMatrix::from_diagonal(&DVector::from_fn(n, |j, _| {
-        let relative = points[j].error / points[j].value;
-        relative * relative
-    }))
+    let number = |j: usize| points[j].replicates.len();
+    let deviations: Vec<Vec<f64>> = points
+        .iter()
+        .map(|p| {
+            let mean = p.replicates.iter().sum::<f64>() / p.replicates.len().max(1) as f64;
+            p.replicates.iter().map(|r| (r - mean) / p.value).collect()
+        })
+        .collect();
+    DMatrix::from_fn(points.len(), points.len(), |i, j| {
+        if number(i) > 1 && number(i) == number(j) {
+            let products = deviations[i].iter().zip(&deviations[j]).map(|(a, b)| a * b);
+            products.sum::<f64>() / (number(i) * (number(i) - 1)) as f64
+        } else if i == j {
+            let relative = points[j].error / points[j].value;
+            relative * relative
+        } else {
+            0.0
+        }
+    })
 }
 
 /// Sum of squared deviations at left-out interior mass points.

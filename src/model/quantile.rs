@@ -116,7 +116,7 @@ impl QuantileInterpolation {
                     below,
                     above,
                     edges_gev: template.edges_gev.clone(),
-                    error: template.error.clone(),
+                    error: template.bin_errors(),
                 })
             })
             .collect::<Result<Vec<_>, _>>()?;

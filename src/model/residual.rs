@@ -75,7 +75,7 @@ impl Residuals {
                     mass_gev,
                     resolution: model.resolution_at(mass_gev)?,
                     cumulative: Cumulative::of(template)?,
-                    error: template.error.clone(),
+                    error: template.bin_errors(),
                     edges_gev: template.edges_gev.clone(),
                 })
             })

@@ -2,7 +2,7 @@
 
 use nalgebra::{DMatrix, DVector};
 
-use super::shape::{KINDS, largest_cdf_difference, of_shape, parameter_link, prior, prototype, rising};
+use super::shape::{largest_cdf_difference, of_shape, parameter_link, prior, prototype, rising};
 use crate::fit::{Curve, CurveFit, CurvePoint, Curves, FitError, Link, Stop, positive_inverse};
 use crate::lineshape::widths::FWHM_PER_SIGMA;
 use crate::lineshape::{Parameter, Resolution, Shape, ShapeError};
@@ -211,7 +211,7 @@ pub fn fit_response(template: &Template, mass_gev: f64, choice: ShapeChoice) -> 
 
 /// The kind of shape with the smallest |ΔCDF| that fits better than `response` does, if there is one.
 pub fn better_shape(template: &Template, response: &Response) -> Option<Response> {
-    KINDS
+    ShapeChoice::ALL
         .into_iter()
         .filter(|kind| *kind != response.shape)
         .filter_map(|kind| fit_response(template, response.mass_gev, kind).ok())
@@ -237,8 +237,10 @@ fn peak_and_sigma(template: &Template, mass_gev: f64) -> Result<(f64, f64), Resp
     Ok((peak - mass_gev, sigma.clamp(0.3 * bin, high - low)))
 }
 
-/// Covariance of the coefficients from the numerical errors of the templates: `δ = -H⁻¹ δg`, g the derivative of the
-/// criterion. Scramblings of different mass points are taken in step, for they may be the same.
+/// Covariance of the coefficients from the errors of the templates: `δ = -H⁻¹ δg`, g the derivative of the criterion.
+/// Scramblings of mass points that have equally many are taken in step, for they may be the same. A template without
+/// scramblings counts with the errors of its bins, numerical and statistical, as if bins were independent: for the counts
+/// of a sample this is exact, since the part of their correlation that normalisation makes is `g²`, 0 at the minimum.
 pub(super) fn numerical_covariance(
     fit: &Curves<'_>,
     found: &CurveFit,
@@ -246,30 +248,29 @@ pub(super) fn numerical_covariance(
 ) -> Option<DMatrix<f64>> {
     let count = found.coefficients.len();
     let mut score = DMatrix::zeros(count, count);
-    let all: Option<Vec<Vec<Vec<f64>>>> = templates.iter().map(|t| replicates(t)).collect();
-    let in_step = all.filter(|all| all.iter().all(|r| r.len() == all[0].len()));
-    match in_step {
-        Some(all) => {
-            let number = all[0].len();
-            let mut scores = vec![DVector::zeros(count); number];
-            for (point, own) in all.iter().enumerate() {
-                for (sum, probability) in scores.iter_mut().zip(own) {
-                    *sum += fit.score(point, &found.coefficients, probability)?;
-                }
-            }
-            let mean = scores.iter().fold(DVector::zeros(count), |sum: DVector<f64>, s| sum + s) / number as f64;
-            for s in &scores {
-                let d = s - &mean;
-                score += &d * d.transpose();
-            }
-            score /= (number * (number - 1)) as f64;
+    // For each number of scramblings their sums over the mass points.
+    let mut in_step: Vec<Vec<DVector<f64>>> = Vec::new();
+    for (point, template) in templates.iter().enumerate() {
+        let Some(own) = replicates(template) else {
+            let whole: f64 = template.probability.iter().sum();
+            let errors: Vec<f64> = template.bin_errors().iter().map(|e| e / whole).collect();
+            score += fit.score_covariance(point, &found.coefficients, &errors)?;
+            continue;
+        };
+        let place = in_step.iter().position(|sums| sums.len() == own.len()).unwrap_or_else(|| {
+            in_step.push(vec![DVector::zeros(count); own.len()]);
+            in_step.len() - 1
+        });
+        for (sum, probability) in in_step[place].iter_mut().zip(&own) {
+            *sum += fit.score(point, &found.coefficients, probability)?;
         }
-        None => {
-            for (point, template) in templates.iter().enumerate() {
-                let whole: f64 = template.probability.iter().sum();
-                let errors: Vec<f64> = template.error.iter().map(|e| e / whole).collect();
-                score += fit.score_covariance(point, &found.coefficients, &errors)?;
-            }
+    }
+    for sums in &in_step {
+        let number = sums.len();
+        let mean = sums.iter().fold(DVector::zeros(count), |sum: DVector<f64>, s| sum + s) / number as f64;
+        for s in sums {
+            let d = s - &mean;
+            score += &d * d.transpose() / (number * (number - 1)) as f64;
         }
     }
     let inverse = positive_inverse(&found.hessian).or_else(|| positive_inverse(&found.information))?;

@@ -1,7 +1,10 @@
 //! Decay channels with their cuts and categories.
 
+use std::path::PathBuf;
+
 use super::MassAxis;
 use crate::detector::{EtaRange, Object};
+use crate::fit::Masses;
 
 /// How the resonance reaches its legs.
 #[derive(Clone, Debug, PartialEq)]
@@ -103,6 +106,67 @@ pub enum ShapeChoice {
     GaussExp,
 }
 
+impl ShapeChoice {
+    /// All kinds.
+    pub const ALL: [ShapeChoice; 5] = [
+        ShapeChoice::Gaussian,
+        ShapeChoice::CrystalBall,
+        ShapeChoice::DoubleCrystalBall,
+        ShapeChoice::DoubleCrystalBallTwoSigmas,
+        ShapeChoice::GaussExp,
+    ];
+
+    /// Its word in the files.
+    pub fn name(self) -> &'static str {
+        match self {
+            ShapeChoice::Gaussian => "gaussian",
+            ShapeChoice::CrystalBall => "crystal-ball",
+            ShapeChoice::DoubleCrystalBall => "double-crystal-ball",
+            ShapeChoice::DoubleCrystalBallTwoSigmas => "double-crystal-ball-two-sigmas",
+            ShapeChoice::GaussExp => "gauss-exp",
+        }
+    }
+
+    /// The kind of that word.
+    pub fn from_name(name: &str) -> Option<Self> {
+        ShapeChoice::ALL.into_iter().find(|shape| shape.name() == name)
+    }
+}
+
+/// What simulated samples are for.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub enum SimulatedUse {
+    /// They are compared with the folded templates.
+    #[default]
+    Beside,
+    /// They replace the folded templates at their masses in the mass model, or join them at other masses.
+    Instead,
+}
+
+/// Reconstructed masses of a full simulation, of the events that pass cuts and category.
+#[derive(Clone, Debug, PartialEq)]
+pub struct SimulatedSample {
+    /// Mass of the simulated resonance in GeV.
+    pub mass_gev: f64,
+    /// Number of the category in the channel, from 0.
+    pub category: usize,
+    /// The file.
+    pub path: PathBuf,
+    /// The reconstructed masses, on the axis or off it; weights may be negative.
+    pub masses: Masses,
+    /// Sum of the weights of all generated events, from which the acceptance follows.
+    pub generated: Option<f64>,
+}
+
+/// The simulated samples of a channel.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub struct Simulated {
+    /// What they are for.
+    pub usage: SimulatedUse,
+    /// The samples, in the order of the study.
+    pub samples: Vec<SimulatedSample>,
+}
+
 /// A decay channel as it is analysed.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Channel {
@@ -123,4 +187,6 @@ pub struct Channel {
     pub shape: ShapeChoice,
     /// The categories, at least one.
     pub categories: Vec<Category>,
+    /// What a full simulation gave.
+    pub simulated: Simulated,
 }

@@ -59,6 +59,13 @@ pub struct Template {
     pub replicates: Vec<Replicate>,
 }
 
+impl Template {
+    /// Error per bin: numerical and statistical in quadrature.
+    pub fn bin_errors(&self) -> Vec<f64> {
+        self.error.iter().zip(&self.list_error).map(|(a, b)| libm::hypot(*a, *b)).collect()
+    }
+}
+
 /// A template with what it belongs to.
 #[derive(Clone, Debug, PartialEq)]
 pub struct LabelledTemplate {

@@ -59,6 +59,7 @@ fn study(precision: f64, tails: bool) -> Study {
         precision,
         max_points: 1 << 30,
         prune_shifts_below: 0.0,
+        expected_events: 1e4,
         resonance: Resonance {
             masses_gev: vec![180.0],
             width: Width::Gev(0.0),
@@ -82,6 +83,7 @@ fn study(precision: f64, tails: bool) -> Study {
             axis: MassAxis { low: 150.0, high: 210.0, bins: 200, relative: false },
             shape: ShapeChoice::DoubleCrystalBall,
             categories: vec![Category { name: "all".to_string(), max_abs_eta: None }],
+            simulated: Default::default(),
         }],
     }
 }

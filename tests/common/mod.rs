@@ -78,6 +78,7 @@ pub fn channel(name: &str, decay: Decay) -> Channel {
         axis: MassAxis { low: 0.8, high: 1.2, bins: 200, relative: true },
         shape: ShapeChoice::DoubleCrystalBall,
         categories: vec![Category { name: "all".into(), max_abs_eta: None }],
+        simulated: Default::default(),
     }
 }
 
@@ -90,6 +91,7 @@ pub fn study(detector: Detector, mass_gev: f64, channel: Channel) -> Study {
         precision: 1e-4,
         max_points: 1 << 24,
         prune_shifts_below: 0.0,
+        expected_events: 1e4,
         resonance: Resonance {
             masses_gev: vec![mass_gev],
             width: Width::Gev(0.0),
