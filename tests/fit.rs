@@ -448,7 +448,7 @@ fn refused(scratch: &Scratch, text: &str, options: &str, status: i32, words: &[&
 fn bad_input_is_refused() {
     let scratch = Scratch::new();
     let plain = "--resolution gaussian";
-    let cases: [(&str, &[&str]); 19] = [
+    let cases: [(&str, &[&str]); 23] = [
         ("", &["empty"]),
         ("mass_gev\n", &["no data"]),
         ("mass_gev\n90\n90\n90\n", &["all 3 masses", "90"]),
@@ -468,12 +468,18 @@ fn bad_input_is_refused() {
         ("low_gev,high_gev,count\n1,2,3\n2,3,4\n", &["2 filled bins", "3 free parameters"]),
         ("low_gev,high_gev,count,error\n1,2,3,1\n2,3,4,0\n3,4,5,1\n", &["data.csv:3", "error is 0"]),
         ("mass_gev,mass_gev\n90,91\n", &["twice"]),
+        ("low_gev,high_gev,count\n1,2,3\n2,3,NaN\n3,4,5\n", &["data.csv:3", "\"NaN\""]),
+        ("low_gev,high_gev,count\n", &["no data"]),
+        ("mass_gev,weight\n90,1\n91,NaN\n92,1\n", &["data.csv:3: weight", "\"NaN\""]),
+        ("low_gev,high_gev,count,error\n1,2,3,1\n2,3,4,-1\n3,4,5,1\n", &["data.csv:3", "error is -1"]),
     ];
     for (text, words) in cases {
         refused(&scratch, text, plain, 1, words);
     }
     let some = "mass_gev\n90\n91\n92\n93\n95\n";
     refused(&scratch, some, "--resolution gaussian --from 10 --to 20", 1, &["outside the window", "90", "95"]);
+    let bins = "low_gev,high_gev,count\n1,2,3\n2,3,4\n3,4,5\n";
+    refused(&scratch, bins, "--resolution gaussian --from 10 --to 20", 1, &["window"]);
     refused(&scratch, some, "--resolution double-crystal-ball", 1, &["5 masses", "6 free parameters"]);
     refused(&scratch, some, "--resolution gaussian --fix bogus=1", 1, &["bogus", "mass, bias, sigma"]);
     refused(&scratch, some, "--resolution gaussian --fix sigma=-1", 1, &["sigma is -1", "above 0"]);
