@@ -385,7 +385,27 @@ fn fit_without_minimum_is_not_trusted() {
     assert!(found["covariance"]["matrix"].is_null() && found["parameters"]["background_0"]["error"].is_null());
 }
 
-const ENDLESS: (&str, &str) = ("", "");
+const ENDLESS: (&str, &str) = (
+    "\
+parameter                      result      value  error
+mass             fixed                 90.000000      -
+bias             fixed                  0.000000      -
+sigma            fixed                  0.200000      -
+signal_yield     free                   1.650101      -
+background_0     free                   4.022987      -
+background_1     at its bound           0.000000      -
+background, sum                4.0230   4.022987      -
+
+Digits in parentheses: standard error of the last digits; masses and widths in GeV.
+7 rows (sum 8.5) from 80 to 100 GeV
+chi2: too few events for it
+-ln L = -82.845250; NOT converged after 300 steps, 2.2e175 above the minimum
+",
+    "\
+peakfold: warning: background_1 ended at its bound 0.000000000000000000000000000000000000000000000000000000000000000000000000000005980079467571891; its error is not known, and those of the others hold it there
+peakfold: the fit did not converge: it had not reached the minimum after 300 steps (estimated distance in -ln L: 2.17e175, must be below 1e-6); the printed values are the best point met, not the best fit, and have no errors; start nearer (--start NAME=VALUE) or fix what the data do not tell (--fix NAME=VALUE)
+",
+);
 
 /// Samples of a shape with falling production and a resolution that grows with the mass are fitted with the same.
 #[test]
@@ -428,7 +448,7 @@ fn refused(scratch: &Scratch, text: &str, options: &str, status: i32, words: &[&
 fn bad_input_is_refused() {
     let scratch = Scratch::new();
     let plain = "--resolution gaussian";
-    let cases: [(&str, &[&str]); 19] = [
+    let cases: [(&str, &[&str]); 23] = [
         ("", &["empty"]),
         ("mass_gev\n", &["no data"]),
         ("mass_gev\n90\n90\n90\n", &["all 3 masses", "90"]),
@@ -448,12 +468,18 @@ fn bad_input_is_refused() {
         ("low_gev,high_gev,count\n1,2,3\n2,3,4\n", &["2 filled bins", "3 free parameters"]),
         ("low_gev,high_gev,count,error\n1,2,3,1\n2,3,4,0\n3,4,5,1\n", &["data.csv:3", "error is 0"]),
         ("mass_gev,mass_gev\n90,91\n", &["twice"]),
+        ("low_gev,high_gev,count\n1,2,3\n2,3,NaN\n3,4,5\n", &["data.csv:3", "\"NaN\""]),
+        ("low_gev,high_gev,count\n", &["no data"]),
+        ("mass_gev,weight\n90,1\n91,NaN\n92,1\n", &["data.csv:3: weight", "\"NaN\""]),
+        ("low_gev,high_gev,count,error\n1,2,3,1\n2,3,4,-1\n3,4,5,1\n", &["data.csv:3", "error is -1"]),
     ];
     for (text, words) in cases {
         refused(&scratch, text, plain, 1, words);
     }
     let some = "mass_gev\n90\n91\n92\n93\n95\n";
     refused(&scratch, some, "--resolution gaussian --from 10 --to 20", 1, &["outside the window", "90", "95"]);
+    let bins = "low_gev,high_gev,count\n1,2,3\n2,3,4\n3,4,5\n";
+    refused(&scratch, bins, "--resolution gaussian --from 10 --to 20", 1, &["window"]);
     refused(&scratch, some, "--resolution double-crystal-ball", 1, &["5 masses", "6 free parameters"]);
     refused(&scratch, some, "--resolution gaussian --fix bogus=1", 1, &["bogus", "mass, bias, sigma"]);
     refused(&scratch, some, "--resolution gaussian --fix sigma=-1", 1, &["sigma is -1", "above 0"]);

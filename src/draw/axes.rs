@@ -50,17 +50,16 @@ impl Axes {
         paper.line(&[(left, top), (left, bottom), (right, bottom), (right, top), (left, top)], FRAME, 1.0)
     }
 
-    /// Ticks and their masses, as many as stay apart.
-    pub fn mass_labels(&self, paper: &Paper<'_>) -> Result<(), DrawError> {
+    /// Ticks and their masses, as many as stay apart; labels may reach `over` points beyond the frame.
+    pub fn mass_labels(&self, paper: &Paper<'_>, over: f64) -> Result<(), DrawError> {
         let (left, right, bottom) = (self.left, self.right(), self.bottom());
         let (low, high) = self.masses;
-        // Labels may reach over the frame, but not into the next panel's.
         let length = |label: &str| Type::SMALL.length(label.len());
         let labelled = |ticks: &Ticks| -> Vec<(f64, String)> {
             let all = ticks.values.iter().map(|tick| (self.x(*tick), ticks.label(*tick)));
             all.filter(|(x, label)| {
                 let half = 0.5 * length(label);
-                x - half > left - 6.0 && x + half < right + 6.0
+                x - half > left - over && x + half < right + over
             })
             .collect()
         };

@@ -73,7 +73,7 @@ pub fn shape_figure(shape: &dyn Shape, range_gev: Option<(f64, f64)>) -> Result<
         }
         axes.value_labels(paper, &Ticks::new(values.0, values.1, 6))?;
         axes.frame(paper)?;
-        axes.mass_labels(paper)?;
+        axes.mass_labels(paper, RIGHT)?;
         axes.mass_title(paper, "mass [GeV]")?;
         axes.value_title(paper, "density per GeV")
     })

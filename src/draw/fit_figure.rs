@@ -70,7 +70,7 @@ pub fn fit_figure(title: &str, outcome: &FitOutcome) -> Result<String, DrawError
         }
         draw_pulls(paper, &lower, &bins)?;
         legend(paper, outcome, has_background)?;
-        lower.mass_labels(paper)?;
+        lower.mass_labels(paper, RIGHT)?;
         lower.mass_title(paper, "mass [GeV]")?;
         upper.value_title(paper, &format!("events per {} GeV", three_digits(unit)))?;
         lower.value_title(paper, "pull")

@@ -239,7 +239,8 @@ fn draw_row(
         axes.grid(paper, &ticks)?;
         draw_panel(paper, row, masses, panel, &|density| axes.y(density))?;
         axes.frame(paper)?;
-        axes.mass_labels(paper)?;
+        // Not into the labels of the next panel.
+        axes.mass_labels(paper, 6.0)?;
         draw_entries(paper, row, masses, panel, entries_top)?;
     }
     if let Some(first) = panels.first() {
