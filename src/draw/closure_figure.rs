@@ -33,7 +33,9 @@ const METHODS: [(RGBColor, Marker); 5] = [
     (RGBColor(0xcc, 0x79, 0xa7), Marker::Diamond),
     (RGBColor(0x33, 0x33, 0x33), Marker::Cross),
 ];
-const BAND: RGBColor = RGBColor(0xee, 0xee, 0xee);
+const BAND: RGBColor = RGBColor(0xe8, 0xe8, 0xe8);
+/// What the band is.
+const AIM: &str = "aimed at";
 
 const LEFT: f64 = 92.0;
 const RIGHT: f64 = 20.0;
@@ -147,11 +149,16 @@ pub fn closure_figure(channel: &str, closures: &[LabelledClosure<'_>]) -> Result
     if !(masses.0 <= masses.1 && masses.0.is_finite() && masses.1.is_finite()) {
         return Err(DrawError::nothing("no mass point was left out"));
     }
+    let mut all: Vec<f64> = points().map(|p| p.mass_gev).collect();
+    all.sort_by(f64::total_cmp);
+    let gap = all.windows(2).map(|pair| pair[1] - pair[0]).filter(|gap| *gap > 0.0).fold(f64::INFINITY, f64::min);
     let more = 0.08 * (masses.1 - masses.0).max(0.02 * masses.1.abs()).max(1e-9);
     let masses = (masses.0 - more, masses.1 + more);
     let columns = categories.len() as f64;
     let width = (760.0 / columns).clamp(200.0, 420.0);
-    let entries = legend_places(&methods, columns * width + (columns - 1.0) * BETWEEN_COLUMNS);
+    let step = (width / (masses.1 - masses.0) * gap / (methods.len() as f64 + 1.0)).min(6.0);
+    let legend: Vec<&str> = methods.iter().copied().chain([AIM]).collect();
+    let entries = legend_places(&legend, columns * width + (columns - 1.0) * BETWEEN_COLUMNS);
     let legend_rows = entries.last().map_or(0.0, |e| e.1 + 1.0);
     let top = TITLE + LEGEND * legend_rows;
     let size = (
@@ -159,13 +166,19 @@ pub fn closure_figure(channel: &str, closures: &[LabelledClosure<'_>]) -> Result
         top + HEADING + 4.0 * PANEL + 3.0 * BETWEEN + BOTTOM,
     );
     draw(size, &format!("{channel}: closure"), |paper| {
-        let title = Type::TITLE.fit(&format!("{channel}: predicted without the mass point"), size.0 - LEFT - RIGHT);
+        let title = Type::TITLE.fit(&format!("{channel}: closure"), size.0 - LEFT - RIGHT);
         paper.text(&title, (LEFT, 22.0), Anchor::Left, Type::TITLE)?;
         for (k, (x, row)) in entries.iter().enumerate() {
             let y = TITLE + LEGEND * row + 2.0;
-            let (colour, marker) = METHODS[k % METHODS.len()];
-            marker.draw(paper, (LEFT + x + 5.0, y), colour)?;
-            paper.text(methods[k], (LEFT + x + 16.0, y), Anchor::Left, Type::LABEL)?;
+            let (x, centre) = (LEFT + x, LEFT + x + 5.0);
+            if k < methods.len() {
+                let (colour, marker) = METHODS[k % METHODS.len()];
+                marker.draw(paper, (centre, y), colour)?;
+            } else {
+                let corners = [(x, y - 5.0), (x + 11.0, y - 5.0), (x + 11.0, y + 5.0), (x, y + 5.0)];
+                paper.area(&corners, BAND, 1.0)?;
+            }
+            paper.text(legend[k], (x + 16.0, y), Anchor::Left, Type::LABEL)?;
         }
         for (column, category) in categories.iter().enumerate() {
             let x = LEFT + column as f64 * (width + BETWEEN_COLUMNS);
@@ -179,7 +192,7 @@ pub fn closure_figure(channel: &str, closures: &[LabelledClosure<'_>]) -> Result
                     let own = closures.iter().filter(|c| c.category == *category && c.method == *method);
                     let (colour, marker) = METHODS[k % METHODS.len()];
                     // Side by side, so that methods of equal value do not hide each other.
-                    let aside = 6.0 * (k as f64 - 0.5 * (methods.len() as f64 - 1.0));
+                    let aside = step * (k as f64 - 0.5 * (methods.len() as f64 - 1.0));
                     for point in own.flat_map(|c| &c.closure.points) {
                         let value = (quantity.value)(point).filter(|v| v.is_finite());
                         let Some(value) = value else { continue };
@@ -228,7 +241,9 @@ fn draw_panel(paper: &Paper<'_>, panel: &Panel, quantity: &Quantity) -> Result<(
     let low = if quantity.signed { -quantity.aim } else { 0.0 };
     let (from, to) = (y(quantity.aim), y(low));
     paper.area(&[(left, from), (right, from), (right, to), (left, to)], BAND, 1.0)?;
-    let ticks = Ticks::new(panel.values.0, panel.values.1, 4);
+    // Three at least, so that the scale is told.
+    let ticks = |most| Ticks::new(panel.values.0, panel.values.1, most);
+    let ticks = (4..8).map(ticks).find(|t| t.values.len() > 2).unwrap_or_else(|| ticks(8));
     for tick in &ticks.values {
         paper.line(&[(left, y(*tick)), (right, y(*tick))], PALE, 0.75)?;
         paper.text(&ticks.label(*tick), (left - 7.0, y(*tick)), Anchor::Right, Type::SMALL)?;
