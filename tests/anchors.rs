@@ -126,8 +126,9 @@ fn a_known_constant_term_and_scale_are_found() {
             let anchors = anchors(other, &masses, &templates, category, 200_000);
             let pairs: Vec<(&Anchor, &Template)> =
                 anchors.iter().zip(&templates).map(|(a, &(_, template))| (a, template)).collect();
+            let start = std::time::Instant::now();
             let found = agreement(&pairs).unwrap();
-            println!("{found:?}");
+            println!("{:?} {found:?}", start.elapsed());
             // The mean of √((1 + a)(1 + b)) lies term²/4 below 1.
             let second = -0.25 * term * term;
             let told_scale = if sign > 0.0 { scale + second } else { 1.0 / (1.0 + scale) - 1.0 - second };
