@@ -14,8 +14,8 @@
 //! # Rooms
 //!
 //! A module imports only from modules that stand before it in this list: [`problem`], [`numerics`], [`kinematics`], [`lineshape`],
-//! [`fit`], [`detector`], [`process`], [`events`], [`template`], [`fold`], [`shift`], [`model`], [`files`], [`draw`],
-//! [`cli`].
+//! [`fit`], [`detector`], [`process`], [`events`], [`template`], [`fold`], [`shift`], [`model`], [`results`], [`files`],
+//! [`draw`], [`cli`].
 
 pub mod problem;
 
@@ -38,6 +38,8 @@ pub mod template;
 pub mod fold;
 
 pub mod model;
+
+pub mod results;
 pub mod shift;
 
 pub mod files;

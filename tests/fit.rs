@@ -7,7 +7,7 @@ use std::path::{Path, PathBuf};
 use std::process::{Command, Output};
 
 use peakfold::fit::{Background, Data, FitOutcome, Histogram, Masses, Model, Settings, Warning, fit, starting_shape};
-use peakfold::lineshape::{BreitWigner, LineShape, Natural, Resolution, Shape};
+use peakfold::lineshape::{BreitWigner, LineShape, Natural, Relativistic, Resolution, Scaling, Shape};
 use rand::rngs::StdRng;
 use rand::{RngExt, SeedableRng};
 
@@ -77,22 +77,39 @@ fn recovers_a_million_points() {
     assert!(outcome.warnings.is_empty(), "{:?}", outcome.warnings);
 }
 
-/// Mean and width of pulls; the bounds are 3 standard errors for 200 of them.
-fn check_pulls(name: &str, pulls: &[f64]) {
+/// Mean and width of pulls within these distances of 0 and 1.
+fn check_pulls(name: &str, pulls: &[f64], (mean_within, width_within): (f64, f64)) {
     let n = pulls.len() as f64;
     let mean = pulls.iter().sum::<f64>() / n;
     let width = (pulls.iter().map(|p| (p - mean) * (p - mean)).sum::<f64>() / (n - 1.0)).sqrt();
-    assert!(mean.abs() < 0.22 && (width - 1.0).abs() < 0.15, "{name}: mean {mean}, width {width}");
+    let holds = mean.abs() < mean_within && (width - 1.0).abs() < width_within;
+    assert!(holds, "{name}: mean {mean}, width {width} of {n}");
 }
 
-/// At 10^4 points the estimates are biased by up to a tenth of an error (sigma: -0.08 in 4000 fits; gone at 10^5 points),
-/// as maximum likelihood is. With 200 fits that leaves one set of seeds in a few outside the bounds (the first 200 here
-/// give -0.24 for sigma), so 1000 fits are made, whose mean is known to 0.03.
+/// The bounds for 200 fits: 3 standard errors, for estimates without bias.
+const OF_200: (f64, f64) = (0.22, 0.15);
+
+/// Maximum likelihood is biased by a part of an error that falls as 1/sqrt(N) (D. R. Cox and E. J. Snell, J. R. Stat.
+/// Soc. B 30 (1968) 248). Means of the pulls here, in 20 000 fits at 10^4 points (each ±0.007) and 8000 fits at 4·10^4
+/// (±0.011): sigma -0.069 and -0.044, alpha_low -0.067 and -0.040, alpha_high -0.103 and -0.042, mass 0 and 0; the width
+/// of alpha_high is 1.056 and 1.004. Bounds of 0.22 and 0.15 for 200 fits leave room for noise alone, so with these
+/// biases some sets of 200 are outside: of 100 sets, 2 in sigma and 7 in alpha_high by the mean, 7 in alpha_high by the
+/// width. Hence 1000 fits, and bounds of the bias (0.1, and half of it) and 3.1 standard errors: narrower than those.
 #[test]
 fn pulls_are_standard_normal() {
+    pulls_within(10_000, (0.2, 0.13));
+}
+
+/// See [`pulls_are_standard_normal`].
+#[test]
+fn bias_of_pulls_shrinks() {
+    pulls_within(40_000, (0.15, 0.1));
+}
+
+fn pulls_within(points: usize, within: (f64, f64)) {
     let mut pulls = vec![vec![]; 6];
     for seed in 0..1000 {
-        let data = Data::from(Masses::new(draw(&truth(), 10_000, 1000 + seed), None).unwrap());
+        let data = Data::from(Masses::new(draw(&truth(), points, 1000 + seed), None).unwrap());
         let outcome = run(data.clone(), elsewhere(), OPEN, &Settings::default());
         for (k, (name, truth)) in TRUTH.iter().enumerate() {
             if !name.starts_with('n') {
@@ -107,7 +124,7 @@ fn pulls_are_standard_normal() {
         }
     }
     for ((name, _), pulls) in TRUTH.iter().zip(&pulls) {
-        check_pulls(name, pulls);
+        check_pulls(name, pulls, within);
     }
 }
 
@@ -169,7 +186,7 @@ fn weights_give_the_sandwich() {
         let outcome = run(Masses::new(masses, Some(weights)).unwrap(), gaussian(89.0, 1.0), OPEN, &Settings::default());
         pulls.push(pull(&outcome, "mass", 90.0));
     }
-    check_pulls("mass", &pulls);
+    check_pulls("mass", &pulls, OF_200);
 }
 
 /// A window cuts both sides of a Gaussian; the normalisation in it restores the parameters.
@@ -254,6 +271,30 @@ fn undetermined_tails_are_told() {
     assert!(outcome.warnings.iter().any(told), "{outcome:?}");
 }
 
+/// A background where there is none, and the same options with one.
+#[test]
+fn faint_backgrounds_are_told() {
+    let window = (80.0, 100.0);
+    let faint = |outcome: &FitOutcome| {
+        outcome.warnings.iter().any(|w| matches!(w, Warning::FaintBackground(..) | Warning::Empty(_)))
+    };
+    for background in [Background::Exponential, Background::Polynomial(2)] {
+        for seed in 20..25 {
+            let mut masses = draw(&gaussian(90.0, 1.5), 3000, seed);
+            masses.retain(|m| (window.0..window.1).contains(m));
+            let model = Model::new(gaussian(90.0, 1.5), Some(background), window).unwrap();
+            let without = Data::from(Masses::new(masses.clone(), None).unwrap());
+            let outcome = fit(&without, &model, &Settings::default()).unwrap();
+            assert!(faint(&outcome), "{background:?} {seed}: {outcome:?}");
+            let mut random = StdRng::seed_from_u64(seed);
+            masses.extend((0..3000).map(|_| 80.0 + 20.0 * random.random::<f64>()));
+            let with = Data::from(Masses::new(masses, None).unwrap());
+            let outcome = fit(&with, &model, &Settings::default()).unwrap();
+            assert!(outcome.converged() && !faint(&outcome), "{background:?} {seed}: {outcome:?}");
+        }
+    }
+}
+
 struct Scratch(tempfile::TempDir);
 
 impl Scratch {
@@ -327,6 +368,51 @@ fn table_and_figure() {
     assert!(svg.starts_with("<svg") && svg.trim_end().ends_with("</svg>") && svg.contains("pull"));
 }
 
+/// A negative weight at the edge, where nothing but background_1 is: -ln L falls without end as background_1 goes to 0.
+#[test]
+fn fit_without_minimum_is_not_trusted() {
+    let scratch = Scratch::new();
+    let text = "mass_gev,weight\n82,1\n86,1\n89.9,2\n90.1,3\n94,1\n97,1\n100,-0.5\n";
+    let options = "--resolution gaussian --from 80 --to 100 --background polynomial --fix mass=90,sigma=0.2";
+    let output = peakfold(&scratch.file("endless.csv", text), options);
+    assert_eq!(output.status.code(), Some(3));
+    assert_eq!(String::from_utf8(output.stdout).unwrap(), ENDLESS.0);
+    assert_eq!(String::from_utf8(output.stderr).unwrap(), ENDLESS.1);
+    let output = peakfold(&scratch.file("endless.csv", text), &format!("{options} --json"));
+    assert_eq!(output.status.code(), Some(3));
+    let found: serde_json::Value = serde_json::from_slice(&output.stdout).unwrap();
+    assert_eq!((&found["converged"], &found["stop"]), (&false.into(), &"too many steps".into()));
+    assert!(found["covariance"]["matrix"].is_null() && found["parameters"]["background_0"]["error"].is_null());
+}
+
+const ENDLESS: (&str, &str) = ("", "");
+
+/// Samples of a shape with falling production and a resolution that grows with the mass are fitted with the same.
+#[test]
+fn proportional_resolution_and_falloff() {
+    let natural = Natural::Relativistic(Relativistic::new(400.0, 40.0).unwrap());
+    let resolution = Resolution::gaussian(0.0, 8.0).unwrap();
+    let shape = LineShape::with_options(natural, Some(resolution.into()), Scaling::Proportional, Some(4.0)).unwrap();
+    let mut text = "mass_gev\n".to_owned();
+    draw(&shape, 4000, 30).iter().for_each(|m| text += &format!("{m}\n"));
+    let scratch = Scratch::new();
+    let file = scratch.file("wide.csv", &text);
+    let wide = "--natural relativistic --width 40 --resolution gaussian --json";
+    let found = json(&peakfold(&file, &format!("{wide} --proportional --falloff-power 4")));
+    let pull = |found: &serde_json::Value, name: &str, truth: f64| {
+        let p = &found["parameters"][name];
+        (p["value"].as_f64().unwrap() - truth) / p["error"].as_f64().unwrap()
+    };
+    for (name, truth) in [("mass", 400.0), ("sigma", 8.0)] {
+        assert!(pull(&found, name, truth).abs() < 4.0, "{name} {found}");
+    }
+    assert_eq!(found["parameters"]["falloff_power"]["value"], 4.0);
+    assert_eq!(found["parameters"]["falloff_power"]["free"], false);
+    // Without the falloff the peak is looked for too low, by many errors.
+    let plain = json(&peakfold(&file, wide));
+    assert!(pull(&plain, "mass", 400.0) < -5.0, "{plain}");
+}
+
 /// Status, and what the message must hold.
 fn refused(scratch: &Scratch, text: &str, options: &str, status: i32, words: &[&str]) {
     let output = peakfold(&scratch.file("data.csv", text), options);
@@ -376,6 +462,7 @@ fn bad_input_is_refused() {
     refused(&scratch, some, "--resolution gaussian --free bias", 1, &["mass and bias"]);
     refused(&scratch, some, "--resolution gaussian --fix mass=90,sigma=2", 1, &["no parameter is free"]);
     refused(&scratch, some, "--natural relativistic --width -2", 1, &["--width is -2"]);
+    refused(&scratch, some, "--natural relativistic --width 2 --falloff-power -1", 1, &["--falloff-power is -1"]);
     for (options, word) in [
         ("", "both none"),
         ("--natural relativistic", "--width"),
@@ -383,6 +470,9 @@ fn bad_input_is_refused() {
         ("--resolution gaussian --background exponential", "--from"),
         ("--resolution gaussian --from 95 --to 90", "--from must be below"),
         ("--resolution gaussian --two-sigmas", "double-crystal-ball"),
+        ("--resolution gaussian --falloff-power 3", "--falloff-power"),
+        ("--natural relativistic --width 2 --free falloff_power", "--free falloff_power needs"),
+        ("--natural relativistic --width 2 --proportional", "--proportional"),
         ("--resolution gaussian --fix sigma", "NAME=VALUE"),
         ("--resolution gaussian --bound sigma=1", "NAME=LOW:HIGH"),
         ("--resolution gaussian --from 80 --to 100 --background polynomial --degree 99", "degree"),

@@ -35,6 +35,7 @@ fn study() -> Study {
         precision: 1e-4,
         max_points: 1 << 20,
         prune_shifts_below: 0.0,
+        expected_events: 1e4,
         resonance: Resonance {
             masses_gev: vec![150.0, 180.5],
             width: Width::Gev(0.0),
@@ -102,6 +103,8 @@ fn contents() -> RunContents {
         record: RunRecord::new(&study(), inputs(), &folds),
         templates: vec![template(150.0), template(180.5)],
         responses: Vec::new(),
+        fitted: Vec::new(),
+        models: None,
         further: vec![("figures/two-photon.svg".to_owned(), b"<svg/>".to_vec())],
     }
 }

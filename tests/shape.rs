@@ -78,7 +78,7 @@ fn draws() {
     assert_eq!(text, "");
     let svg = std::fs::read_to_string(&file).unwrap();
     assert!(svg.starts_with("<svg") && svg.trim_end().ends_with("</svg>"));
-    assert!(svg.contains("mass (GeV)") && svg.contains("sigma_eff = 1.447 GeV"), "labels");
+    assert!(svg.contains("mass [GeV]") && svg.contains("σ_eff = 1.447 GeV"), "labels");
     assert_eq!(std::fs::read_dir(directory.path()).unwrap().count(), 1);
     let output = shape(&format!("{BOTH_TAILS} --plot {}/none/shape.svg", directory.path().display()));
     assert_eq!(output.status.code(), Some(1));

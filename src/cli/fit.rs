@@ -11,7 +11,7 @@ use super::{Failure, Outcome};
 use crate::draw::{fit_figure, write_whole};
 use crate::files::load_fit_data;
 use crate::fit::{Background, FitOutcome, Model, Settings, Stop, fit, starting_shape};
-use crate::lineshape::{BreitWigner, LineShape, Natural, Relativistic, Resolution, RunningWidth, ShapeError};
+use crate::lineshape::{BreitWigner, LineShape, Natural, Relativistic, Resolution, RunningWidth, Scaling, ShapeError};
 
 /// Backgrounds.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, ValueEnum)]
@@ -30,8 +30,9 @@ pub enum BackgroundKind {
 /// comments.
 ///
 /// Free are the mass and the parameters of the resolution, with a background also the yields and its
-/// own parameters. The natural width is fixed unless --free width. Parameters have the names that
-/// the output shows: mass, width, bias, sigma, sigma_low, sigma_high, alpha_low, n_low, alpha_high,
+/// own parameters. The natural width is fixed unless --free width, the power of a falling production
+/// unless --free falloff_power. Parameters have the names that the output shows: mass, width,
+/// falloff_power, bias, sigma, sigma_low, sigma_high, alpha_low, n_low, alpha_high,
 /// n_high, k_low, k_high, signal_yield, background_yield, background_slope, background_0, ...
 ///
 /// Exit status 3: the fit did not converge; what it reached is printed all the same.
@@ -46,9 +47,15 @@ pub struct FitArgs {
     /// Natural width (FWHM) in GeV; fixed unless --free width
     #[arg(long, allow_negative_numbers = true)]
     pub width: Option<f64>,
+    /// Production falls as (m/M)^-POWER across the natural width, between M/2 and 2M; fixed unless --free falloff_power
+    #[arg(long, value_name = "POWER", allow_negative_numbers = true)]
+    pub falloff_power: Option<f64>,
     /// Distribution of measured minus true mass
     #[arg(long, value_enum, default_value_t = ResolutionKind::None)]
     pub resolution: ResolutionKind,
+    /// Bias and sigma grow with the true mass; their values hold at the mass of the resonance
+    #[arg(long)]
+    pub proportional: bool,
     /// One sigma below the peak and one above it (double-crystal-ball)
     #[arg(long)]
     pub two_sigmas: bool,
@@ -67,7 +74,7 @@ pub struct FitArgs {
     /// Degree of the polynomial background
     #[arg(long, default_value_t = 1)]
     pub degree: usize,
-    /// Free a parameter that is fixed otherwise: width, bias
+    /// Free a parameter that is fixed otherwise: width, bias, falloff_power
     #[arg(long, value_name = "NAME", value_delimiter = ',')]
     pub free: Vec<String>,
     /// Hold a parameter at a value
@@ -123,6 +130,15 @@ impl FitArgs {
             () if self.natural == NaturalKind::None && self.resolution == ResolutionKind::None => {
                 wrong("--natural and --resolution are both none; choose at least one shape")
             }
+            () if self.falloff_power.is_some() && !has_width => {
+                wrong("--falloff-power has no meaning with --natural none; leave it out or choose a natural shape")
+            }
+            () if self.falloff_power.is_none() && self.free.iter().any(|name| name == "falloff_power") => {
+                wrong("--free falloff_power needs --falloff-power, the power to start from")
+            }
+            () if self.proportional && self.resolution == ResolutionKind::None => {
+                wrong("--proportional has no meaning with --resolution none; leave it out or choose a resolution")
+            }
             () if self.two_sigmas && self.resolution != ResolutionKind::DoubleCrystalBall => {
                 wrong("--two-sigmas needs --resolution double-crystal-ball")
             }
@@ -160,7 +176,11 @@ impl FitArgs {
             ResolutionKind::GaussExp if self.two_tails => Some(Resolution::double_gauss_exp(0.0, 1.0, SLOPE, SLOPE)?),
             ResolutionKind::GaussExp => Some(Resolution::gauss_exp(0.0, 1.0, SLOPE)?),
         };
-        LineShape::new(natural, resolution.map(Into::into))
+        let scaling = if self.proportional { Scaling::Proportional } else { Scaling::Constant };
+        // 0 is no falloff at all, unless it is to be fitted.
+        let freed = self.free.iter().any(|name| name == "falloff_power");
+        let falloff = self.falloff_power.filter(|power| *power != 0.0 || freed);
+        LineShape::with_options(natural, resolution.map(Into::into), scaling, falloff)
     }
 
     fn background(&self) -> Option<Background> {
@@ -172,7 +192,7 @@ impl FitArgs {
 
     fn fitted(&self) -> Result<FitOutcome, Failure> {
         self.usage()?;
-        let line = self.line_shape().map_err(|error| Failure::Input(format!("--{error}")))?;
+        let line = self.line_shape()?;
         let data = load_fit_data(&self.file)?;
         let settings = Settings {
             fixed: self.fix.clone(),
@@ -212,7 +232,7 @@ pub fn run(args: &FitArgs, out: &mut impl Write) -> Outcome {
     };
     Err(Failure::Numerical(format!(
         "the fit did not converge: {why} (estimated distance in -ln L: {:.2e}, must be below 1e-6); the printed values \
-         are the best point met, not the best fit, and their errors mean nothing; start nearer (--start NAME=VALUE) or \
+         are the best point met, not the best fit, and have no errors; start nearer (--start NAME=VALUE) or \
          fix what the data do not tell (--fix NAME=VALUE)",
         outcome.distance
     )))

@@ -24,7 +24,7 @@ pub(super) fn write_report(out: &mut dyn Write, outcome: &FitOutcome) -> io::Res
         .iter()
         .map(|p| {
             let error = p.error.filter(|_| p.free);
-            let short = if p.free { with_error(Some(p.value), error) } else { String::new() };
+            let short = if p.free && error.is_some() { with_error(Some(p.value), error) } else { String::new() };
             vec![p.name.clone(), state(p).to_owned(), short, plain(Some(p.value)), plain(error)]
         })
         .collect();

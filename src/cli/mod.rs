@@ -8,6 +8,7 @@ pub mod fit;
 mod fit_text;
 pub mod fold;
 mod outcome;
+pub mod predict;
 pub mod shape;
 mod table;
 
@@ -47,6 +48,7 @@ enum Command {
     Check(check::CheckArgs),
     Fit(Box<fit::FitArgs>),
     Fold(fold::FoldArgs),
+    Predict(predict::PredictArgs),
     Shape(Box<shape::ShapeArgs>),
 }
 
@@ -56,6 +58,7 @@ impl Command {
             Command::Check(args) => check::run(args, out),
             Command::Fit(args) => fit::run(args, out),
             Command::Fold(args) => fold::run(args, out),
+            Command::Predict(args) => predict::run(args, out),
             Command::Shape(args) => shape::run(args, out),
         }
     }

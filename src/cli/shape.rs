@@ -6,7 +6,7 @@ use std::path::PathBuf;
 use clap::{Args, ValueEnum};
 
 use super::{Failure, Outcome};
-use crate::draw::curve;
+use crate::draw::{shape_figure, write_whole};
 use crate::lineshape::widths::{
     FWHM_PER_SIGMA, ONE_SIGMA, central_interval, full_width_at_half_maximum, narrowest_interval, peak,
 };
@@ -262,13 +262,8 @@ pub fn run(args: &ShapeArgs, out: &mut impl Write) -> Outcome {
     let shape = args.line_shape()?;
     let masses = args.masses()?;
     if let Some(file) = &args.plot {
-        curve::draw_shape(&shape, args.from.zip(args.to), file).map_err(|error| {
-            Failure::Input(match error {
-                curve::DrawError::Range => format!("{error}; give --from and --to"),
-                curve::DrawError::Output(error) => format!("{}: {error}", file.display()),
-                curve::DrawError::Figure(_) => error.to_string(),
-            })
-        })?;
+        let svg = shape_figure(&shape, args.from.zip(args.to)).map_err(|error| Failure::Input(error.to_string()))?;
+        write_whole(file, &svg).map_err(|error| Failure::Input(format!("{}: {error}", file.display())))?;
     }
     write_results(&shape, &masses, args.widths, out).map_err(Failure::Output)
 }

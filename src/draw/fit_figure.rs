@@ -1,7 +1,8 @@
 //! The figure of a fit: what was found and expected, and the pulls below.
 
-use super::paper::{Anchor, DrawError, FRAME, INK, PALE, Paper, Type, draw};
-use super::scale::Ticks;
+use super::axes::Axes;
+use super::paper::{Anchor, DrawError, INK, Paper, Type, draw};
+use super::scale::{Ticks, three_digits};
 use crate::fit::{FitOutcome, GoodnessBin};
 use plotters::style::RGBColor;
 
@@ -20,37 +21,6 @@ const BOTTOM: f64 = 52.0;
 const RIGHT: f64 = 20.0;
 /// Points of the curve.
 const SAMPLES: usize = 1200;
-
-/// Where masses and values stand on the sheet.
-struct Axes {
-    low: f64,
-    high: f64,
-    top: f64,
-    height: f64,
-    least: f64,
-    most: f64,
-}
-
-impl Axes {
-    fn x(&self, mass: f64) -> f64 {
-        LEFT + WIDTH * (mass - self.low) / (self.high - self.low)
-    }
-
-    fn y(&self, value: f64) -> f64 {
-        self.top + self.height * (self.most - value) / (self.most - self.least)
-    }
-
-    fn frame(&self, paper: &Paper<'_>, ticks: &Ticks) -> Result<(), DrawError> {
-        let (left, right, bottom) = (LEFT, LEFT + WIDTH, self.top + self.height);
-        for tick in &ticks.values {
-            let y = self.y(*tick);
-            paper.line(&[(left, y), (right, y)], PALE, 0.75)?;
-            paper.text(&ticks.label(*tick), (left - 7.0, y), Anchor::Right, Type::SMALL)?;
-        }
-        let corners = [(left, self.top), (left, bottom), (right, bottom), (right, self.top), (left, self.top)];
-        paper.line(&corners, FRAME, 1.0)
-    }
-}
 
 /// The figure of a fit as SVG, entitled `title`.
 ///
@@ -73,14 +43,17 @@ pub fn fit_figure(title: &str, outcome: &FitOutcome) -> Result<String, DrawError
     let most = tops.filter(|v| v.is_finite()).fold(0.0, f64::max);
     let least = bins.iter().map(|b| scaled(b, b.found - error(b))).fold(0.0, f64::min);
     let most = if most > least { most + 0.08 * (most - least) } else { least + 1.0 };
-    let upper = Axes { low, high, top: TOP, height: HEIGHT, least, most };
+    let upper = Axes { left: LEFT, width: WIDTH, top: TOP, height: HEIGHT, masses: (low, high), values: (least, most) };
     let reach = bins.iter().map(|b| b.pull().abs()).filter(|p| p.is_finite()).fold(3.0, f64::max).min(12.0) * 1.1;
-    let lower = Axes { top: TOP + HEIGHT + GAP, height: PULLS, least: -reach, most: reach, ..upper };
+    let lower = Axes { top: TOP + HEIGHT + GAP, height: PULLS, values: (-reach, reach), ..upper };
     let size = (LEFT + WIDTH + RIGHT, TOP + HEIGHT + GAP + PULLS + BOTTOM);
     draw(size, title, |paper| {
         paper.text(&Type::TITLE.fit(title, WIDTH), (LEFT, 24.0), Anchor::Left, Type::TITLE)?;
-        upper.frame(paper, &Ticks::new(least, most, 6))?;
-        lower.frame(paper, &Ticks::new(-reach, reach, 4))?;
+        for (axes, ticks) in [(&upper, Ticks::new(least, most, 6)), (&lower, Ticks::new(-reach, reach, 4))] {
+            axes.grid(paper, &ticks)?;
+            axes.value_labels(paper, &ticks)?;
+            axes.frame(paper)?;
+        }
         let line = |part: &dyn Fn(&(f64, f64)) -> f64| -> Vec<(f64, f64)> {
             masses.iter().zip(&curve).map(|(m, c)| (upper.x(*m), upper.y(unit * part(c)))).collect()
         };
@@ -97,7 +70,10 @@ pub fn fit_figure(title: &str, outcome: &FitOutcome) -> Result<String, DrawError
         }
         draw_pulls(paper, &lower, &bins)?;
         legend(paper, outcome, has_background)?;
-        axis_labels(paper, &lower, unit)
+        lower.mass_labels(paper)?;
+        lower.mass_title(paper, "mass [GeV]")?;
+        upper.value_title(paper, &format!("events per {} GeV", three_digits(unit)))?;
+        lower.value_title(paper, "pull")
     })
 }
 
@@ -115,7 +91,7 @@ fn draw_pulls(paper: &Paper<'_>, axes: &Axes, bins: &[GoodnessBin]) -> Result<()
         let (left, right) = (axes.x(bin.low_gev), axes.x(bin.high_gev));
         let inset = 0.12 * (right - left);
         // A pull beyond the frame ends at it.
-        let y = axes.y(bin.pull().clamp(axes.least, axes.most));
+        let y = axes.y(bin.pull().clamp(axes.values.0, axes.values.1));
         paper.area(&[(left + inset, zero), (right - inset, zero), (right - inset, y), (left + inset, y)], FIT, 0.75)?;
     }
     paper.line(&[(LEFT, zero), (LEFT + WIDTH, zero)], INK, 0.75)
@@ -143,18 +119,4 @@ fn legend(paper: &Paper<'_>, outcome: &FitOutcome, has_background: bool) -> Resu
         paper.text(&format!("p = {:.2}", g.p_value), (x, y), Anchor::Left, Type::SMALL)?;
     }
     Ok(())
-}
-
-fn axis_labels(paper: &Paper<'_>, axes: &Axes, unit: f64) -> Result<(), DrawError> {
-    let bottom = axes.top + axes.height;
-    let ticks = Ticks::new(axes.low, axes.high, 8);
-    for tick in &ticks.values {
-        let x = axes.x(*tick);
-        paper.line(&[(x, bottom), (x, bottom + 4.0)], FRAME, 1.0)?;
-        paper.text(&ticks.label(*tick), (x, bottom + 13.0), Anchor::Centre, Type::SMALL)?;
-    }
-    paper.text("mass [GeV]", (LEFT + 0.5 * WIDTH, bottom + 34.0), Anchor::Centre, Type::LABEL)?;
-    let per = format!("events per {} GeV", super::scale::three_digits(unit));
-    paper.text(&per, (20.0, TOP + 0.5 * HEIGHT), Anchor::Upwards, Type::LABEL)?;
-    paper.text("pull", (20.0, axes.top + 0.5 * axes.height), Anchor::Upwards, Type::LABEL)
 }

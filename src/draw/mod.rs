@@ -1,13 +1,15 @@
 //! Figures, as SVG with the reader's own sans-serif font.
 
+mod axes;
 mod closure_figure;
-pub mod curve;
+mod curve;
 mod fit_figure;
 mod paper;
 mod scale;
 mod template_figure;
 
 pub use closure_figure::{LabelledClosure, closure_figure};
+pub use curve::shape_figure;
 pub use fit_figure::fit_figure;
 pub use template_figure::{DrawError, template_figure, template_figures};
 

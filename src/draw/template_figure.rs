@@ -4,8 +4,9 @@
 //! distance more on either side. Masses whose ranges meet share a panel; between panels the axis is broken. All panels
 //! of a row share the vertical axis, so that heights compare.
 
+use super::axes::Axes;
 pub use super::paper::DrawError;
-use super::paper::{Anchor, FRAME, PALE, Paper, Type, draw};
+use super::paper::{Anchor, Paper, Type, draw};
 use super::scale::{Ticks, three_digits};
 use crate::files::{NOMINAL, shortest};
 use crate::template::{Cumulative, LabelledTemplate};
@@ -224,19 +225,25 @@ fn draw_row(
     // Room for labels above the peaks.
     let highest = highest + 0.14 * (highest - lowest);
     let lowest = if lowest < 0.0 { lowest - 0.05 * (highest - lowest) } else { lowest };
-    let place_y = |density: f64| top + height * (highest - density) / (highest - lowest);
+    let axes = |panel: &Panel| Axes {
+        left: panel.x,
+        width: panel.width,
+        top,
+        height,
+        masses: (panel.low, panel.high),
+        values: (lowest, highest),
+    };
     let ticks = Ticks::new(lowest, highest, if height > 200.0 { 6 } else { 4 });
     for panel in panels {
-        for tick in &ticks.values {
-            let y = place_y(*tick);
-            paper.line(&[(panel.x, y), (panel.x + panel.width, y)], PALE, 0.75)?;
-        }
-        draw_panel(paper, row, masses, panel, &place_y)?;
-        draw_frame(paper, panel, (top, top + height))?;
+        let axes = axes(panel);
+        axes.grid(paper, &ticks)?;
+        draw_panel(paper, row, masses, panel, &|density| axes.y(density))?;
+        axes.frame(paper)?;
+        axes.mass_labels(paper)?;
         draw_entries(paper, row, masses, panel, entries_top)?;
     }
-    for tick in &ticks.values {
-        paper.text(&ticks.label(*tick), (LEFT - 7.0, place_y(*tick)), Anchor::Right, Type::SMALL)?;
+    if let Some(first) = panels.first() {
+        axes(first).value_labels(paper, &ticks)?;
     }
     paper.text("probability per GeV", (20.0, top + 0.5 * height), Anchor::Upwards, Type::LABEL)
 }
@@ -315,33 +322,6 @@ fn draw_peak_labels(
 /// A mass as a reader names it: to 0.1 MeV.
 fn mass_name(mass_gev: f64) -> String {
     shortest(libm::round(mass_gev * 1e4) / 1e4)
-}
-
-fn draw_frame(paper: &Paper<'_>, panel: &Panel, (top, bottom): (f64, f64)) -> Result<(), DrawError> {
-    let (left, right) = (panel.x, panel.x + panel.width);
-    paper.line(&[(left, top), (left, bottom), (right, bottom), (right, top), (left, top)], FRAME, 1.0)?;
-    // Labels may reach over the frame, but not into the next panel's.
-    let length = |label: &str| Type::SMALL.length(label.len());
-    let labelled = |ticks: &Ticks| -> Vec<(f64, String)> {
-        let all = ticks.values.iter().map(|tick| (panel.place(*tick), ticks.label(*tick)));
-        all.filter(|(x, label)| {
-            let half = 0.5 * length(label);
-            x - half > left - 6.0 && x + half < right + 6.0
-        })
-        .collect()
-    };
-    // As many as stay apart.
-    let apart = |labels: &[(f64, String)]| labels.windows(2).all(|w| w[1].0 - w[0].0 > length(&w[1].1) + 9.0);
-    let ticks = (1..=10).rev().map(|most| Ticks::new(panel.low, panel.high, most)).find(|t| apart(&labelled(t)));
-    let Some(ticks) = ticks else { return Ok(()) };
-    for tick in &ticks.values {
-        let x = panel.place(*tick);
-        paper.line(&[(x, bottom), (x, bottom + 4.0)], FRAME, 1.0)?;
-    }
-    for (x, label) in labelled(&ticks) {
-        paper.text(&label, (x, bottom + 13.0), Anchor::Centre, Type::SMALL)?;
-    }
-    Ok(())
 }
 
 fn draw_entries(

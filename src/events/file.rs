@@ -197,15 +197,15 @@ impl<'a> EventFile<'a> {
         Ok(!chunk.is_empty())
     }
 
-    /// Reads the file to its end and hands out its batches in order: while some chunks are parsed in parallel, the next ones
-    /// are read. The batches do not depend on the number of threads.
+    /// Reads the file to its end and hands out its batches in order: while some chunks are parsed in parallel and consumed, the
+    /// next ones are read. The batches do not depend on the number of threads.
     ///
     /// # Errors
     ///
     /// As [`Self::next_batch`], or what `consume` returns.
-    pub fn for_each_batch<E: From<Problem>>(
+    pub fn for_each_batch<E: From<Problem> + Send>(
         &mut self,
-        mut consume: impl FnMut(&EventBatch) -> Result<(), E>,
+        mut consume: impl FnMut(&EventBatch) -> Result<(), E> + Send,
     ) -> Result<(), E> {
         let width = rayon::current_num_threads();
         let mut wave = Wave::new(width);
@@ -215,21 +215,25 @@ impl<'a> EventFile<'a> {
         wave.fill(self);
         while wave.filled > 0 || wave.failure.is_some() {
             let read_on = wave.failure.is_none();
-            rayon::join(
+            let ((), consumed) = rayon::join(
                 || {
                     if read_on {
                         next.fill(self);
                     }
                 },
-                || {
+                || -> Result<Report, E> {
                     let work = batches.par_iter_mut().zip(wave.chunks.par_iter().take(wave.filled));
                     work.for_each(|((batch, report), chunk)| *report = chunk.parse(batch));
+                    let mut noticed = Report::default();
+                    for (batch, report) in batches.iter_mut().take(wave.filled) {
+                        noticed.merge(&std::mem::replace(report, Ok(Report::default()))?);
+                        consume(batch)?;
+                    }
+                    Ok(noticed)
                 },
             );
-            for (batch, report) in batches.iter_mut().take(wave.filled) {
-                self.report.merge(&std::mem::replace(report, Ok(Report::default()))?);
-                consume(batch)?;
-            }
+            // What the scanner has noticed in the meantime are other things, or those of the init block.
+            self.report.merge(&consumed?);
             if let Some(problem) = wave.failure.take() {
                 return Err(problem.into());
             }

@@ -8,14 +8,6 @@ use crate::detector::{EtaRange, Object};
 use crate::kinematics::MAX_LEGS;
 use crate::process::{Ancestry, Category, Channel, Cuts, Decay, LegChoice, MassAxis, Pairing, Pick, ShapeChoice};
 
-const SHAPES: [(&str, ShapeChoice); 5] = [
-    ("gaussian", ShapeChoice::Gaussian),
-    ("crystal-ball", ShapeChoice::CrystalBall),
-    ("double-crystal-ball", ShapeChoice::DoubleCrystalBall),
-    ("double-crystal-ball-two-sigmas", ShapeChoice::DoubleCrystalBallTwoSigmas),
-    ("gauss-exp", ShapeChoice::GaussExp),
-];
-
 const ANCESTRY: [(&str, Ancestry); 3] =
     [("prefer", Ancestry::Prefer), ("ignore", Ancestry::Ignore), ("require", Ancestry::Require)];
 const PICKS: [(&str, Pick); 2] = [("hardest", Pick::Hardest), ("nearest", Pick::Nearest)];
@@ -84,7 +76,8 @@ fn channel(
         section.optional("min_efficient_legs").and_then(|item| item.whole(1, legs as u64)).map(|count| count as usize);
     let choice = choice(&mut section, decay.as_ref(), generated);
     let axis = axis(&mut section);
-    let shape = section.optional("shape").and_then(|item| item.word(&SHAPES));
+    let shapes = ShapeChoice::ALL.map(|shape| (shape.name(), shape));
+    let shape = section.optional("shape").and_then(|item| item.word(&shapes));
     let categories = categories(section.tables("category"));
     let PlacedSimulated { simulated, use_line: simulated_use_line, places: simulated_places } =
         simulated_tables::read(&mut section, &categories, axis.as_ref(), files);

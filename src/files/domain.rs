@@ -37,6 +37,8 @@ pub(super) fn name_fault(name: &str) -> Option<&'static str> {
     const RESERVED: &[char] = &[',', '"', '\'', '/', '\\', ':'];
     if name.trim().is_empty() {
         Some("must not be empty")
+    } else if name.trim() != name {
+        Some("must not begin or end with a blank")
     } else if name.chars().any(char::is_control) || name.contains(RESERVED) {
         Some("must not contain commas, quotes, slashes, colons or control characters")
     } else {

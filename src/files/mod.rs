@@ -5,6 +5,7 @@
 //! collected, with file, line and key, over all files of a study; only a study without any becomes typed.
 
 mod channel_tables;
+mod closure_table;
 mod detector_entries;
 mod detector_file;
 mod digest;
@@ -12,6 +13,7 @@ mod domain;
 mod efficiency_file;
 mod fit_data;
 mod interrupt;
+mod model_file;
 mod number;
 mod number_table;
 mod reader;
@@ -32,6 +34,7 @@ pub use detector_file::{load_detector, parse_detector};
 pub use digest::FileDigest;
 pub use fit_data::load_fit_data;
 pub use interrupt::remove_unfinished_on_interrupt;
+pub use model_file::{LoadedModels, NaturalOfRun, RunModels, load_models};
 pub use number::shortest;
 pub use run_read::{Run, read_run};
 pub use run_record::{FoldSummary, MoveRecord, NuisanceRecord, RunRecord, Skipped};

@@ -8,12 +8,6 @@ use super::spectrum_file;
 use crate::problem::Problem;
 use crate::process::{EventList, EventSource, Intermediate, Natural, Production, Radiation, Resonance, Width};
 
-const NATURAL_SHAPES: [(&str, Natural); 3] = [
-    ("breit-wigner", Natural::BreitWigner),
-    ("relativistic", Natural::Relativistic),
-    ("running-width", Natural::RunningWidth),
-];
-
 /// The V of X -> V V(*) when none is given: mass and width in GeV.
 const INTERMEDIATE: Intermediate = Intermediate { mass_gev: 91.188, width_gev: 2.4955 };
 
@@ -51,7 +45,8 @@ impl OtherFiles {
 pub(super) fn read(mut section: Section<'_>, files: &mut OtherFiles) -> Option<Resonance> {
     let masses_gev = masses(&mut section);
     let width = section.table("width").map_or(Width::Gev(0.0), width);
-    let natural = section.optional("natural").and_then(|item| item.word(&NATURAL_SHAPES));
+    let natural =
+        section.optional("natural").and_then(|item| item.word(&Natural::ALL.map(|natural| (natural.name(), natural))));
     let falloff_power = section.number_or("falloff_power", &ANY, 0.0);
     let source = source(&mut section, files);
     if matches!(source, Some(EventSource::File(_))) && masses_gev.len() > 1 {

@@ -117,6 +117,8 @@ pub struct RunRecord {
     pub folds: Vec<FoldSummary>,
     /// The nuisances whose shifts were folded; empty for a detector without uncertainties.
     pub nuisances: Vec<NuisanceRecord>,
+    /// What the user should know of the model, one sentence each.
+    pub model_notes: Vec<String>,
     /// What was not reached, one sentence each; empty when all is well.
     pub not_reached: Vec<String>,
     /// Threads used.
@@ -130,6 +132,30 @@ pub struct RunRecord {
 }
 
 impl RunRecord {
+    /// How many mass points were folded.
+    pub(super) fn masses(&self) -> usize {
+        let mut masses: Vec<f64> = self.folds.iter().map(|fold| fold.mass_gev).collect();
+        masses.sort_by(f64::total_cmp);
+        masses.dedup();
+        masses.len()
+    }
+
+    /// The record of a prediction from a run.
+    pub fn of_prediction(run: &RunRecord, inputs: Vec<FileDigest>) -> Self {
+        RunRecord {
+            inputs,
+            folds: Vec::new(),
+            nuisances: Vec::new(),
+            model_notes: Vec::new(),
+            not_reached: Vec::new(),
+            threads: 1,
+            wall_seconds: 0.0,
+            cpu_seconds: 0.0,
+            files: Vec::new(),
+            ..run.clone()
+        }
+    }
+
     /// The record of a run; fills in program, version, the fraction, and what was not reached.
     pub fn new(study: &crate::process::Study, inputs: Vec<FileDigest>, folds: &[FoldRecord]) -> Self {
         let folds: Vec<FoldSummary> = folds.iter().map(FoldSummary::from).collect();
@@ -159,6 +185,7 @@ impl RunRecord {
             cpu_seconds: folds.iter().map(|fold| fold.cpu_seconds).sum(),
             folds,
             nuisances: Vec::new(),
+            model_notes: Vec::new(),
             not_reached,
             threads: 1,
             wall_seconds: 0.0,

@@ -61,6 +61,11 @@ pub enum TargetError {
 }
 
 impl TargetError {
+    /// A file that cannot be put into words.
+    pub(super) fn from_json(name: &str, error: serde_json::Error) -> Self {
+        TargetError::Io { path: PathBuf::from(name), action: "write", source: io::Error::other(error) }
+    }
+
     fn io(path: &Path, action: &'static str) -> impl FnOnce(io::Error) -> Self {
         let path = path.to_path_buf();
         move |source| TargetError::Io { path, action, source }

@@ -1,9 +1,14 @@
-//! The files of a run directory: `templates.csv`, `shifts.csv`, `responses.csv`, `summary.csv`, `run.json`.
+//! The files of a run directory: `templates.csv`, `shifts.csv`, `responses.csv`, `summary.csv`, `model.json`,
+//! `closure.csv`, `run.json`.
 
+use super::closure_table::{self, CLOSURE_FILE};
+use super::model_file::{self, MODEL_FILE, RunModels};
 use super::number::{shortest, shortest_or_empty};
 use super::response_table::{self, RESPONSES_FILE};
 use super::run_record::{FoldSummary, RunRecord};
 use super::run_target::{Committed, RUN_FILE, Staging, Target, TargetError};
+use crate::lineshape::Parameter;
+use crate::model::Fitted;
 use crate::shift::LabelledResponse;
 use crate::template::{LabelledTemplate, Measured, SIGMA_EFF_FRACTION};
 use std::io::{self, Write};
@@ -65,6 +70,10 @@ pub struct RunContents {
     pub templates: Vec<LabelledTemplate>,
     /// What the nuisances do to the templates.
     pub responses: Vec<LabelledResponse>,
+    /// The shapes fitted to the templates of width 0.
+    pub fitted: Vec<Fitted>,
+    /// The mass models; `None` where there is none.
+    pub models: Option<RunModels>,
     /// Further files: path in the run (with `/`, e.g. `figures/two-photon.svg`) and contents.
     pub further: Vec<(String, Vec<u8>)>,
 }
@@ -89,7 +98,13 @@ impl RunContents {
         if !self.responses.is_empty() {
             staging.write(RESPONSES_FILE, |out| response_table::write(out, &self.responses))?;
         }
-        staging.write(SUMMARY_FILE, |out| write_summary(out, &self.templates, &self.record.folds))?;
+        staging.write(SUMMARY_FILE, |out| write_summary(out, &self.templates, &self.record.folds, &self.fitted))?;
+        if let Some(models) = &self.models {
+            let text = model_file::to_json(models, &self.record.study)
+                .map_err(|error| TargetError::from_json(MODEL_FILE, error))?;
+            staging.write(MODEL_FILE, |out| out.write_all(&text))?;
+            staging.write(CLOSURE_FILE, |out| closure_table::write(out, &models.categories))?;
+        }
         for (name, bytes) in &self.further {
             staging.write(name, |out| out.write_all(bytes))?;
         }
@@ -138,9 +153,68 @@ pub fn write_templates<'a>(out: impl Write, templates: impl Iterator<Item = &'a 
     csv.flush()
 }
 
-fn write_summary(out: impl Write, templates: &[LabelledTemplate], folds: &[FoldSummary]) -> io::Result<()> {
+/// Parameters of the shapes, as they are named there, and their units.
+const SHAPE_PARAMETERS: [(&str, &str); 10] = [
+    ("bias", "_gev"),
+    ("sigma", "_gev"),
+    ("sigma_low", "_gev"),
+    ("sigma_high", "_gev"),
+    ("alpha_low", ""),
+    ("n_low", ""),
+    ("alpha_high", ""),
+    ("n_high", ""),
+    ("k_low", ""),
+    ("k_high", ""),
+];
+
+/// What the misfit of the shape does.
+const MISFIT_COLUMNS: [&str; 6] = [
+    "shape_cdf_difference",
+    "shape_converged",
+    "mass_bias_mev",
+    "mass_bias_left_out_mev",
+    "mass_error_of_one_event_mev",
+    "events_at_half_error",
+];
+
+fn shape_columns() -> Vec<String> {
+    let parameters = SHAPE_PARAMETERS
+        .iter()
+        .flat_map(|(name, unit)| [format!("shape_{name}{unit}"), format!("shape_{name}{unit}_error")]);
+    let misfit = MISFIT_COLUMNS.iter().map(|name| (*name).to_owned());
+    std::iter::once("shape".to_owned()).chain(parameters).chain(misfit).collect()
+}
+
+/// The cells of [`shape_columns`]; empty where no shape was fitted.
+fn shape_cells(fitted: Option<&Fitted>) -> Vec<String> {
+    let Some(fitted) = fitted else { return vec![String::new(); shape_columns().len()] };
+    let response = &fitted.response;
+    let (parameters, errors) = (response.parameters(), response.errors());
+    let mut cells = vec![response.shape.name().to_owned()];
+    for (name, _) in SHAPE_PARAMETERS {
+        let place = parameters.iter().position(|parameter: &Parameter| parameter.name == name);
+        cells.push(shortest_or_empty(place.map(|k| parameters[k].value)));
+        cells.push(shortest_or_empty(place.zip(errors.as_ref()).and_then(|(k, errors)| errors.get(k).copied())));
+    }
+    cells.push(shortest(response.largest_cdf_difference));
+    cells.push(response.converged().to_string());
+    let bias = fitted.bias.as_ref();
+    cells.push(shortest_or_empty(bias.map(|b| b.bias_mev)));
+    cells.push(shortest_or_empty(bias.and_then(|b| b.bias_left_out_mev)));
+    cells.push(shortest_or_empty(bias.map(|b| b.error_of_one_event_mev)));
+    let events = bias.map(|b| b.events_at_half_error()).filter(|events| events.is_finite());
+    cells.push(shortest_or_empty(events));
+    cells
+}
+
+fn write_summary(
+    out: impl Write,
+    templates: &[LabelledTemplate],
+    folds: &[FoldSummary],
+    fitted: &[Fitted],
+) -> io::Result<()> {
     let mut csv = csv::Writer::from_writer(out);
-    csv.write_record(SUMMARY_COLUMNS)?;
+    csv.write_record(SUMMARY_COLUMNS.iter().map(|name| (*name).to_owned()).chain(shape_columns()))?;
     for labelled in templates {
         let t = &labelled.template;
         let w = t.widths().map_err(|error| refuse(labelled, &error.to_string()))?;
@@ -176,6 +250,13 @@ fn write_summary(out: impl Write, templates: &[LabelledTemplate], folds: &[FoldS
         row.push(shortest_or_empty(fold.and_then(|f| f.events_effective)));
         let list = fold.filter(|f| f.events_used.is_some());
         row.push(list.map(|f| skipped(f).to_string()).unwrap_or_default());
+        let own = fitted.iter().find(|fitted| {
+            labelled.shift == NOMINAL
+                && fitted.channel == labelled.channel
+                && fitted.category == labelled.category
+                && fitted.response.mass_gev == labelled.mass_gev
+        });
+        row.extend(shape_cells(own));
         csv.write_record(&row)?;
     }
     csv.flush()

@@ -75,6 +75,10 @@ pub(super) fn digest(path: &Path) -> Result<FileDigest, String> {
         Unreadable::Access(message) => message,
         Unreadable::Content(problem) => problem.message,
     })?;
+    // It is read more than once, and must end.
+    if !file.metadata().map_err(failed)?.is_file() {
+        return Err(format!("{} is a device or a pipe; name a file", path.display()));
+    }
     let mut sha = Sha256::new();
     let mut buffer = vec![0; 1 << 16];
     loop {

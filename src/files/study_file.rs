@@ -2,7 +2,7 @@
 
 use std::path::Path;
 
-use super::domain::{INSIDE_UNIT, SHARE};
+use super::domain::{INSIDE_UNIT, POSITIVE, SHARE};
 use super::reader::{Item, Section};
 use super::resonance_table::{self, OtherFiles, file_name};
 use super::source::{InputText, Sheet, Unreadable, read_text};
@@ -14,6 +14,7 @@ use crate::process::{EventSource, Study};
 const SEED: u64 = 1;
 const PRECISION: f64 = 1e-4;
 const MAX_POINTS: u64 = 1 << 24;
+const EXPECTED_EVENTS: f64 = 1e4;
 const FEWEST_POINTS: u64 = 4096;
 /// The largest number that TOML can write.
 const LARGEST_WHOLE: u64 = i64::MAX as u64;
@@ -77,6 +78,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
     let max_points = root.whole_or("max_points", (FEWEST_POINTS, LARGEST_WHOLE), MAX_POINTS);
 
     let prune_shifts_below = root.number_or("prune_shifts_below", &SHARE, 0.0);
+    let expected_events = root.number_or("expected_events", &POSITIVE, EXPECTED_EVENTS);
 
     let resonance_section = root.required("resonance", "the table [resonance]").and_then(|item| item.section());
     let masses_line = resonance_section.as_ref().map_or(1, |section| section.line_of("masses_gev"));
@@ -105,6 +107,7 @@ fn study(mut root: Section<'_>, files: &mut Files) -> Option<Study> {
         precision,
         max_points,
         prune_shifts_below,
+        expected_events,
         resonance: resonance?,
         channels: channels.into_iter().map(|placed| placed.channel).collect(),
     })

@@ -41,6 +41,12 @@ pub enum Warning {
     /// A shape of nothing.
     #[error("there is no background, so {0} is not determined")]
     Empty(String),
+    /// A background that is compatible with none: its events, and their error where it is known.
+    #[error(
+        "the background of {0:.1}{err} events is compatible with none, so its shape is not determined; fix its shape or leave it out",
+        err = .1.map_or_else(String::new, |e| format!(" ± {e:.1}"))
+    )]
+    FaintBackground(f64, Option<f64>),
     /// No positive second derivatives.
     #[error(
         "the second derivatives at the minimum are not positive; no errors are given: the data do not determine all free parameters"
@@ -74,7 +80,7 @@ pub struct FitOutcome {
     pub parameters: Vec<Fitted>,
     /// Names of the parameters that the covariance is about.
     pub covariant: Vec<String>,
-    /// Covariance of these, where the second derivatives are positive.
+    /// Covariance of these, where the fit converged and the second derivatives are positive.
     pub covariance: Option<DMatrix<f64>>,
     /// `-ln L` at the minimum (see the module for what constants it leaves out).
     pub negative_log_likelihood: f64,

@@ -24,6 +24,8 @@ const MANY: usize = 1 << 17;
 const THIN: usize = 64;
 /// Below this part of a line shape in the window the fit says so.
 const SMALL_WINDOW: f64 = 0.1;
+/// With fewer errors than this between its events and 0 a background counts as compatible with none.
+const FAINT: f64 = 2.0;
 /// Below this probability of the chi-square the fit says so: 4 standard deviations.
 const BAD: f64 = 6e-5;
 
@@ -212,7 +214,9 @@ fn finish(
         slope && values[k - 1] == 0.0
     };
     let places: Vec<usize> = coordinates.free.iter().copied().filter(|&k| !at_bound(k) && !empty(k)).collect();
-    let covariance = covariance(objective, &coordinates, &values, &places);
+    // Away from the minimum second derivatives are no measure of errors.
+    let converged = ended.stop == Stop::Converged;
+    let covariance = if converged { covariance(objective, &coordinates, &values, &places) } else { None };
     let error = |k: usize| {
         let place = places.iter().position(|&p| p == k)?;
         covariance.as_ref().map(|c| c[(place, place)].sqrt())
@@ -231,7 +235,7 @@ fn finish(
     warnings.extend(
         (0..values.len()).filter(|&k| settled[k].free && empty(k)).map(|k| Warning::Empty(settled[k].name.clone())),
     );
-    warnings.extend(warnings_of(&parameters, covariance.is_some() || places.is_empty()));
+    warnings.extend(warnings_of(&parameters, covariance.is_some() || places.is_empty() || !converged));
     let window_probability = model.at(&values).map_or(f64::NAN, |p| p.window_probability);
     if window_probability < SMALL_WINDOW {
         warnings.push(Warning::SmallWindow(window_probability));
@@ -255,6 +259,18 @@ fn finish(
         Data::Masses(masses) => (masses.gev().len(), masses.total()),
         Data::Histogram(histogram) => (histogram.bins().len(), histogram.total()),
     };
+    if let (Some(kind), Some((events, error))) = (model.background, background_events) {
+        let shape = &settled[model.background_start()..];
+        let shape = if kind == super::Background::Exponential { &shape[1..] } else { shape };
+        // One free coefficient of a polynomial is its yield.
+        let least = if kind == super::Background::Exponential { 1 } else { 2 };
+        let shaped = shape.iter().filter(|s| s.free).count() >= least;
+        let told = warnings.iter().any(|w| matches!(w, Warning::Empty(_)));
+        // Without second derivatives an error is at most about that of all events.
+        if converged && shaped && !told && events <= FAINT * error.unwrap_or_else(|| total.abs().sqrt()) {
+            warnings.push(Warning::FaintBackground(events, error));
+        }
+    }
     Ok(FitOutcome {
         covariant: places.iter().map(|&k| settled[k].name.clone()).collect(),
         parameters,

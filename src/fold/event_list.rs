@@ -69,7 +69,7 @@ pub(super) fn read(
     list: &EventList,
     selectors: &[Selector],
     progress: &(dyn Fn(Progress) + Sync),
-    mut consume: impl FnMut(usize, Vec<Listed>),
+    mut consume: impl FnMut(usize, Vec<Listed>) + Send,
 ) -> Result<(Vec<Selection>, Report), FoldError> {
     let mut file = EventFile::open(&list.path, &Options { weight: list.weight.clone() })?;
     let mut selections = vec![Selection::default(); selectors.len()];

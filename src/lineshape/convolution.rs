@@ -5,7 +5,7 @@
 //! pole of any width is a smooth peak of width 1; panels are split at the joins and along the core of the resolution.
 
 use super::half::{SideKernel, Tail, ln_raw};
-use super::true_mass::{NaturalKernel, TrueMass};
+use super::true_mass::{Kind, NaturalKernel, TrueMass};
 use super::{Resolution, Shape};
 use crate::numerics::kernel;
 use crate::numerics::quadrature::{Integral, NODES, ROOM, integrate};
@@ -13,8 +13,8 @@ use crate::numerics::quadrature::{Integral, NODES, ROOM, integrate};
 /// Relative accuracy asked of the quadrature of a density; its error estimate is pessimistic.
 const TOLERANCE: f64 = 1e-11;
 /// Components of a gradient: value, width, power, slope in x, then the resolution.
-const RESOLUTION_AT: usize = 4;
-const COMPONENTS: usize = RESOLUTION_AT + super::resolution::MAX_PARAMETERS;
+pub(super) const RESOLUTION_AT: usize = 4;
+pub(super) const COMPONENTS: usize = RESOLUTION_AT + super::resolution::MAX_PARAMETERS;
 
 /// A value with its derivatives: in the natural parameters (mass, width, power) and in those of the resolution.
 #[derive(Clone, Copy, Debug, Default)]
@@ -151,7 +151,8 @@ impl Convolution<'_> {
         let offset = self.resolution.ln_pdf(u) + libm::log(stretch);
         let mut breaks = self.breaks(x);
         // What remains falls within the distance in which the Gaussian falls by a factor e.
-        let reach = self.resolution.sigmas().0.powi(2) / (x - nearest).abs().max(1e-300);
+        let sigma = self.resolution.sigmas().0;
+        let reach = sigma * sigma / (x - nearest).abs().max(1e-300);
         if lowest.is_finite() {
             breaks.extend([1.0, 5.0, 40.0].map(|f| self.truth.level(lowest + f * reach - self.truth.centre)));
             breaks.sort_by(f64::total_cmp);
@@ -230,23 +231,11 @@ impl Convolution<'_> {
 
     /// The derivative in the mass. When x, mass, width, bias and sigma are all scaled alike, a density falls by that
     /// scale and a probability stays: `x f' + M ∂_M f + Γ ∂_Γ f + Σ ... = degree`.
-    fn complete(&self, x: f64, value: f64, slope: f64, degree: f64, parts: &[f64; COMPONENTS]) -> Gradient {
+    pub(super) fn complete(&self, x: f64, value: f64, slope: f64, degree: f64, parts: &[f64; COMPONENTS]) -> Gradient {
         let mut resolution = [0.0; super::resolution::MAX_PARAMETERS];
         resolution.copy_from_slice(&parts[RESOLUTION_AT..]);
         let mass = self.by_mass(x, slope, degree, parts[1], &resolution);
         Gradient { value, mass, width: parts[1], power: parts[2], resolution }
-    }
-
-    /// A gradient of the density of a constant resolution, with the derivative in the mass worked out.
-    pub(super) fn with_mass(
-        &self,
-        x: f64,
-        value: f64,
-        width: f64,
-        resolution: [f64; super::resolution::MAX_PARAMETERS],
-    ) -> Gradient {
-        let mass = self.by_mass(x, -resolution[0], -value, width, &resolution);
-        Gradient { value, mass, width, power: 0.0, resolution }
     }
 
     fn by_mass(
@@ -318,19 +307,20 @@ crate::wide! {
 #[inline(always)]
 fn density_panel<const POWER: bool>(s: &[f64; ROOM], out: &mut [f64; ROOM], setup: &PanelSetup) {
     let n = setup.natural;
+    let (poles, squared) = (n.kind != Kind::BreitWigner, n.kind == Kind::RunningWidth);
     let mut d = [0.0; ROOM];
     for i in 0..ROOM {
         let e = 0.5 * kernel::exp(s[i]);
         let (sinh, cosh) = (e - 0.25 / e, e + 0.25 / e);
         d[i] = n.half * sinh;
         // Breit-Wigner: (1/π) / cosh(s) per ds.
-        out[i] = if n.poles { n.half * cosh } else { n.strength / cosh };
+        out[i] = if poles { n.half * cosh } else { n.strength / cosh };
     }
-    if n.poles {
+    if poles {
         for i in 0..ROOM {
             let (t, b) = (n.centre + d[i], n.half);
             let mirrored = (t + n.centre) * (t + n.centre) + b * b;
-            let numerator = if n.squared { n.strength * t * t } else { n.strength };
+            let numerator = if squared { n.strength * t * t } else { n.strength };
             let density = numerator / ((d[i] * d[i] + b * b) * mirrored);
             out[i] *= if t > 0.0 { density } else { 0.0 };
         }

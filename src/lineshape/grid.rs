@@ -2,8 +2,8 @@
 //!
 //! A panel holds the density and, for fits, its gradient as Chebyshev series of degree 15, interpolated at the roots of
 //! T16 from the reference path. It is halved until the last coefficients of the density are below 1e-11 of the smallest
-//! density met in it (or 1e-16 of the largest of all). What remains is below [`LineShape::GRID_ERROR`]; the tests compare
-//! with the reference path.
+//! density met in it (or 1e-16 of the largest of all), and the series agrees at both ends. What remains is below [`LineShape::GRID_ERROR`]; the tests compare
+//! with the point by point path. Probabilities are integrals of the series.
 
 use super::LineShape;
 
@@ -20,6 +20,8 @@ const BLOCK: usize = 2048;
 /// Tolerances: of the density, of its gradient (relative to the largest in the panel).
 const DENSITY_TOLERANCE: f64 = 1e-11;
 const GRADIENT_TOLERANCE: f64 = 1e-8;
+/// Relative difference of density and series at the ends of a panel, where a series is worst.
+const END_TOLERANCE: f64 = 1e-10;
 
 /// See the module.
 pub(super) struct Grid {
@@ -101,6 +103,13 @@ impl Grid {
                     let row = &values[c * ORDER..(c + 1) * ORDER];
                     let largest = row.iter().map(|v| v.abs()).fold(0.0, f64::max);
                     rest(c) <= GRADIENT_TOLERANCE * largest
+                });
+            // The nodes stop short of the ends; something steep may hide there.
+            let fine = fine
+                && [(a, -1.0), (b, 1.0)].into_iter().all(|(end, sign)| {
+                    evaluate(end, &mut point);
+                    let sum = (0..ORDER).rev().fold(0.0, |sum, k| series[k] + sign * sum);
+                    (sum - point[0]).abs() <= (END_TOLERANCE * point[0]).max(5e-16 * top)
                 });
             if fine || depth >= DEPTH {
                 if !fine {
@@ -192,6 +201,53 @@ impl Grid {
             clenshaw(self.series(panel, 0), local, &mut buffer);
             for (&place, value) in place.iter().zip(&buffer) {
                 out[place as usize] = *value;
+            }
+        });
+    }
+
+    /// The lowest point.
+    pub(super) fn low(&self) -> f64 {
+        self.edges[0]
+    }
+
+    /// The highest point.
+    pub(super) fn high(&self) -> f64 {
+        self.edges[self.edges.len() - 1]
+    }
+
+    /// Probabilities below each point, or above it, from the probability `beyond` the first end of the grid: the density
+    /// integrated from there, so that every term is positive.
+    pub(super) fn probability(&self, beyond: f64, m: &[f64], out: &mut [f64], above: bool) {
+        let m = &m[..m.len().min(out.len())];
+        let panels = self.edges.len() - 1;
+        let mut integrals = vec![[0.0; ORDER]; panels];
+        let mut reached = beyond;
+        for i in 0..panels {
+            let panel = if above { panels - 1 - i } else { i };
+            let half = 0.5 * (self.edges[panel + 1] - self.edges[panel]);
+            let (density, integral) = (self.series(panel, 0), &mut integrals[panel]);
+            // The integral of T_k is T_(k+1)/(2k + 2) - T_(k-1)/(2k - 2); the coefficient that has no place is below the
+            // tolerance.
+            for k in 1..ORDER {
+                let before = if k == 1 { 2.0 * density[0] } else { density[k - 1] };
+                let after = density.get(k + 1).copied().unwrap_or(0.0);
+                integral[k] = half * (before - after) / (2 * k) as f64;
+            }
+            let low_end: f64 = integral.iter().enumerate().map(|(k, c)| if k % 2 == 0 { *c } else { -c }).sum();
+            let high_end: f64 = integral.iter().sum();
+            if above {
+                integral.iter_mut().for_each(|c| *c = -*c);
+                integral[0] = reached + high_end;
+            } else {
+                integral[0] = reached - low_end;
+            }
+            reached += high_end - low_end;
+        }
+        let mut buffer = [0.0; BLOCK];
+        self.for_each_panel(m, |panel, place, local| {
+            clenshaw(&integrals[panel], local, &mut buffer);
+            for (&place, value) in place.iter().zip(&buffer) {
+                out[place as usize] = value.clamp(0.0, 1.0);
             }
         });
     }

@@ -100,6 +100,23 @@ impl PolePair {
         }
     }
 
+    /// Densities of a slice.
+    pub(crate) fn pdf_slice(&self, m: &[f64], out: &mut [f64]) {
+        let (strength, centre, spread) = self.constants();
+        match self.numerator {
+            Numerator::Constant => constant_slice(m, out, strength, centre, spread),
+            Numerator::MassSquared => squared_slice(m, out, strength, centre, spread),
+        }
+    }
+
+    /// Where the density is highest: M, or `M (1 + Γ²/M²)^(-1/4)`.
+    pub(crate) fn peak(&self) -> f64 {
+        match self.numerator {
+            Numerator::Constant => self.mass,
+            Numerator::MassSquared => self.size.sqrt(),
+        }
+    }
+
     /// m - M_f.
     fn beyond_fixed(&self, m: f64) -> f64 {
         (m - self.mass) + self.offset
@@ -324,6 +341,26 @@ impl PolePair {
     pub(crate) fn variance(&self) -> Option<f64> {
         // The mean of m² is |a|² = M sqrt(M² + Γ²).
         self.mean().map(|mean| self.size - mean * mean)
+    }
+}
+
+crate::wide! {
+    fn constant_slice(m: &[f64], out: &mut [f64], strength: f64, centre: f64, spread: f64) {
+        for (value, &m) in out.iter_mut().zip(m) {
+            let d = (m - centre) * (m + centre);
+            let density = strength / (d * d + spread);
+            *value = if m > 0.0 { density } else { 0.0 };
+        }
+    }
+}
+
+crate::wide! {
+    fn squared_slice(m: &[f64], out: &mut [f64], strength: f64, centre: f64, spread: f64) {
+        for (value, &m) in out.iter_mut().zip(m) {
+            let d = (m - centre) * (m + centre) / m;
+            let density = strength / (d * d + spread / (m * m));
+            *value = if m > 0.0 { density } else { 0.0 };
+        }
     }
 }
 

@@ -1,214 +1,315 @@
 //! Natural ⊗ resolution on nodes that all points of a slice share.
 //!
-//! `f(x) = Σ_j W_j q(x - u_j)`: Gauss-Legendre panels over the resolution, fine enough for the natural shape wherever its
-//! peak can fall for the points of the slice, and growing with the distance elsewhere. The weights `W_j` hold the
-//! resolution (and its derivatives) once for all points. It serves where the natural width is not far below the window.
+//! With u the argument of the resolution R, `f(x) = ∫ R(u) q(x - u) du` for a constant resolution, and
+//! `f(x) = ∫ R(u) q(x v) v du` with `v = M/(M + u)` for one that grows with the true mass. Gauss-Legendre panels over u
+//! ([`super::panels`]) are fine enough for R and, wherever its poles can fall for the points of the slice, for q. The
+//! weights `W_j`, which hold R and its derivatives, are worked out once; each point then costs a sum of rational terms.
+//!
+//! Where the true mass ends (at 0, or where a falloff cuts it) is an end of the integral that moves with x. Panels inside
+//! are summed whole; the one in which the end falls is integrated up to it with nodes of its own. Every term is positive,
+//! so no digits are lost in the tails. It serves where the natural width is not far below the window.
 
-use std::sync::OnceLock;
-
-use super::convolution::{Convolution, Gradient};
-use super::half::Tail;
+use super::Shape;
+use super::convolution::{COMPONENTS, Convolution, Gradient, RESOLUTION_AT};
+use super::half::{SideKernel, ln_raw};
+use super::panels::{self, Window};
 use super::resolution::MAX_PARAMETERS;
-use super::true_mass::TrueMass;
-use super::{Resolution, Shape};
+use super::true_mass::{Kind, NaturalKernel};
+use crate::numerics::kernel;
+use crate::numerics::quadrature::{ORDER, gauss_legendre};
 
-/// Nodes per panel.
-const ORDER: usize = 16;
-/// Beyond this many nodes the adaptive path is no slower.
-const MAX_NODES: usize = 6000;
+/// What is left of a panel's probability beside the sum of the others, to be worth its own nodes.
+const NEGLIGIBLE: f64 = 1e-17;
 
 /// See the module.
 pub(super) struct SharedNodes {
-    u: Vec<f64>,
+    /// Rising limits of the panels in u.
+    ends: Vec<f64>,
+    /// Where q is taken: u itself, or v of a proportional resolution.
+    place: Vec<f64>,
     /// Rows of weights: the resolution, then its derivatives in its parameters.
     rows: Vec<Vec<f64>>,
+    natural: NaturalKernel,
+    low: SideKernel,
+    high: SideKernel,
+    bias: f64,
+    inverse_norm: f64,
+    proportional: bool,
+    /// Range of the true mass.
+    truth: (f64, f64),
+    mass: f64,
+    /// The points that it serves.
+    window: Window,
 }
 
 impl SharedNodes {
     /// Nodes for points between `low` and `high`; `None` where they would not serve.
     pub(super) fn new(convolution: &Convolution<'_>, low: f64, high: f64, with_gradient: bool) -> Option<Self> {
         let (truth, resolution) = (convolution.truth, convolution.resolution);
-        if convolution.proportional || truth.cut.is_some() || truth.power.is_some() {
-            return None;
-        }
-        let range = (high - low) + truth.half + resolution.sigmas().0 + resolution.sigmas().1;
-        if truth.natural.poles().is_some() {
-            // The shape lives on t > 0, but is even and smooth across 0, as the rule takes it. That is right only if
-            // the resolution does not reach 0: below the error asked for, beside a lower bound of the density.
-            let least = truth.half / (std::f64::consts::PI * range * range);
-            if !(low > 0.0 && resolution.pdf(low) < 1e-12 * least * truth.half / low) {
-                return None;
-            }
-        }
-        // Where the peak of the natural shape falls, in u.
-        let window = (low - truth.centre, high - truth.centre);
-        let breaks = breaks(resolution, truth.half, window, range)?;
-        let panels = breaks.len().checked_sub(1)?;
-        if panels * ORDER > MAX_NODES {
-            return None;
-        }
+        let window = Window::new(convolution, low, high)?;
+        let ends = panels::limits(convolution, &window)?;
+        let size = (ends.len() - 1) * ORDER;
         let count = if with_gradient { resolution.parameter_count() } else { 0 };
-        let mut nodes = SharedNodes { u: Vec::with_capacity(panels * ORDER), rows: vec![vec![]; 1 + count] };
+        let (low_sigma, high_sigma) = resolution.sigmas();
+        let mut nodes = SharedNodes {
+            ends,
+            place: Vec::with_capacity(size),
+            rows: vec![Vec::with_capacity(size); 1 + count],
+            natural: truth.kernel(),
+            low: SideKernel::new(low_sigma, resolution.low),
+            high: SideKernel::new(high_sigma, resolution.high),
+            bias: resolution.bias(),
+            inverse_norm: 1.0 / resolution.norm(),
+            proportional: convolution.proportional,
+            truth: (truth.lowest(), truth.highest()),
+            mass: truth.natural.mass(),
+            window,
+        };
         let mut own = [0.0; MAX_PARAMETERS];
-        for pair in breaks.windows(2) {
-            let (centre, half) = (0.5 * (pair[0] + pair[1]), 0.5 * (pair[1] - pair[0]));
-            for &(node, weight) in legendre() {
-                let u = centre + half * node;
-                nodes.u.push(u);
-                let weight = half * weight;
-                if with_gradient {
-                    let value = weight * libm::exp(resolution.ln_pdf_gradient(u, &mut own[..count]));
+        for panel in 0..nodes.ends.len() - 1 {
+            let (u, weight) = nodes.panel(nodes.ends[panel], nodes.ends[panel + 1]);
+            if with_gradient {
+                for (u, weight) in u.iter().zip(&weight) {
+                    let value = weight * libm::exp(resolution.ln_pdf_gradient(*u, &mut own[..count]));
                     nodes.rows[0].push(value);
                     for (row, g) in nodes.rows[1..].iter_mut().zip(&own) {
                         row.push(value * g);
                     }
-                } else {
-                    nodes.rows[0].push(weight * resolution.pdf(u));
                 }
+            } else {
+                let mut density = [0.0; ORDER];
+                resolution.pdf_slice(&u, &mut density);
+                nodes.rows[0].extend(density.iter().zip(&weight).map(|(d, w)| d * w));
             }
+            let place = u.map(|u| if nodes.proportional { nodes.shrink(u) } else { u });
+            nodes.place.extend_from_slice(&place);
         }
         Some(nodes)
     }
 
-    /// Density at x.
-    pub(super) fn pdf(&self, truth: &TrueMass, x: f64) -> f64 {
-        let (strength, squared, mirrored) = constants(truth);
-        sum(&self.u, &self.rows[0], x - truth.centre, truth.half, strength, squared, mirrored)
+    /// Whether these nodes serve the point x.
+    pub(super) fn serve(&self, x: f64) -> bool {
+        x >= self.window.low && x <= self.window.high
     }
 
-    /// Density at x with its derivatives, but for that in the mass of a relativistic shape, which `complete` adds.
+    /// `v = M/(M + u)`, true over measured mass.
+    fn shrink(&self, u: f64) -> f64 {
+        self.mass / (self.mass + u)
+    }
+
+    /// Nodes u between two limits, and their weights with the factor v of a proportional resolution.
+    fn panel(&self, from: f64, to: f64) -> ([f64; ORDER], [f64; ORDER]) {
+        let (centre, half) = (0.5 * (from + to), 0.5 * (to - from));
+        let u = gauss_legendre().map(|(node, _)| centre + half * node);
+        let mut weight = gauss_legendre().map(|(_, weight)| half * weight);
+        if self.proportional {
+            weight.iter_mut().zip(&u).for_each(|(w, &u)| *w *= self.shrink(u));
+        }
+        (u, weight)
+    }
+
+    /// Range of u in which the true mass exists at x.
+    fn range(&self, x: f64) -> (f64, f64) {
+        let (lowest, highest) = self.truth;
+        let at = |t: f64| if self.proportional { self.mass * (x / t) - self.mass } else { x - t };
+        let from = if highest.is_finite() { at(highest) } else { f64::NEG_INFINITY };
+        let to = if lowest.is_finite() && (lowest > 0.0 || !self.proportional) { at(lowest) } else { f64::INFINITY };
+        (from.max(self.ends[0]), to.min(self.ends[self.ends.len() - 1]))
+    }
+
+    /// Calls `whole` with the range of nodes of the panels inside the limits at x, then `part` with the limits of what is
+    /// left at either end.
+    fn cover(&self, x: f64, whole: &mut dyn FnMut(usize, usize), part: &mut dyn FnMut(f64, f64)) {
+        let (from, to) = self.range(x);
+        if !(to > from) {
+            return;
+        }
+        let first = self.ends.partition_point(|&end| end < from);
+        let last = self.ends.partition_point(|&end| end <= to) - 1;
+        if first > last {
+            return part(from, to);
+        }
+        whole(first * ORDER, last * ORDER);
+        if from < self.ends[first] {
+            part(from, self.ends[first]);
+        }
+        if to > self.ends[last] {
+            part(self.ends[last], to);
+        }
+    }
+
+    /// Density at x.
+    pub(super) fn pdf(&self, x: f64) -> f64 {
+        let total = std::cell::Cell::new(0.0);
+        let n = &self.natural;
+        self.cover(
+            x,
+            &mut |first, last| {
+                let (place, weights) = (&self.place[first..last], &self.rows[0][first..last]);
+                let sum = match (n.kind, self.proportional) {
+                    _ if n.power != 0.0 => sum_falling(place, weights, x, n, self.proportional),
+                    (Kind::BreitWigner, false) => sum_breit_wigner(place, weights, x, n),
+                    (Kind::Relativistic, false) => sum_relativistic(place, weights, x, n),
+                    (Kind::RunningWidth, false) => sum_running(place, weights, x, n),
+                    (Kind::BreitWigner, true) => sum_breit_wigner_proportional(place, weights, x, n),
+                    (Kind::Relativistic, true) => sum_relativistic_proportional(place, weights, x, n),
+                    (Kind::RunningWidth, true) => sum_running_proportional(place, weights, x, n),
+                };
+                total.set(n.amplitude * sum);
+            },
+            &mut |from, to| {
+                // The largest that it can be: all of the natural shape under the higher end of the resolution.
+                let nearest = self.bias.clamp(from, to);
+                let bound = kernel::exp(ln_raw::<true>(&self.low, &self.high, nearest - self.bias)) * self.inverse_norm;
+                if bound > NEGLIGIBLE * total.get() {
+                    let (u, mut weight) = self.panel(from, to);
+                    resolution_weights(&u, &mut weight, self);
+                    let sum = u.iter().zip(&weight).map(|(&u, w)| w * self.density(self.true_mass(x, u))).sum::<f64>();
+                    total.set(total.get() + sum);
+                }
+            },
+        );
+        total.get()
+    }
+
+    fn true_mass(&self, x: f64, u: f64) -> f64 {
+        if self.proportional { x * self.shrink(u) } else { x - u }
+    }
+
+    fn density(&self, t: f64) -> f64 {
+        let n = &self.natural;
+        let (numerator, denominator) = fraction(n.kind, n, t);
+        let falling = if n.power != 0.0 { falloff(n, t) } else { 1.0 };
+        n.amplitude * falling * numerator / denominator
+    }
+
+    /// Density at x with its derivatives.
     pub(super) fn gradient(&self, convolution: &Convolution<'_>, x: f64) -> Gradient {
         let truth = convolution.truth;
-        let mut natural = vec![0.0; self.u.len()];
-        let mut by_width = vec![0.0; self.u.len()];
-        for ((u, natural), by_width) in self.u.iter().zip(&mut natural).zip(&mut by_width) {
-            let t = x - u;
-            *natural = truth.pdf_everywhere(t);
-            *by_width = *natural * truth.ln_gradient(t)[0];
-        }
-        let dot = |a: &[f64], b: &[f64]| a.iter().zip(b).map(|(a, b)| a * b).sum::<f64>();
-        let mut resolution = [0.0; MAX_PARAMETERS];
-        for (slot, row) in resolution.iter_mut().zip(&self.rows[1..]) {
-            *slot = dot(row, &natural);
-        }
-        let value = self.pdf(truth, x);
-        convolution.with_mass(x, value, dot(&self.rows[0], &by_width), resolution)
-    }
-}
-
-/// Strength, whether m² stands in the numerator, and the centre of the mirrored pole (none for the Breit-Wigner).
-fn constants(truth: &TrueMass) -> (f64, bool, f64) {
-    let kernel = truth.kernel();
-    if kernel.poles {
-        (kernel.strength, kernel.squared, truth.centre)
-    } else {
-        (kernel.strength * kernel.half, false, f64::NAN)
-    }
-}
-
-/// Panel limits in u: joins, growth with the distance from the core and from the window.
-fn breaks(resolution: &Resolution, half: f64, window: (f64, f64), range: f64) -> Option<Vec<f64>> {
-    let mut list = vec![resolution.bias()];
-    for (tail, sigma, sign) in
-        [(resolution.low, resolution.sigmas().0, -1.0), (resolution.high, resolution.sigmas().1, 1.0)]
-    {
-        let join = tail.join();
-        let mut t = 0.0;
-        loop {
-            // How far the resolution is smooth from here, in sigma.
-            let smooth = if t < join {
-                1.5_f64.min(join - t)
-            } else {
-                match tail {
-                    Tail::None => 1.5,
-                    Tail::Power { alpha, n } => {
-                        let distance = n / alpha + (t - join);
-                        distance.min(8.0 * distance / n)
-                    }
-                    Tail::Exponential { k } => 8.0 / k,
+        let count = convolution.resolution.parameter_count();
+        let parts = std::cell::RefCell::new([0.0; COMPONENTS]);
+        let add = |t: f64, value: f64, by: &dyn Fn(usize) -> f64| {
+            let mut parts = parts.borrow_mut();
+            let stretch = if self.proportional { self.mass / t } else { 1.0 };
+            let [width, power] = truth.ln_gradient(t);
+            parts[0] += value;
+            parts[1] += value * width;
+            parts[2] += value * power;
+            parts[3] -= by(0) * stretch;
+            for k in 0..count {
+                parts[RESOLUTION_AT + k] += by(k);
+            }
+        };
+        self.cover(
+            x,
+            &mut |first, last| {
+                for i in first..last {
+                    let t = if self.proportional { x * self.place[i] } else { x - self.place[i] };
+                    let q = self.density(t);
+                    add(t, self.rows[0][i] * q, &|k| self.rows[1 + k][i] * q);
                 }
-            };
-            let u = resolution.bias() + sign * sigma * t;
-            let outside = if sign > 0.0 { (window.0 - u).max(u - window.1) } else { (u - window.1).max(window.0 - u) };
-            // A panel that heads for the window must stop before it; one that leaves it may grow with the distance.
-            let heading = if sign > 0.0 { u < window.0 } else { u > window.1 };
-            let room = if outside <= 0.0 {
-                2.0 * half
-            } else if heading {
-                (0.5 * outside).max(2.0 * half)
-            } else {
-                outside.max(2.0 * half)
-            };
-            let mut next = t + smooth.min(room / sigma);
-            if t < join && next > join {
-                next = join;
+            },
+            &mut |from, to| {
+                let (u, weight) = self.panel(from, to);
+                let mut own = [0.0; MAX_PARAMETERS];
+                for (&u, weight) in u.iter().zip(&weight) {
+                    let t = self.true_mass(x, u);
+                    let r = libm::exp(convolution.resolution.ln_pdf_gradient(u, &mut own[..count]));
+                    let value = weight * r * self.density(t);
+                    add(t, value, &|k| value * own[k]);
+                }
+            },
+        );
+        let parts = parts.into_inner();
+        let value = self.pdf(x);
+        convolution.complete(x, value, parts[3], -value, &parts)
+    }
+}
+
+/// The natural density at t over its strength, as a fraction.
+#[inline(always)]
+fn fraction(kind: Kind, n: &NaturalKernel, t: f64) -> (f64, f64) {
+    let d = t - n.fixed_mass;
+    let (numerator, denominator) = match kind {
+        Kind::BreitWigner => (1.0, d * d + n.spread),
+        Kind::Relativistic | Kind::RunningWidth => {
+            let product = d * (t + n.fixed_mass);
+            (if kind == Kind::RunningWidth { t * t } else { 1.0 }, product * product + n.spread)
+        }
+    };
+    (numerator, denominator)
+}
+
+/// The production falloff at t.
+#[inline(always)]
+fn falloff(n: &NaturalKernel, t: f64) -> f64 {
+    let ratio = t * n.inverse_mass;
+    let ratio = if ratio > f64::MIN_POSITIVE { ratio } else { f64::MIN_POSITIVE };
+    kernel::exp(-n.power * kernel::ln(ratio))
+}
+
+/// Sum of weights times densities over the strength; four lanes side by side, so that the additions vectorise, and always
+/// in this order. Two terms share one division.
+#[inline(always)]
+fn sum<const FALLING: bool>(
+    kind: Kind,
+    proportional: bool,
+    place: &[f64],
+    weights: &[f64],
+    x: f64,
+    n: &NaturalKernel,
+) -> f64 {
+    let n = *n;
+    let mut lanes = [0.0; 4];
+    for (place, w) in place.chunks_exact(8).zip(weights.chunks_exact(8)) {
+        for i in 0..4 {
+            let (j, k) = (i, i + 4);
+            let (s, t) = if proportional { (x * place[j], x * place[k]) } else { (x - place[j], x - place[k]) };
+            let (a, b) = fraction(kind, &n, s);
+            let (c, d) = fraction(kind, &n, t);
+            let (mut a, mut c) = (w[j] * a, w[k] * c);
+            if FALLING {
+                a *= falloff(&n, s);
+                c *= falloff(&n, t);
             }
-            if !(next > t) {
-                return None;
-            }
-            t = next;
-            let u = resolution.bias() + sign * sigma * t;
-            list.push(u);
-            if list.len() * ORDER > MAX_NODES {
-                return None;
-            }
-            // What is left out, beside the least density of the window.
-            let beyond = if sign > 0.0 { u - window.1 } else { window.0 - u };
-            let left = if sign > 0.0 { resolution.sf(u) } else { resolution.cdf(u) };
-            if beyond > 0.0 && left * (range / (beyond + range)).powi(2) < 1e-14 || left == 0.0 {
-                break;
-            }
+            lanes[i] += (a * d + c * b) / (b * d);
         }
     }
-    list.sort_by(f64::total_cmp);
-    Some(list)
+    let [a, b, c, d] = lanes;
+    (a + c) + (b + d)
+}
+
+/// A kernel with its choices made outside of the loop.
+macro_rules! sums {
+    ($($name:ident: $kind:ident, $proportional:literal;)*) => {
+        $(crate::wide! {
+            fn $name(place: &[f64], weights: &[f64], x: f64, n: &NaturalKernel) -> f64 {
+                sum::<false>(Kind::$kind, $proportional, place, weights, x, n)
+            }
+        })*
+    };
+}
+
+sums! {
+    sum_breit_wigner: BreitWigner, false;
+    sum_relativistic: Relativistic, false;
+    sum_running: RunningWidth, false;
+    sum_breit_wigner_proportional: BreitWigner, true;
+    sum_relativistic_proportional: Relativistic, true;
+    sum_running_proportional: RunningWidth, true;
 }
 
 crate::wide! {
-    fn sum(u: &[f64], weights: &[f64], x: f64, half: f64, strength: f64, squared: bool, mirrored: f64) -> f64 {
-        // Eight sums side by side, so that the additions vectorise; always in this order.
-        let mut lanes = [0.0; 8];
-        let square = half * half;
-        for (u, w) in u.chunks_exact(8).zip(weights.chunks_exact(8)) {
-            if mirrored.is_nan() {
-                for i in 0..8 {
-                    let d = x - u[i];
-                    lanes[i] += w[i] / (d * d + square);
-                }
-            } else {
-                for i in 0..8 {
-                    let d = x - u[i];
-                    let t = d + mirrored;
-                    let other = (t + mirrored) * (t + mirrored) + square;
-                    let numerator = if squared { t * t } else { 1.0 };
-                    lanes[i] += w[i] * numerator / ((d * d + square) * other);
-                }
-            }
-        }
-        let [a, b, c, d, e, f, g, h] = lanes;
-        strength * (((a + e) + (b + f)) + ((c + g) + (d + h)))
+    fn sum_falling(place: &[f64], weights: &[f64], x: f64, n: &NaturalKernel, proportional: bool) -> f64 {
+        sum::<true>(n.kind, proportional, place, weights, x, n)
     }
 }
 
-/// Nodes and weights of the Gauss-Legendre rule on [-1, 1], by Newton's method on the Legendre polynomial.
-fn legendre() -> &'static [(f64, f64); ORDER] {
-    static RULE: OnceLock<[(f64, f64); ORDER]> = OnceLock::new();
-    RULE.get_or_init(|| {
-        let mut rule = [(0.0, 0.0); ORDER];
-        for (i, slot) in rule.iter_mut().enumerate() {
-            let mut x = libm::cos(std::f64::consts::PI * (i as f64 + 0.75) / (ORDER as f64 + 0.5));
-            let mut slope = 1.0;
-            for _ in 0..8 {
-                let (mut p, mut before) = (x, 1.0);
-                for k in 2..=ORDER {
-                    let k = k as f64;
-                    (p, before) = (((2.0 * k - 1.0) * x * p - (k - 1.0) * before) / k, p);
-                }
-                slope = ORDER as f64 * (x * p - before) / (x * x - 1.0);
-                x -= p / slope;
-            }
-            *slot = (x, 2.0 / ((1.0 - x * x) * slope * slope));
+crate::wide! {
+    fn resolution_weights(u: &[f64; ORDER], weight: &mut [f64; ORDER], nodes: &SharedNodes) {
+        let (low, high, bias) = (nodes.low, nodes.high, nodes.bias);
+        for i in 0..ORDER {
+            weight[i] *= nodes.inverse_norm * kernel::exp(ln_raw::<true>(&low, &high, u[i] - bias));
         }
-        rule
-    })
+    }
 }

@@ -135,11 +135,9 @@ impl TrueMass {
         let by_width = match self.natural.poles() {
             Some(poles) => poles.ln_pdf_gradient(t)[2],
             None => {
-                let mut gradient = [0.0; 2];
-                if let Some(shape) = self.natural.shape() {
-                    shape.ln_pdf_gradient(t, &mut gradient);
-                }
-                gradient[1]
+                let d = t - self.centre;
+                let square = self.half * self.half;
+                0.5 / self.half * (d * d - square) / (d * d + square)
             }
         };
         let by_power = match self.power {
@@ -158,11 +156,6 @@ impl TrueMass {
         } else {
             self.pdf(t, t - self.centre)
         }
-    }
-
-    /// Density at t, continued as an even function below 0 for the shapes with poles.
-    pub(super) fn pdf_everywhere(&self, t: f64) -> f64 {
-        if self.natural.poles().is_some() { self.pdf_at(t.abs()) } else { self.pdf_at(t) }
     }
 
     /// Derivative of ln density in t.
@@ -270,18 +263,25 @@ impl TrueMass {
         Some(integral.value[0])
     }
 
-    /// Constants of the vector kernel: kind of numerator, strength, falloff power.
+    /// Constants of the vector kernels.
     pub(super) fn kernel(&self) -> NaturalKernel {
-        let (strength, squared, poles) = match self.natural.poles() {
-            Some(poles) => (poles.constants().0, poles.numerator == Numerator::MassSquared, true),
-            None => (std::f64::consts::FRAC_1_PI, false, false),
+        let (kind, strength, fixed_mass, spread) = match self.natural.poles() {
+            Some(poles) => {
+                let (strength, fixed_mass, spread) = poles.constants();
+                let squared = poles.numerator == Numerator::MassSquared;
+                (if squared { Kind::RunningWidth } else { Kind::Relativistic }, strength, fixed_mass, spread)
+            }
+            None => (Kind::BreitWigner, std::f64::consts::FRAC_1_PI, self.centre, self.half * self.half),
         };
+        let strength = strength / self.norm;
         NaturalKernel {
+            kind,
             centre: self.centre,
             half: self.half,
-            strength: strength / self.norm,
-            squared,
-            poles,
+            strength,
+            amplitude: if kind == Kind::BreitWigner { strength * self.half } else { strength },
+            fixed_mass,
+            spread,
             power: self.power.unwrap_or(0.0),
             inverse_mass: 1.0 / self.natural.mass(),
         }
@@ -305,14 +305,31 @@ impl TrueMass {
     }
 }
 
+/// The form of a natural density.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) enum Kind {
+    /// `amplitude/((t - M)² + spread)`, spread = Γ²/4.
+    BreitWigner,
+    /// `amplitude/((t² - M_f²)² + spread)`, spread = M_f² Γ_f².
+    Relativistic,
+    /// The same times t².
+    RunningWidth,
+}
+
 /// See [`TrueMass::kernel`].
 #[derive(Clone, Copy, Debug)]
 pub(super) struct NaturalKernel {
+    pub(super) kind: Kind,
+    /// The map `t = centre + half sinh(s)`.
     pub(super) centre: f64,
     pub(super) half: f64,
+    /// Factor of the density per ds (Breit-Wigner) or per dt.
     pub(super) strength: f64,
-    pub(super) squared: bool,
-    pub(super) poles: bool,
+    /// Factor of the density per dt.
+    pub(super) amplitude: f64,
+    /// M, or M_f of the poles.
+    pub(super) fixed_mass: f64,
+    pub(super) spread: f64,
     pub(super) power: f64,
     pub(super) inverse_mass: f64,
 }

@@ -30,7 +30,7 @@ pub(super) fn voigt_gradient(x: f64, sigma: f64, gamma: f64) -> [f64; 4] {
     let (re, im) = faddeeva(zx, zy);
     let z = Complex64::new(zx, zy);
     // w' = 2i/sqrt(π) - 2zw cancels far out, where its asymptotic series takes over.
-    let slope = if zx.hypot(zy) > 30.0 {
+    let slope = if libm::hypot(zx, zy) > 30.0 {
         let inverse = (z * z).inv();
         // w = i/(sqrt(π) z) (1 + 1/(2z²) + 3/(4z⁴) + 15/(8z⁶) + 105/(16z⁸) + 945/(32 z¹⁰)).
         let terms = [1.0, 1.5, 3.75, 13.125, 59.0625, 324.84375];

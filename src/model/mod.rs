@@ -8,6 +8,7 @@
 //! * [`closure`]: what each of these predicts for a mass point that it has not seen.
 //! * [`Anchor`]: a simulated sample as a mass point, and [`Agreement`]: how the folded templates agree with such samples.
 //! * [`MassBias`]: the misfit as a bias of a fitted mass.
+//! * [`CategoryModel`]: all of it for one channel and category, made by [`model_category`].
 //! * [`wide_template`]: templates of a resonance with a natural width.
 //!
 //! A resolution shape here is the distribution of the reconstructed mass less the mass point, for a resonance of no width;
@@ -17,6 +18,7 @@ mod acceptance;
 mod agreement;
 mod anchor;
 mod bias;
+mod category;
 mod closure;
 mod mass_model;
 mod natural;
@@ -31,6 +33,7 @@ pub use acceptance::YieldFactor;
 pub use agreement::{Agreement, AgreementError, AnchorComparison, agreement, compare_anchor};
 pub use anchor::{Anchor, AnchorError, BinnedSample, LEAST_ENTRIES, merge_points};
 pub use bias::{BiasError, MassBias, mass_bias};
+pub use category::{CategoryModel, Fitted, Method, Modelled, PredictError, Prediction, model_category};
 pub use closure::{
     Closure, ClosureError, ClosurePoint, Deviation, InterpolationError, closure, deviation, quantile_closure,
 };

@@ -2,7 +2,7 @@
 
 use nalgebra::{DMatrix, DVector};
 
-use super::shape::{KINDS, largest_cdf_difference, of_shape, parameter_link, prior, prototype, rising};
+use super::shape::{largest_cdf_difference, of_shape, parameter_link, prior, prototype, rising};
 use crate::fit::{Curve, CurveFit, CurvePoint, Curves, FitError, Link, Stop, positive_inverse};
 use crate::lineshape::widths::FWHM_PER_SIGMA;
 use crate::lineshape::{Parameter, Resolution, Shape, ShapeError};
@@ -211,7 +211,7 @@ pub fn fit_response(template: &Template, mass_gev: f64, choice: ShapeChoice) -> 
 
 /// The kind of shape with the smallest |ΔCDF| that fits better than `response` does, if there is one.
 pub fn better_shape(template: &Template, response: &Response) -> Option<Response> {
-    KINDS
+    ShapeChoice::ALL
         .into_iter()
         .filter(|kind| *kind != response.shape)
         .filter_map(|kind| fit_response(template, response.mass_gev, kind).ok())

@@ -5,15 +5,6 @@ use crate::lineshape::{Resolution, Shape, ShapeError};
 use crate::process::ShapeChoice;
 use crate::template::{Replicate, Template};
 
-/// Every kind of shape.
-pub(super) const KINDS: [ShapeChoice; 5] = [
-    ShapeChoice::Gaussian,
-    ShapeChoice::CrystalBall,
-    ShapeChoice::DoubleCrystalBall,
-    ShapeChoice::DoubleCrystalBallTwoSigmas,
-    ShapeChoice::GaussExp,
-];
-
 /// A shape of the kind that a channel asks for.
 ///
 /// # Errors

@@ -124,3 +124,29 @@ fn panel<const C: usize>(low: f64, high: f64, f: &mut impl FnMut(&[f64; ROOM], &
     }
     result
 }
+
+/// Nodes of a panel of [`gauss_legendre`].
+pub const ORDER: usize = 16;
+
+/// Nodes and weights of the 16-point Gauss-Legendre rule on [-1, 1], by Newton's method on the Legendre polynomial.
+pub fn gauss_legendre() -> &'static [(f64, f64); ORDER] {
+    static POINTS: std::sync::OnceLock<[(f64, f64); ORDER]> = std::sync::OnceLock::new();
+    POINTS.get_or_init(|| {
+        let mut rule = [(0.0, 0.0); ORDER];
+        for (i, slot) in rule.iter_mut().enumerate() {
+            let mut x = libm::cos(std::f64::consts::PI * (i as f64 + 0.75) / (ORDER as f64 + 0.5));
+            let mut slope = 1.0;
+            for _ in 0..8 {
+                let (mut p, mut before) = (x, 1.0);
+                for k in 2..=ORDER {
+                    let k = k as f64;
+                    (p, before) = (((2.0 * k - 1.0) * x * p - (k - 1.0) * before) / k, p);
+                }
+                slope = ORDER as f64 * (x * p - before) / (x * x - 1.0);
+                x -= p / slope;
+            }
+            *slot = (x, 2.0 / ((1.0 - x * x) * slope * slope));
+        }
+        rule
+    })
+}

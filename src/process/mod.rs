@@ -30,6 +30,9 @@ pub struct Study {
     pub max_points: u64,
     /// Calibration shifts that change |CDF| and relative acceptance by less are left out; 0 keeps all.
     pub prune_shifts_below: f64,
+    /// Signal events for which the shapes of the model should not bias a fitted mass by half its statistical error; where they
+    /// do, the run says so.
+    pub expected_events: f64,
     /// The resonance.
     pub resonance: Resonance,
     /// The channels.

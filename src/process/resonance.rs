@@ -1,5 +1,6 @@
 //! The resonance: its masses, its natural line shape and how it is produced.
 
+use crate::lineshape::{self, BreitWigner, Relativistic, RunningWidth, ShapeError};
 use std::path::PathBuf;
 
 /// Natural width (FWHM of the Breit-Wigner).
@@ -30,6 +31,40 @@ pub enum Natural {
     Relativistic,
     /// m²/((m² - M²)² + m⁴ Gamma²/M²) on m > 0.
     RunningWidth,
+}
+
+impl Natural {
+    /// Every form.
+    pub const ALL: [Natural; 3] = [Natural::BreitWigner, Natural::Relativistic, Natural::RunningWidth];
+
+    /// Its word in the files.
+    pub fn name(self) -> &'static str {
+        match self {
+            Natural::BreitWigner => "breit-wigner",
+            Natural::Relativistic => "relativistic",
+            Natural::RunningWidth => "running-width",
+        }
+    }
+
+    /// The form of that word.
+    pub fn from_name(name: &str) -> Option<Self> {
+        Natural::ALL.into_iter().find(|natural| natural.name() == name)
+    }
+
+    /// The line shape of that form, at a mass and a width in GeV; a line at width 0.
+    ///
+    /// # Errors
+    /// A mass or a width outside its domain.
+    pub fn shape_at(self, mass_gev: f64, width_gev: f64) -> Result<lineshape::Natural, ShapeError> {
+        if width_gev == 0.0 {
+            return lineshape::Natural::line(mass_gev);
+        }
+        Ok(match self {
+            Natural::BreitWigner => lineshape::Natural::BreitWigner(BreitWigner::new(mass_gev, width_gev)?),
+            Natural::Relativistic => lineshape::Natural::Relativistic(Relativistic::new(mass_gev, width_gev)?),
+            Natural::RunningWidth => lineshape::Natural::RunningWidth(RunningWidth::new(mass_gev, width_gev)?),
+        })
+    }
 }
 
 /// One cell of a tabulated production spectrum; flat inside.

@@ -59,6 +59,7 @@ fn study(precision: f64, tails: bool) -> Study {
         precision,
         max_points: 1 << 30,
         prune_shifts_below: 0.0,
+        expected_events: 1e4,
         resonance: Resonance {
             masses_gev: vec![180.0],
             width: Width::Gev(0.0),

@@ -91,6 +91,7 @@ pub fn study(detector: Detector, mass_gev: f64, channel: Channel) -> Study {
         precision: 1e-4,
         max_points: 1 << 24,
         prune_shifts_below: 0.0,
+        expected_events: 1e4,
         resonance: Resonance {
             masses_gev: vec![mass_gev],
             width: Width::Gev(0.0),

@@ -86,7 +86,8 @@ pub fn measure(study: &Study, events: Option<&StudyEvents>) -> Result<Vec<Cost>,
 pub fn describe(report: &mut String, study: &Study, costs: &[Cost]) {
     let width = study.channels.iter().map(|c| c.name.chars().count()).max().unwrap_or(0).clamp(7, 40);
     let masses = study.resonance.masses_gev.len();
-    report.push_str("\ncost, with the points of one nominal template and the time of all masses and shifts; points and time are estimates\n");
+    report
+        .push_str("\ncost, with the points of one nominal template and the time of all masses and shifts: estimates\n");
     let _ = writeln!(
         report,
         "  {:<width$}{:>11}{:>8}{:>17}{:>14}{:>12}",

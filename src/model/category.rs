@@ -1,0 +1,228 @@
+//! Everything that the model says of one channel and category.
+
+use super::bias::{MassBias, mass_bias};
+use super::closure::{Closure, InterpolationError, closure, quantile_closure};
+use super::mass_model::{MassModel, ModelPoint, Predicted};
+use super::quantile::QuantileInterpolation;
+use super::residual::Residuals;
+use super::response::{Response, better_shape, fit_response};
+use super::shape::PredictedTemplate;
+use crate::process::{Channel, Decay, MassAxis, Study};
+use crate::template::{LabelledTemplate, Template};
+
+/// How a template between the mass points is predicted.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Method {
+    /// The shape of the mass model with what it leaves of the templates: [`Residuals`].
+    Corrected,
+    /// The shape of the mass model alone.
+    Shape,
+    /// Interpolated quantiles: [`QuantileInterpolation`].
+    Quantiles,
+}
+
+impl Method {
+    /// All methods, the usual one first.
+    pub const ALL: [Method; 3] = [Method::Corrected, Method::Shape, Method::Quantiles];
+
+    /// Its word in files and on the command line.
+    pub fn name(self) -> &'static str {
+        match self {
+            Method::Corrected => "corrected",
+            Method::Shape => "shape",
+            Method::Quantiles => "quantiles",
+        }
+    }
+
+    /// The method of that word.
+    pub fn from_name(name: &str) -> Option<Self> {
+        Method::ALL.into_iter().find(|method| method.name() == name)
+    }
+}
+
+/// The shape fitted to one template, and what its misfit does.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Fitted {
+    /// Name of the channel.
+    pub channel: String,
+    /// Name of the category.
+    pub category: String,
+    /// The fit.
+    pub response: Response,
+    /// The misfit as a bias of a fitted mass; `None` where it cannot be told.
+    pub bias: Option<MassBias>,
+}
+
+/// The model of one channel and category: plain data, so that it can be written and read.
+#[derive(Clone, Debug, PartialEq)]
+pub struct CategoryModel {
+    /// Name of the channel.
+    pub channel: String,
+    /// Name of the category.
+    pub category: String,
+    /// The mass axis of the channel.
+    pub axis: MassAxis,
+    /// True masses lie above this, in GeV: the sum of the masses of the legs.
+    pub threshold_gev: f64,
+    /// The mass model.
+    pub model: MassModel,
+    /// The templates of width 0 that it was made of, at the mass points of the model.
+    pub templates: Vec<Template>,
+    /// Closure of each method; empty with less than three mass points, and without those methods that cannot leave one out.
+    pub closures: Vec<(Method, Closure)>,
+}
+
+/// What could be said of a category.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub struct Modelled {
+    /// The fits of the single templates.
+    pub fitted: Vec<Fitted>,
+    /// The model; `None` with one mass point, or where a note says why there is none.
+    pub model: Option<CategoryModel>,
+    /// What did not work, one sentence each.
+    pub failures: Vec<String>,
+    /// What the user should know, one sentence each.
+    pub notes: Vec<String>,
+}
+
+/// Fits the templates of width 0 of one category, rising in mass, and makes the model of them.
+pub fn model_category(study: &Study, channel: &Channel, templates: &[&LabelledTemplate]) -> Modelled {
+    let mut modelled = Modelled::default();
+    let [first, ..] = templates else { return modelled };
+    let label = format!("{}, {}", first.channel, first.category);
+    let mut responses: Vec<(usize, Response)> = Vec::new();
+    for (index, labelled) in templates.iter().enumerate() {
+        match fit_response(&labelled.template, labelled.mass_gev, channel.shape) {
+            Ok(response) => {
+                if !response.converged() {
+                    let text = format!("{label}, {} GeV: the fit of the shape did not converge", labelled.mass_gev);
+                    modelled.failures.push(text);
+                }
+                responses.push((index, response));
+            }
+            Err(error) => modelled.failures.push(format!("{label}, {} GeV: no shape fits: {error}", labelled.mass_gev)),
+        }
+    }
+    let points: Vec<ModelPoint<'_>> = responses
+        .iter()
+        .map(|(index, response)| ModelPoint { template: &templates[*index].template, response })
+        .collect();
+    let knot = matches!(channel.decay, Decay::Cascade(_)).then_some(2.0 * study.resonance.intermediate.mass_gev);
+    let model = match points.len() {
+        0 | 1 => None,
+        _ => match MassModel::fit(&points, knot) {
+            Ok(model) => Some(model),
+            Err(error) => {
+                modelled.failures.push(format!("{label}: no mass model: {error}"));
+                None
+            }
+        },
+    };
+    if model.as_ref().is_some_and(|model| !model.converged()) {
+        modelled.failures.push(format!("{label}: the simultaneous fit of the mass model did not converge"));
+    }
+    let bias = |index: usize| model.as_ref().and_then(|model| mass_bias(&points, model, index).ok());
+    for (index, (place, response)) in responses.iter().enumerate() {
+        let fitted = Fitted {
+            channel: first.channel.clone(),
+            category: first.category.clone(),
+            response: response.clone(),
+            bias: bias(index),
+        };
+        note_misfit(study, &label, &templates[*place].template, &fitted, &mut modelled.notes);
+        modelled.fitted.push(fitted);
+    }
+    modelled.model = model.map(|model| {
+        let pairs: Vec<(f64, &Template)> = points.iter().map(|p| (p.response.mass_gev, p.template)).collect();
+        let closures = Method::ALL
+            .into_iter()
+            .filter_map(|method| {
+                let closed = match method {
+                    Method::Corrected => closure(&points, &model, true),
+                    Method::Shape => closure(&points, &model, false),
+                    Method::Quantiles => quantile_closure(&pairs, knot),
+                };
+                closed.ok().map(|closed| (method, closed))
+            })
+            .collect();
+        CategoryModel {
+            channel: first.channel.clone(),
+            category: first.category.clone(),
+            axis: channel.axis,
+            threshold_gev: channel.decay.legs().iter().map(|leg| leg.mass_gev()).sum(),
+            templates: points.iter().map(|p| p.template.clone()).collect(),
+            model,
+            closures,
+        }
+    });
+    modelled
+}
+
+/// A note where the misfit matters for as many events as the study expects.
+fn note_misfit(study: &Study, label: &str, template: &Template, fitted: &Fitted, notes: &mut Vec<String>) {
+    let Some(bias) = &fitted.bias else { return };
+    let events = bias.events_at_half_error();
+    if events >= study.expected_events {
+        return;
+    }
+    let better = match better_shape(template, &fitted.response) {
+        Some(better) => format!(
+            "`{}` fits better (largest |ΔCDF| {:.4} instead of {:.4})",
+            better.shape.name(),
+            better.largest_cdf_difference,
+            fitted.response.largest_cdf_difference
+        ),
+        None => "no other shape fits better".to_owned(),
+    };
+    notes.push(format!(
+        "{label}, {} GeV: the shape biases a fitted mass by {:.1} MeV, half its statistical error at {events:.0} signal events; \
+         {better}",
+        fitted.response.mass_gev, bias.bias_mev
+    ));
+}
+
+/// Why a template cannot be predicted.
+#[derive(Clone, Debug, PartialEq, thiserror::Error)]
+pub enum PredictError {
+    /// The model.
+    #[error(transparent)]
+    Model(#[from] super::mass_model::ModelError),
+    /// The residuals.
+    #[error(transparent)]
+    Residual(#[from] super::residual::ResidualError),
+    /// The quantiles.
+    #[error(transparent)]
+    Quantile(#[from] super::quantile::QuantileError),
+}
+
+/// A prediction of a resonance without width.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Prediction {
+    /// Shape, acceptance and efficiency.
+    pub predicted: Predicted,
+    /// The template on the axis of the channel.
+    pub template: PredictedTemplate,
+}
+
+impl CategoryModel {
+    /// The interpolation error of a method: the RMS over the mass points left out; `None` without closure.
+    pub fn interpolation_error(&self, method: Method) -> Option<InterpolationError> {
+        self.closures.iter().find(|(own, _)| *own == method).map(|(_, closure)| closure.rms())
+    }
+
+    /// The prediction at a mass.
+    ///
+    /// # Errors
+    /// See [`PredictError`].
+    pub fn predict(&self, mass_gev: f64, method: Method, extrapolate: bool) -> Result<Prediction, PredictError> {
+        let predicted = self.model.at(mass_gev, extrapolate)?;
+        let edges = self.axis.edges_gev(mass_gev);
+        let pairs: Vec<(f64, &Template)> = self.model.masses_gev.iter().copied().zip(&self.templates).collect();
+        let template = match method {
+            Method::Corrected => Residuals::new(&self.model, &pairs)?.template(&predicted, &edges)?,
+            Method::Shape => predicted.template(&edges)?,
+            Method::Quantiles => QuantileInterpolation::new(&pairs)?.template(mass_gev, &edges, extrapolate)?,
+        };
+        Ok(Prediction { predicted, template })
+    }
+}
