@@ -126,8 +126,9 @@ fn a_known_constant_term_and_scale_are_found() {
             let anchors = anchors(other, &masses, &templates, category, 200_000);
             let pairs: Vec<(&Anchor, &Template)> =
                 anchors.iter().zip(&templates).map(|(a, &(_, template))| (a, template)).collect();
+            let start = std::time::Instant::now();
             let found = agreement(&pairs).unwrap();
-            println!("{found:?}");
+            println!("{:?} {found:?}", start.elapsed());
             // The mean of √((1 + a)(1 + b)) lies term²/4 below 1.
             let second = -0.25 * term * term;
             let told_scale = if sign > 0.0 { scale + second } else { 1.0 / (1.0 + scale) - 1.0 - second };
@@ -222,7 +223,7 @@ fn errors_are_those_of_repeated_samples() {
         let mut rng = StdRng::seed_from_u64(20261);
         let mut pulls: Vec<[f64; 5]> = Vec::new();
         let mut cdf = (0.0, 0.0);
-        for _ in 0..40 {
+        for _ in 0..30 {
             let one = |masses: &Masses| {
                 Anchor::new(masses, None, mass, &folded.edges_gev, ShapeChoice::DoubleCrystalBall, &[(mass, &folded)])
                     .unwrap()
@@ -256,9 +257,9 @@ fn errors_are_those_of_repeated_samples() {
             let mean = pulls.iter().map(|p| p[k]).sum::<f64>() / n;
             let spread = (pulls.iter().map(|p| (p[k] - mean) * (p[k] - mean)).sum::<f64>() / (n - 1.0)).sqrt();
             println!("{weights:?} {name}: mean {mean:.3} spread {spread:.3}");
-            // Mean to 0.16, spread to 0.11 at one standard deviation.
+            // Mean to 0.18, spread to 0.13 at one standard deviation.
             assert!(mean.abs() < 0.6, "{weights:?} {name} {mean}");
-            assert!(spread > 0.7 && spread < 1.35, "{weights:?} {name} {spread}");
+            assert!(spread > 0.6 && spread < 1.4, "{weights:?} {name} {spread}");
         }
         println!("{weights:?} mean |dCDF| {} expected {}", cdf.0 / n, cdf.1 / n);
         if !matches!(weights, Weights::Thinned) {

@@ -252,7 +252,7 @@ fn closure_of_every_number_of_categories_and_methods_is_drawn() {
                 }
                 // A band per panel, a marker per point and method, and the legend.
                 let panels = 4 * categories;
-                let markers = panels * masses.len() * methods + methods;
+                let markers = panels * masses.len() * methods + methods + 1;
                 assert_eq!(svg.matches("<polygon").count(), panels + markers, "{name}");
             }
         }

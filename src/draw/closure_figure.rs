@@ -3,7 +3,8 @@
 //! A column per category, and four panels in each against the mass: peak, width, distribution and acceptance. A grey band
 //! shows what is aimed at; methods have a colour and a marker each.
 
-use super::paper::{Anchor, DrawError, FRAME, INK, PALE, Paper, Type, draw};
+use super::axes::Axes;
+use super::paper::{Anchor, DrawError, INK, Paper, Type, draw};
 use super::scale::Ticks;
 use crate::model::{Closure, ClosurePoint};
 use plotters::style::RGBColor;
@@ -33,7 +34,9 @@ const METHODS: [(RGBColor, Marker); 5] = [
     (RGBColor(0xcc, 0x79, 0xa7), Marker::Diamond),
     (RGBColor(0x33, 0x33, 0x33), Marker::Cross),
 ];
-const BAND: RGBColor = RGBColor(0xee, 0xee, 0xee);
+const BAND: RGBColor = RGBColor(0xe8, 0xe8, 0xe8);
+/// What the band is.
+const AIM: &str = "aimed at";
 
 const LEFT: f64 = 92.0;
 const RIGHT: f64 = 20.0;
@@ -109,22 +112,6 @@ const QUANTITIES: [Quantity; 4] = [
     },
 ];
 
-/// Where masses and values stand.
-struct Panel {
-    x: f64,
-    width: f64,
-    top: f64,
-    masses: (f64, f64),
-    values: (f64, f64),
-}
-
-impl Panel {
-    fn place(&self, mass: f64, value: f64) -> (f64, f64) {
-        let ((low, high), (least, most)) = (self.masses, self.values);
-        (self.x + self.width * (mass - low) / (high - low), self.top + PANEL * (most - value) / (most - least))
-    }
-}
-
 /// The figure of one channel as SVG: deviations of the predicted templates ([`ClosurePoint::total`]).
 ///
 /// Bands: peak 0.02 sigma_eff, sigma_eff and acceptance 1 %, |ΔCDF| 0.005. Panels of one quantity share their axis over the
@@ -147,11 +134,16 @@ pub fn closure_figure(channel: &str, closures: &[LabelledClosure<'_>]) -> Result
     if !(masses.0 <= masses.1 && masses.0.is_finite() && masses.1.is_finite()) {
         return Err(DrawError::nothing("no mass point was left out"));
     }
+    let mut all: Vec<f64> = points().map(|p| p.mass_gev).collect();
+    all.sort_by(f64::total_cmp);
+    let gap = all.windows(2).map(|pair| pair[1] - pair[0]).filter(|gap| *gap > 0.0).fold(f64::INFINITY, f64::min);
     let more = 0.08 * (masses.1 - masses.0).max(0.02 * masses.1.abs()).max(1e-9);
     let masses = (masses.0 - more, masses.1 + more);
     let columns = categories.len() as f64;
     let width = (760.0 / columns).clamp(200.0, 420.0);
-    let entries = legend_places(&methods, columns * width + (columns - 1.0) * BETWEEN_COLUMNS);
+    let step = (width / (masses.1 - masses.0) * gap / (methods.len() as f64 + 1.0)).min(6.0);
+    let legend: Vec<&str> = methods.iter().copied().chain([AIM]).collect();
+    let entries = legend_places(&legend, columns * width + (columns - 1.0) * BETWEEN_COLUMNS);
     let legend_rows = entries.last().map_or(0.0, |e| e.1 + 1.0);
     let top = TITLE + LEGEND * legend_rows;
     let size = (
@@ -159,13 +151,19 @@ pub fn closure_figure(channel: &str, closures: &[LabelledClosure<'_>]) -> Result
         top + HEADING + 4.0 * PANEL + 3.0 * BETWEEN + BOTTOM,
     );
     draw(size, &format!("{channel}: closure"), |paper| {
-        let title = Type::TITLE.fit(&format!("{channel}: predicted without the mass point"), size.0 - LEFT - RIGHT);
+        let title = Type::TITLE.fit(&format!("{channel}: closure"), size.0 - LEFT - RIGHT);
         paper.text(&title, (LEFT, 22.0), Anchor::Left, Type::TITLE)?;
         for (k, (x, row)) in entries.iter().enumerate() {
             let y = TITLE + LEGEND * row + 2.0;
-            let (colour, marker) = METHODS[k % METHODS.len()];
-            marker.draw(paper, (LEFT + x + 5.0, y), colour)?;
-            paper.text(methods[k], (LEFT + x + 16.0, y), Anchor::Left, Type::LABEL)?;
+            let (x, centre) = (LEFT + x, LEFT + x + 5.0);
+            if k < methods.len() {
+                let (colour, marker) = METHODS[k % METHODS.len()];
+                marker.draw(paper, (centre, y), colour)?;
+            } else {
+                let corners = [(x, y - 5.0), (x + 11.0, y - 5.0), (x + 11.0, y + 5.0), (x, y + 5.0)];
+                paper.area(&corners, BAND, 1.0)?;
+            }
+            paper.text(legend[k], (x + 16.0, y), Anchor::Left, Type::LABEL)?;
         }
         for (column, category) in categories.iter().enumerate() {
             let x = LEFT + column as f64 * (width + BETWEEN_COLUMNS);
@@ -173,18 +171,22 @@ pub fn closure_figure(channel: &str, closures: &[LabelledClosure<'_>]) -> Result
             paper.text(&heading, (x, top + 10.0), Anchor::Left, Type::HEADING)?;
             for (row, quantity) in QUANTITIES.iter().enumerate() {
                 let y = top + HEADING + row as f64 * (PANEL + BETWEEN);
-                let panel = Panel { x, width, top: y, masses, values: range(quantity, points()) };
-                draw_panel(paper, &panel, quantity)?;
+                let values = range(quantity, points());
+                let axes = Axes { left: x, width, top: y, height: PANEL, masses, values };
+                draw_panel(paper, &axes, quantity)?;
+                if row + 1 == QUANTITIES.len() {
+                    axes.mass_labels(paper, 6.0)?;
+                }
                 for (k, method) in methods.iter().enumerate() {
                     let own = closures.iter().filter(|c| c.category == *category && c.method == *method);
                     let (colour, marker) = METHODS[k % METHODS.len()];
                     // Side by side, so that methods of equal value do not hide each other.
-                    let aside = 6.0 * (k as f64 - 0.5 * (methods.len() as f64 - 1.0));
+                    let aside = step * (k as f64 - 0.5 * (methods.len() as f64 - 1.0));
                     for point in own.flat_map(|c| &c.closure.points) {
                         let value = (quantity.value)(point).filter(|v| v.is_finite());
                         let Some(value) = value else { continue };
-                        let (px, py) = panel.place(point.mass_gev, value);
-                        marker.draw(paper, (px + aside, py), colour)?;
+                        let place = (axes.x(point.mass_gev) + aside, axes.y(value));
+                        marker.draw(paper, place, colour)?;
                     }
                 }
                 if column == 0 {
@@ -193,7 +195,6 @@ pub fn closure_figure(channel: &str, closures: &[LabelledClosure<'_>]) -> Result
                     paper.text(quantity.label[1], (33.0, middle), Anchor::Upwards, Type::LABEL)?;
                 }
             }
-            mass_axis(paper, (x, width), top + HEADING + 4.0 * PANEL + 3.0 * BETWEEN, masses)?;
         }
         let middle = 0.5 * (LEFT + size.0 - RIGHT);
         paper.text("mass point left out [GeV]", (middle, size.1 - 14.0), Anchor::Centre, Type::LABEL)
@@ -222,35 +223,18 @@ fn range<'a>(quantity: &Quantity, points: impl Iterator<Item = &'a ClosurePoint>
     (if quantity.signed { -reach } else { 0.0 }, reach)
 }
 
-fn draw_panel(paper: &Paper<'_>, panel: &Panel, quantity: &Quantity) -> Result<(), DrawError> {
-    let (left, right, bottom) = (panel.x, panel.x + panel.width, panel.top + PANEL);
-    let y = |value: f64| panel.place(panel.masses.0, value).1;
+fn draw_panel(paper: &Paper<'_>, axes: &Axes, quantity: &Quantity) -> Result<(), DrawError> {
+    let (left, right) = (axes.left, axes.left + axes.width);
     let low = if quantity.signed { -quantity.aim } else { 0.0 };
-    let (from, to) = (y(quantity.aim), y(low));
+    let (from, to) = (axes.y(quantity.aim), axes.y(low));
     paper.area(&[(left, from), (right, from), (right, to), (left, to)], BAND, 1.0)?;
-    let ticks = Ticks::new(panel.values.0, panel.values.1, 4);
-    for tick in &ticks.values {
-        paper.line(&[(left, y(*tick)), (right, y(*tick))], PALE, 0.75)?;
-        paper.text(&ticks.label(*tick), (left - 7.0, y(*tick)), Anchor::Right, Type::SMALL)?;
-    }
+    // Three at least, so that the scale is told.
+    let ticks = |most| Ticks::new(axes.values.0, axes.values.1, most);
+    let ticks = (4..8).map(ticks).find(|t| t.values.len() > 2).unwrap_or_else(|| ticks(8));
+    axes.grid(paper, &ticks)?;
+    axes.value_labels(paper, &ticks)?;
     if quantity.signed {
-        paper.line(&[(left, y(0.0)), (right, y(0.0))], INK, 0.75)?;
+        paper.line(&[(left, axes.y(0.0)), (right, axes.y(0.0))], INK, 0.75)?;
     }
-    let corners = [(left, panel.top), (left, bottom), (right, bottom), (right, panel.top), (left, panel.top)];
-    paper.line(&corners, FRAME, 1.0)
-}
-
-fn mass_axis(paper: &Paper<'_>, (x, width): (f64, f64), bottom: f64, (low, high): (f64, f64)) -> Result<(), DrawError> {
-    let place = |mass: f64| x + width * (mass - low) / (high - low);
-    let length =
-        |ticks: &Ticks| ticks.values.iter().map(|v| Type::SMALL.length(ticks.label(*v).len())).fold(0.0, f64::max);
-    // As many as stay apart.
-    let fits = |ticks: &Ticks| ticks.values.len() as f64 * (length(ticks) + 10.0) < width;
-    let Some(ticks) = (1..=8).rev().map(|most| Ticks::new(low, high, most)).find(fits) else { return Ok(()) };
-    for tick in &ticks.values {
-        let px = place(*tick);
-        paper.line(&[(px, bottom), (px, bottom + 4.0)], FRAME, 1.0)?;
-        paper.text(&ticks.label(*tick), (px, bottom + 13.0), Anchor::Centre, Type::SMALL)?;
-    }
-    Ok(())
+    axes.frame(paper)
 }
