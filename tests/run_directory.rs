@@ -104,6 +104,7 @@ fn contents() -> RunContents {
         templates: vec![template(150.0), template(180.5)],
         responses: Vec::new(),
         fitted: Vec::new(),
+        simulations: Vec::new(),
         models: None,
         further: vec![("figures/two-photon.svg".to_owned(), b"<svg/>".to_vec())],
     }

@@ -95,6 +95,7 @@ pub fn run(args: &PredictArgs, out: &mut impl Write) -> Outcome {
         templates,
         responses: Vec::new(),
         fitted: Vec::new(),
+        simulations: Vec::new(),
         models: None,
         further: vec![("shapes.csv".to_owned(), shapes(&rows, args.mass).map_err(Failure::Output)?)],
     };

@@ -4,6 +4,7 @@
 //! check of its type and range, and the whole is checked for what its parts must satisfy together. Problems are
 //! collected, with file, line and key, over all files of a study; only a study without any becomes typed.
 
+mod anchor_table;
 mod channel_tables;
 mod closure_table;
 mod detector_entries;

@@ -1,6 +1,7 @@
 //! The files of a run directory: `templates.csv`, `shifts.csv`, `responses.csv`, `summary.csv`, `model.json`,
-//! `closure.csv`, `run.json`.
+//! `closure.csv`, `anchors.csv`, `run.json`.
 
+use super::anchor_table::{self, ANCHORS_FILE};
 use super::closure_table::{self, CLOSURE_FILE};
 use super::model_file::{self, MODEL_FILE, RunModels};
 use super::number::{shortest, shortest_or_empty};
@@ -8,7 +9,7 @@ use super::response_table::{self, RESPONSES_FILE};
 use super::run_record::{FoldSummary, RunRecord};
 use super::run_target::{Committed, RUN_FILE, Staging, Target, TargetError};
 use crate::lineshape::Parameter;
-use crate::model::Fitted;
+use crate::model::{Fitted, Simulation};
 use crate::shift::LabelledResponse;
 use crate::template::{LabelledTemplate, Measured, SIGMA_EFF_FRACTION};
 use std::io::{self, Write};
@@ -72,6 +73,8 @@ pub struct RunContents {
     pub responses: Vec<LabelledResponse>,
     /// The shapes fitted to the templates of width 0.
     pub fitted: Vec<Fitted>,
+    /// Simulated samples against the folded templates.
+    pub simulations: Vec<Simulation>,
     /// The mass models; `None` where there is none.
     pub models: Option<RunModels>,
     /// Further files: path in the run (with `/`, e.g. `figures/two-photon.svg`) and contents.
@@ -99,6 +102,9 @@ impl RunContents {
             staging.write(RESPONSES_FILE, |out| response_table::write(out, &self.responses))?;
         }
         staging.write(SUMMARY_FILE, |out| write_summary(out, &self.templates, &self.record.folds, &self.fitted))?;
+        if !self.simulations.is_empty() {
+            staging.write(ANCHORS_FILE, |out| anchor_table::write(out, &self.simulations))?;
+        }
         if let Some(models) = &self.models {
             let text = model_file::to_json(models, &self.record.study)
                 .map_err(|error| TargetError::from_json(MODEL_FILE, error))?;

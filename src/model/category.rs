@@ -1,5 +1,7 @@
 //! Everything that the model says of one channel and category.
 
+use super::agreement::{Agreement, AnchorComparison, agreement, compare_anchor};
+use super::anchor::{Anchor, merge_points};
 use super::bias::{MassBias, mass_bias};
 use super::closure::{Closure, InterpolationError, closure, quantile_closure};
 use super::mass_model::{MassModel, ModelPoint, Predicted};
@@ -72,6 +74,19 @@ pub struct CategoryModel {
     pub closures: Vec<(Method, Closure)>,
 }
 
+/// The simulated samples of one channel and category against the folded templates.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Simulation {
+    /// Name of the channel.
+    pub channel: String,
+    /// Name of the category.
+    pub category: String,
+    /// One comparison per sample at a folded mass.
+    pub comparisons: Vec<AnchorComparison>,
+    /// Scale and smearing that bring the folded templates into agreement; `None` where these could not be fitted.
+    pub agreement: Option<Agreement>,
+}
+
 /// What could be said of a category.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub struct Modelled {
@@ -79,6 +94,8 @@ pub struct Modelled {
     pub fitted: Vec<Fitted>,
     /// The model; `None` with one mass point, or where a note says why there is none.
     pub model: Option<CategoryModel>,
+    /// Simulated samples; `None` without any.
+    pub simulation: Option<Simulation>,
     /// What did not work, one sentence each.
     pub failures: Vec<String>,
     /// What the user should know, one sentence each.
@@ -103,10 +120,13 @@ pub fn model_category(study: &Study, channel: &Channel, templates: &[&LabelledTe
             Err(error) => modelled.failures.push(format!("{label}, {} GeV: no shape fits: {error}", labelled.mass_gev)),
         }
     }
-    let points: Vec<ModelPoint<'_>> = responses
+    let folded: Vec<ModelPoint<'_>> = responses
         .iter()
         .map(|(index, response)| ModelPoint { template: &templates[*index].template, response })
         .collect();
+    let anchors = anchors(channel, first, &folded, &label, &mut modelled.failures);
+    modelled.simulation = simulation(first, &folded, &anchors, &label, &mut modelled.failures);
+    let points = merge_points(&folded, &anchors, channel.simulated.usage);
     let knot = matches!(channel.decay, Decay::Cascade(_)).then_some(2.0 * study.resonance.intermediate.mass_gev);
     let model = match points.len() {
         0 | 1 => None,
@@ -121,13 +141,16 @@ pub fn model_category(study: &Study, channel: &Channel, templates: &[&LabelledTe
     if model.as_ref().is_some_and(|model| !model.converged()) {
         modelled.failures.push(format!("{label}: the simultaneous fit of the mass model did not converge"));
     }
-    let bias = |index: usize| model.as_ref().and_then(|model| mass_bias(&points, model, index).ok());
-    for (index, (place, response)) in responses.iter().enumerate() {
+    let bias = |mass_gev: f64| {
+        let index = points.iter().position(|point| point.response.mass_gev == mass_gev)?;
+        model.as_ref().and_then(|model| mass_bias(&points, model, index).ok())
+    };
+    for (place, response) in &responses {
         let fitted = Fitted {
             channel: first.channel.clone(),
             category: first.category.clone(),
             response: response.clone(),
-            bias: bias(index),
+            bias: bias(response.mass_gev),
         };
         note_misfit(study, &label, &templates[*place].template, &fitted, &mut modelled.notes);
         modelled.fitted.push(fitted);
@@ -156,6 +179,66 @@ pub fn model_category(study: &Study, channel: &Channel, templates: &[&LabelledTe
         }
     });
     modelled
+}
+
+/// The simulated samples of a category.
+fn anchors(
+    channel: &Channel,
+    first: &LabelledTemplate,
+    folded: &[ModelPoint<'_>],
+    label: &str,
+    failures: &mut Vec<String>,
+) -> Vec<Anchor> {
+    let pairs: Vec<(f64, &Template)> = folded.iter().map(|p| (p.response.mass_gev, p.template)).collect();
+    let own = channel.simulated.samples.iter().filter(|sample| {
+        channel.categories.get(sample.category).is_some_and(|category| category.name == first.category)
+    });
+    let mut anchors = Vec::new();
+    for sample in own {
+        let edges = channel.axis.edges_gev(sample.mass_gev);
+        match Anchor::new(&sample.masses, sample.generated, sample.mass_gev, &edges, channel.shape, &pairs) {
+            Ok(anchor) => anchors.push(anchor),
+            Err(error) => failures.push(format!("{label}, simulated at {} GeV: {error}", sample.mass_gev)),
+        }
+    }
+    anchors.sort_by(|a, b| a.mass_gev.total_cmp(&b.mass_gev));
+    anchors
+}
+
+/// Compares the samples with the folded templates at the same masses.
+fn simulation(
+    first: &LabelledTemplate,
+    folded: &[ModelPoint<'_>],
+    anchors: &[Anchor],
+    label: &str,
+    failures: &mut Vec<String>,
+) -> Option<Simulation> {
+    let pairs: Vec<(&Anchor, &ModelPoint<'_>)> = anchors
+        .iter()
+        .filter_map(|anchor| {
+            let point = folded.iter().find(|point| point.response.mass_gev == anchor.mass_gev)?;
+            Some((anchor, point))
+        })
+        .collect();
+    if pairs.is_empty() {
+        return None;
+    }
+    let mut comparisons = Vec::new();
+    for (anchor, point) in &pairs {
+        match compare_anchor(anchor, point) {
+            Ok(comparison) => comparisons.push(comparison),
+            Err(error) => failures.push(format!("{label}: {error}")),
+        }
+    }
+    let together: Vec<(&Anchor, &Template)> = pairs.iter().map(|(anchor, point)| (*anchor, point.template)).collect();
+    let agreement = match agreement(&together) {
+        Ok(agreement) => Some(agreement),
+        Err(error) => {
+            failures.push(format!("{label}: {error}"));
+            None
+        }
+    };
+    Some(Simulation { channel: first.channel.clone(), category: first.category.clone(), comparisons, agreement })
 }
 
 /// A note where the misfit matters for as many events as the study expects.

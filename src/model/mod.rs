@@ -33,7 +33,7 @@ pub use acceptance::YieldFactor;
 pub use agreement::{Agreement, AgreementError, AnchorComparison, agreement, compare_anchor};
 pub use anchor::{Anchor, AnchorError, BinnedSample, LEAST_ENTRIES, merge_points};
 pub use bias::{BiasError, MassBias, mass_bias};
-pub use category::{CategoryModel, Fitted, Method, Modelled, PredictError, Prediction, model_category};
+pub use category::{CategoryModel, Fitted, Method, Modelled, PredictError, Prediction, Simulation, model_category};
 pub use closure::{
     Closure, ClosureError, ClosurePoint, Deviation, InterpolationError, closure, deviation, quantile_closure,
 };

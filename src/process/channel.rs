@@ -106,6 +106,33 @@ pub enum ShapeChoice {
     GaussExp,
 }
 
+impl ShapeChoice {
+    /// All kinds.
+    pub const ALL: [ShapeChoice; 5] = [
+        ShapeChoice::Gaussian,
+        ShapeChoice::CrystalBall,
+        ShapeChoice::DoubleCrystalBall,
+        ShapeChoice::DoubleCrystalBallTwoSigmas,
+        ShapeChoice::GaussExp,
+    ];
+
+    /// Its word in the files.
+    pub fn name(self) -> &'static str {
+        match self {
+            ShapeChoice::Gaussian => "gaussian",
+            ShapeChoice::CrystalBall => "crystal-ball",
+            ShapeChoice::DoubleCrystalBall => "double-crystal-ball",
+            ShapeChoice::DoubleCrystalBallTwoSigmas => "double-crystal-ball-two-sigmas",
+            ShapeChoice::GaussExp => "gauss-exp",
+        }
+    }
+
+    /// The kind of that word.
+    pub fn from_name(name: &str) -> Option<Self> {
+        ShapeChoice::ALL.into_iter().find(|shape| shape.name() == name)
+    }
+}
+
 /// What simulated samples are for.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
 pub enum SimulatedUse {
@@ -138,33 +165,6 @@ pub struct Simulated {
     pub usage: SimulatedUse,
     /// The samples, in the order of the study.
     pub samples: Vec<SimulatedSample>,
-}
-
-impl ShapeChoice {
-    /// All kinds.
-    pub const ALL: [ShapeChoice; 5] = [
-        ShapeChoice::Gaussian,
-        ShapeChoice::CrystalBall,
-        ShapeChoice::DoubleCrystalBall,
-        ShapeChoice::DoubleCrystalBallTwoSigmas,
-        ShapeChoice::GaussExp,
-    ];
-
-    /// Its word in the files.
-    pub fn name(self) -> &'static str {
-        match self {
-            ShapeChoice::Gaussian => "gaussian",
-            ShapeChoice::CrystalBall => "crystal-ball",
-            ShapeChoice::DoubleCrystalBall => "double-crystal-ball",
-            ShapeChoice::DoubleCrystalBallTwoSigmas => "double-crystal-ball-two-sigmas",
-            ShapeChoice::GaussExp => "gauss-exp",
-        }
-    }
-
-    /// The kind of that word.
-    pub fn from_name(name: &str) -> Option<Self> {
-        ShapeChoice::ALL.into_iter().find(|shape| shape.name() == name)
-    }
 }
 
 /// A decay channel as it is analysed.

@@ -1,7 +1,7 @@
 //! Everything that one study asks for: templates, shifts and models of all channels and mass points.
 
 use crate::fold::{FoldError, FoldRecord, Folded, Progress, fold_channel};
-use crate::model::{CategoryModel, Fitted, Modelled, model_category};
+use crate::model::{CategoryModel, Fitted, Modelled, Simulation, model_category};
 use crate::process::{Channel, EventSource, Study, Width};
 use crate::shift::{ChannelShifts, LabelledResponse, Nuisance, NuisanceError, ShiftError, fold_shifts, nuisances_of};
 use crate::template::LabelledTemplate;
@@ -23,6 +23,8 @@ pub struct Results {
     pub fitted: Vec<Fitted>,
     /// The mass models, one per channel and category where there is one.
     pub models: Vec<CategoryModel>,
+    /// Simulated samples against the folded templates.
+    pub simulations: Vec<Simulation>,
     /// What did not work, one sentence each.
     pub failures: Vec<String>,
     /// What the user should know of the models, one sentence each.
@@ -162,6 +164,7 @@ fn add_models(study: &Study, of_models: &[Vec<LabelledTemplate>], results: &mut 
     for own in modelled {
         results.fitted.extend(own.fitted);
         results.models.extend(own.model);
+        results.simulations.extend(own.simulation);
         results.failures.extend(own.failures);
         results.notes.extend(own.notes);
     }

@@ -3,7 +3,7 @@
 mod text;
 
 use super::outcome::{Failure, Outcome, say};
-use crate::draw::template_figures;
+use crate::draw::{LabelledClosure, closure_figure, template_figures};
 use crate::files::{LoadedStudy, NaturalOfRun, NuisanceRecord, RunContents, RunModels, RunRecord, Target, load_study};
 use crate::process::Study;
 use crate::results::{Results, fold_study};
@@ -52,7 +52,8 @@ pub fn run(args: &FoldArgs, out: &mut impl Write) -> Outcome {
     })?;
     let threads = pool.current_num_threads();
     let results = pool.install(|| fold_all(&study, args.quiet))?;
-    let Results { templates, records, responses, nuisances, fitted, models, failures, notes, cpu_seconds } = results;
+    let Results { templates, records, responses, nuisances, fitted, models, simulations, failures, notes, cpu_seconds } =
+        results;
 
     let mut record = RunRecord::new(&study, inputs, &records);
     record.threads = threads;
@@ -60,13 +61,26 @@ pub fn run(args: &FoldArgs, out: &mut impl Write) -> Outcome {
     record.not_reached.extend(failures);
     record.model_notes.clone_from(&notes);
     record.nuisances = nuisances.iter().map(|nuisance| NuisanceRecord::new(&study.detector, nuisance)).collect();
-    let further = match template_figures(&templates) {
-        Ok(figures) => figures.into_iter().map(|(path, svg)| (path, svg.into_bytes())).collect(),
-        Err(error) => {
-            record.not_reached.push(format!("figures: {error}"));
-            Vec::new()
+    let mut further = Vec::new();
+    match template_figures(&templates) {
+        Ok(figures) => further.extend(figures.into_iter().map(|(path, svg)| (path, svg.into_bytes()))),
+        Err(error) => record.not_reached.push(format!("figures: {error}")),
+    }
+    for channel in &study.channels {
+        let closures: Vec<LabelledClosure<'_>> = models
+            .iter()
+            .filter(|own| own.channel == channel.name)
+            .flat_map(|own| own.closures.iter().map(move |closed| (own, closed)))
+            .map(|(own, (method, closure))| LabelledClosure { category: &own.category, method: method.name(), closure })
+            .collect();
+        if closures.iter().all(|closed| closed.closure.points.is_empty()) {
+            continue;
         }
-    };
+        match closure_figure(&channel.name, &closures) {
+            Ok(svg) => further.push((format!("figures/{}-closure.svg", channel.name), svg.into_bytes())),
+            Err(error) => record.not_reached.push(format!("closure figure of {}: {error}", channel.name)),
+        }
+    }
     record.wall_seconds = started.elapsed().as_secs_f64();
     let not_reached = record.not_reached.clone();
     let shown =
@@ -80,7 +94,8 @@ pub fn run(args: &FoldArgs, out: &mut impl Write) -> Outcome {
         masses_gev: study.resonance.masses_gev.clone(),
         categories: models,
     });
-    let committed = RunContents { record, templates, responses, fitted, models, further }.commit(target)?;
+    let committed =
+        RunContents { record, templates, responses, fitted, simulations, models, further }.commit(target)?;
 
     // The run is written; a reader of the table who has gone away changes nothing.
     let _ = shown.write(out, &args.output);
