@@ -263,8 +263,9 @@ fn errors_are_those_of_repeated_samples() {
         }
         println!("{weights:?} mean |dCDF| {} expected {}", cdf.0 / n, cdf.1 / n);
         if !matches!(weights, Weights::Thinned) {
-            // Kolmogorov's mean, at 100 edges instead of everywhere a little less.
-            assert!((cdf.0 / cdf.1 - 0.97).abs() < 0.13, "{} {}", cdf.0 / n, cdf.1 / n);
+            // Kolmogorov's mean is that of all masses; at the edges of some 40 filled bins it is about a tenth less. The mean
+            // of 30 samples scatters by 6 %.
+            assert!((cdf.0 / cdf.1 - 0.9).abs() < 0.2, "{} {}", cdf.0 / n, cdf.1 / n);
         }
     }
 }
