@@ -117,9 +117,9 @@ const BAD: &[Case] = &[
     (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\"]\npick = \"nearest\"", "pick", "channel.two-photon.pick", &["only with `events`", "remove it"]),
     (S, "legs = [\"photon\", \"photon\"]", "legs = [\"photon\", \"photon\"]\nancestry = \"ignore\"", "ancestry", "channel.two-photon.ancestry", &["only with `events`", "remove it"]),
     (S, "name = \"mixed\"", "name = \"mixed\"\npairing = \"nearest-sum\"", "pairing", "channel.mixed.pairing", &["only with `events`", "remove it"]),
-    (S, "production = { table = \"spectrum.csv\" }", "events = \"/dev/null\"", "events", "resonance.events", &["is a device or a pipe"]),
+    (S, "[150, 180.0, 210.0]\nwidth = { relative = 0.02 }\nnatural = \"running-width\"\nfalloff_power = 4.0\nproduction = { table = \"spectrum.csv\" }", "[150]\nevents = \"/dev/null\"", "events = ", "resonance.events", &["is a device or a pipe"]),
     // Names.
-    (S, "name = \"two-photon\"", "name = \"two-photon \"", "two-photon \"", "channel.two-photon .name", &["must not begin or end with a blank"]),
+    (S, "name = \"two-photon\"", "name = \"two-photon \"", "two-photon \"", "channel[1].name", &["must not begin or end with a blank"]),
     (D, "share = { right_choice = \"vertex\" }", "share = { right_choice = \"muon-central.scale\" }", "name", "share", &["names two different uncertainties"]),
     // The study's own numbers.
     (S, "precision = 1e-3", "precision = 0.0", "precision", "precision", &["found 0.0", "larger than 0"]),
