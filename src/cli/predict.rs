@@ -21,13 +21,13 @@ pub struct PredictArgs {
     /// The directory of a run of two or more masses
     pub run: PathBuf,
     /// The resonance mass in GeV
-    #[arg(long, value_name = "GEV")]
+    #[arg(long, value_name = "GEV", allow_negative_numbers = true)]
     pub mass: f64,
     /// Natural width in GeV
-    #[arg(long, value_name = "GEV", conflicts_with = "relative_width")]
+    #[arg(long, value_name = "GEV", conflicts_with = "relative_width", allow_negative_numbers = true)]
     pub width: Option<f64>,
     /// Natural width in units of the mass
-    #[arg(long, value_name = "RATIO")]
+    #[arg(long, value_name = "RATIO", allow_negative_numbers = true)]
     pub relative_width: Option<f64>,
     /// How templates between the masses of the run are made; a resonance with a width takes the shape
     #[arg(long, value_name = "METHOD", default_value = "corrected", value_parser = ["corrected", "shape", "quantiles"])]

@@ -115,8 +115,10 @@ impl Shown {
                 worst.response.mass_gev
             )?;
         }
-        if !self.notes.is_empty() {
-            writeln!(out, "{} notes on the shapes are in run.json, the first:\n  {}", self.notes.len(), self.notes[0])?;
+        match self.notes.as_slice() {
+            [] => {}
+            [only] => writeln!(out, "{only}")?,
+            [first, rest @ ..] => writeln!(out, "{first}\n(and {} more such notes in run.json)", rest.len())?,
         }
         Ok(())
     }
