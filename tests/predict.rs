@@ -179,3 +179,26 @@ fn one_mass_makes_no_model() {
     assert_eq!(output.status.code(), Some(1));
     assert!(String::from_utf8_lossy(&output.stderr).contains("one mass point"));
 }
+
+/// The events of a file have the width of their generator, and here many negative weights: they make templates and no model,
+/// which is no failure.
+#[test]
+fn events_from_a_file_make_no_model() {
+    let folder = tempfile::tempdir().unwrap();
+    let detector = DETECTOR.replace("object = \"photon\"", "object = \"electron\"");
+    fs::write(folder.path().join("detector.toml"), detector).unwrap();
+    let events = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/dilepton_200.lhe.gz");
+    let source = format!("events = {:?}", text(&events));
+    let own = study("[91.188]", "{ gev = 0.0 }")
+        .replace("production = { pt_mean_gev = 40.0, rapidity_sigma = 1.2 }", &source)
+        .replace("precision = 1e-3", "precision = 1e-2")
+        .replace("legs = [\"photon\", \"photon\"]", "legs = [\"electron\", \"electron\"]")
+        .replace("width = { gev = 0.0 }\n", "")
+        .replace("min_pt_over_mass = [0.35, 0.25]\n", "");
+    let file = folder.path().join("study.toml");
+    fs::write(&file, own).unwrap();
+    let run = folder.path().join("run");
+    let output = peakfold(&["fold", text(&file), "-o", text(&run), "--quiet"]);
+    assert_eq!(output.status.code(), Some(0), "{}", String::from_utf8_lossy(&output.stderr));
+    assert!(run.join("templates.csv").exists() && !run.join("model.json").exists());
+}

@@ -7,7 +7,7 @@ use super::closure::{Closure, InterpolationError, closure, quantile_closure};
 use super::mass_model::{MassModel, ModelPoint, Predicted};
 use super::quantile::QuantileInterpolation;
 use super::residual::Residuals;
-use super::response::{Response, better_shape, fit_response};
+use super::response::{Response, ResponseError, better_shape, fit_response};
 use super::shape::PredictedTemplate;
 use crate::process::{Channel, Decay, MassAxis, Study};
 use crate::template::{LabelledTemplate, Template};
@@ -116,6 +116,10 @@ pub fn model_category(study: &Study, channel: &Channel, templates: &[&LabelledTe
                     modelled.failures.push(text);
                 }
                 responses.push((index, response));
+            }
+            // A category that takes no event is no failure.
+            Err(error @ ResponseError::Empty(_)) => {
+                modelled.notes.push(format!("{label}, {} GeV: no shape: {error}", labelled.mass_gev));
             }
             Err(error) => modelled.failures.push(format!("{label}, {} GeV: no shape fits: {error}", labelled.mass_gev)),
         }

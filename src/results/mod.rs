@@ -77,7 +77,8 @@ const SHIFT_PART: f64 = 0.65;
 const MODEL_PART: f64 = 0.1;
 
 /// Folds a study: every channel at every mass point, nominal and shifted, then the models. Where the resonance has a width,
-/// the models need templates of width 0, which are folded too.
+/// the models need templates of width 0, which are folded too. Events from a file
+/// make no model.
 ///
 /// # Errors
 /// See [`ResultsError`]. A precision that is not reached and a model that cannot be made are no errors: see
@@ -119,7 +120,8 @@ pub fn fold_study(study: &Study, progress: &(dyn Fn(Step) + Sync)) -> Result<Res
                 mass_gev,
                 source,
             })?;
-            if narrow {
+            // The events of a file have the width that their generator gave them: no shape of width 0 is fitted to them.
+            if narrow && generated {
                 zero.extend(folded.templates.iter().cloned());
             } else if generated && masses.len() > 1 {
                 let folded = fold_channel(&width_zero, index, mass_gev, &|p| advance(parts - 1.0, 1.0, p.fraction))
